@@ -1,0 +1,3 @@
+//! The station beside the gauge.
+#![no_std]
+#![forbid(unsafe_code)]

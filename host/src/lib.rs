@@ -1,0 +1,2 @@
+//! Plan, load, pull, keep and report.
+#![forbid(unsafe_code)]

@@ -1,0 +1,2 @@
+//! The command `donelight`.
+fn main() {}
