@@ -22,4 +22,6 @@
 #[cfg(test)]
 extern crate std;
 
+pub mod counts;
 pub mod quantity;
+mod ratio;
