@@ -23,5 +23,6 @@
 extern crate std;
 
 pub mod counts;
+pub mod moments;
 pub mod quantity;
 mod ratio;

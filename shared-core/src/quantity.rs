@@ -10,6 +10,8 @@ pub struct Count(u32);
 impl Count {
     /// No piece yet.
     pub const ZERO: Self = Self(0);
+    /// One piece.
+    pub const ONE: Self = Self(1);
     /// One million pieces: with [`crate::counts::Counts`] bounded too, all sums fit their integers.
     pub const MAX: Self = Self(1_000_000);
 
@@ -152,5 +154,41 @@ impl TryFrom<u32> for Confidence {
 
     fn try_from(level: u32) -> Result<Self, OutOfRange> {
         Self::from_millionths(level).ok_or(OutOfRange)
+    }
+}
+
+/// How near the interval must come to the estimate: a goal for its half-width.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, Serialize, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum Precision {
+    /// A fraction of the estimate: 10 % is 100 000 millionths.
+    Relative(Millionths),
+    /// A width of the index itself: 0.15 is 150 000 millionths.
+    Absolute(Millionths),
+}
+
+impl Precision {
+    /// The goal: a fraction or a width of the index.
+    #[must_use]
+    pub fn goal(self) -> f64 {
+        match self {
+            Self::Relative(goal) | Self::Absolute(goal) => goal.to_f64(),
+        }
+    }
+
+    /// The half-width in the goal's own terms; infinite for a fraction of an estimate that is not above zero.
+    #[must_use]
+    pub fn achieved(self, half_width: f64, estimate: f64) -> f64 {
+        match self {
+            Self::Relative(_) if estimate > 0.0 => half_width / estimate,
+            Self::Relative(_) => f64::INFINITY,
+            Self::Absolute(_) => half_width,
+        }
+    }
+
+    /// Whether the half-width reaches the goal.
+    #[must_use]
+    pub fn allows(self, half_width: f64, estimate: f64) -> bool {
+        self.achieved(half_width, estimate) <= self.goal()
     }
 }
