@@ -22,6 +22,7 @@
 #[cfg(test)]
 extern crate std;
 
+pub mod capability;
 pub mod counts;
 pub mod moments;
 pub mod quantity;
