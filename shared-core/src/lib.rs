@@ -24,6 +24,8 @@ extern crate std;
 
 pub mod capability;
 pub mod counts;
+pub mod interval;
 pub mod moments;
 pub mod quantity;
 mod ratio;
+pub mod special;
