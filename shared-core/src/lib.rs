@@ -28,4 +28,5 @@ pub mod interval;
 pub mod moments;
 pub mod quantity;
 mod ratio;
+pub mod sizing;
 pub mod special;

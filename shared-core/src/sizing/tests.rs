@@ -1,0 +1,100 @@
+use super::{SizingError, power, precision};
+use crate::capability::Index;
+use crate::interval::Kind;
+use crate::quantity::{Confidence, Count, Millionths, Precision};
+
+const NINETY_FIVE: Confidence = Confidence::NINETY_FIVE_PERCENT;
+const TEN_PERCENT: Precision = Precision::Relative(Millionths(100_000));
+const FIVE_PERCENT: Millionths = Millionths(50_000);
+
+// Common practice, no source: 212 pieces for Cpk 1.5 to within ±10 % at 95 %.
+#[test]
+fn two_hundred_and_twelve_pieces_put_a_cpk_of_1_5_between_1_35_and_1_65() {
+    let size = precision::smallest(Index::Cpk, 1.5, TEN_PERCENT, NINETY_FIVE, Kind::TwoSided).unwrap();
+    assert_eq!(size.n.get(), 212);
+    assert!((size.interval.low.unwrap() - 1.350_02).abs() < 5e-6);
+    assert!((size.interval.high.unwrap() - 1.649_98).abs() < 5e-6);
+    assert!((size.achieved - 0.099_989).abs() < 5e-7);
+    assert!((size.achieved_before.unwrap() - 0.100_227).abs() < 5e-7);
+}
+
+// Common practice, no source: 297 pieces to tell a claimed Cpk of 1.5 from 1.3 at 5 % with a power of 95 %.
+#[test]
+fn two_hundred_and_ninety_seven_pieces_tell_a_cpk_of_1_5_from_1_3() {
+    let size = power::smallest(Index::Cpk, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE).unwrap();
+    assert_eq!(size.n.get(), 297);
+    assert!((size.achieved - 0.950_464).abs() < 5e-7);
+    assert!((size.achieved_before.unwrap() - 0.949_852).abs() < 5e-7);
+    assert!((size.critical - 1.3937).abs() < 5e-5);
+}
+
+#[test]
+fn the_mirrored_test_rejects_above_its_critical_value() {
+    let size = power::smallest(Index::Cpk, 1.3, 1.5, FIVE_PERCENT, NINETY_FIVE).unwrap();
+    assert_eq!(size.n.get(), 297);
+    assert!((size.achieved - 0.950_408).abs() < 5e-7);
+    assert!(size.critical > 1.3 && size.critical < 1.5);
+}
+
+#[test]
+fn an_absolute_goal_of_0_15_is_the_relative_goal_of_10_percent_at_1_5() {
+    let absolute = Precision::Absolute(Millionths(150_000));
+    for kind in [Kind::TwoSided, Kind::Lower, Kind::Upper] {
+        let relative = precision::smallest(Index::Cpk, 1.5, TEN_PERCENT, NINETY_FIVE, kind).unwrap();
+        let size = precision::smallest(Index::Cpk, 1.5, absolute, NINETY_FIVE, kind).unwrap();
+        assert_eq!((size.n, size.interval), (relative.n, relative.interval));
+        assert!((size.achieved - 1.5 * relative.achieved).abs() < 1e-15);
+    }
+}
+
+#[test]
+fn a_size_of_two_has_no_size_before_it() {
+    let size = precision::smallest(
+        Index::Cpk,
+        1.0,
+        Precision::Absolute(Millionths(4_000_000)),
+        NINETY_FIVE,
+        Kind::Lower,
+    )
+    .unwrap();
+    assert_eq!((size.n.get(), size.achieved_before), (2, None));
+    let at_two =
+        precision::precision_at(Count::new(2).unwrap(), Index::Cpk, 1.0, NINETY_FIVE, Kind::Lower).unwrap();
+    assert_eq!(size.achieved, at_two.half_width);
+}
+
+#[test]
+fn the_size_may_be_the_largest_count_and_no_more() {
+    // Around 1 + z²/(2 r²): with r = 0.1386 % the size lies just below a million, with 0.138 % above.
+    let just_below = Precision::Relative(Millionths(1_470));
+    let size = precision::smallest(Index::Cp, 1.0, just_below, NINETY_FIVE, Kind::TwoSided).unwrap();
+    assert!(size.n.get() > 800_000 && size.n < Count::MAX);
+    let beyond = Precision::Relative(Millionths(1_380));
+    let refused = precision::smallest(Index::Cp, 1.0, beyond, NINETY_FIVE, Kind::TwoSided);
+    assert_eq!(refused, Err(SizingError::AboveLimit));
+}
+
+#[test]
+fn impossible_demands_are_named() {
+    let precise = |at, precision| precision::smallest(Index::Cpk, at, precision, NINETY_FIVE, Kind::TwoSided);
+    for at in [0.0, -1.5, f64::NAN, f64::INFINITY, 1000.5] {
+        assert_eq!(precise(at, TEN_PERCENT), Err(SizingError::IndexOutOfRange));
+    }
+    assert_eq!(precise(1.5, Precision::Relative(Millionths(0))), Err(SizingError::NoTolerance));
+    let powered = |claim, against, alpha| power::smallest(Index::Cpk, claim, against, alpha, NINETY_FIVE);
+    assert_eq!(powered(1.5, 1.5, FIVE_PERCENT), Err(SizingError::Indistinguishable));
+    assert_eq!(powered(1.5, 1.499, FIVE_PERCENT), Err(SizingError::AboveLimit));
+    assert_eq!(powered(-1.5, 1.3, FIVE_PERCENT), Err(SizingError::IndexOutOfRange));
+    assert_eq!(powered(1.5, 1.3, Millionths(0)), Err(SizingError::AlphaOutOfRange));
+    assert_eq!(powered(1.5, 1.3, Millionths(500_001)), Err(SizingError::AlphaOutOfRange));
+    let one = power::power_at(Count::ONE, Index::Cpk, 1.5, 1.3, FIVE_PERCENT);
+    assert_eq!(one, Err(SizingError::TooFew));
+}
+
+#[test]
+fn cpm_is_refused_by_name() {
+    let size = precision::smallest(Index::Cpm, 1.5, TEN_PERCENT, NINETY_FIVE, Kind::TwoSided);
+    assert_eq!(size, Err(SizingError::NoMethodYet(Index::Cpm)));
+    let size = power::smallest(Index::Cpm, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE);
+    assert_eq!(size, Err(SizingError::NoMethodYet(Index::Cpm)));
+}
