@@ -1,0 +1,426 @@
+//! The command line: every command and option, with examples in `--help`.
+//!
+//! Values are read here, once, into types that carry their meaning; a value out of range is wrong use (exit code 2).
+
+use std::path::PathBuf;
+
+use clap::builder::{PossibleValuesParser, TypedValueParser};
+use clap::{Args, Parser, Subcommand};
+use donelight_core::capability::Index;
+use donelight_core::counts::{Decimal, Resolution};
+use donelight_core::interval::Kind;
+use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
+
+use crate::level;
+
+/// Plan a capability study, load it to a station, pull its log, keep it and report it.
+#[derive(Debug, Parser)]
+#[command(name = "donelight", version, propagate_version = true, arg_required_else_help = true)]
+#[command(after_help = "\
+The usual order:
+  donelight size precision --index cpk --at 1.5 --within 10%   how many pieces?
+  donelight plan new plan.toml                                 write a plan, then edit it
+  donelight plan check plan.toml                               is it sound?
+  donelight station load plan.toml                             load it to the station
+  donelight station pull                                       fetch and keep the readings
+  donelight report -o report.html                              the verdict and the pictures
+
+With nothing attached: donelight demo
+
+Exit codes: 0 done, 1 refused or not shown, 2 wrong use.")]
+pub struct Cli {
+    /// Answer in JSON (errors too), one object a line
+    #[arg(long, global = true)]
+    pub json: bool,
+    /// What to do
+    #[command(subcommand)]
+    pub command: Command,
+}
+
+/// The commands.
+#[derive(Debug, Subcommand)]
+pub enum Command {
+    /// How many pieces does the study need?
+    #[command(subcommand, arg_required_else_help = true)]
+    Size(Size),
+    /// Write or check a sampling plan
+    #[command(subcommand, arg_required_else_help = true)]
+    Plan(Plan),
+    /// Talk to a station on a serial port
+    #[command(subcommand, arg_required_else_help = true)]
+    Station(Station),
+    /// A station without hardware: the station's own code, its journal in a folder
+    Virtual(Virtual),
+    /// Capability of readings, or of a summary, that came from elsewhere
+    Assess(Assess),
+    /// The page on a study that is kept in the ledger
+    Report(Report),
+    /// The whole job with nothing attached, in under a minute
+    Demo(Demo),
+}
+
+/// `donelight size …`
+#[derive(Debug, Subcommand)]
+pub enum Size {
+    /// The smallest n whose interval is as narrow as wanted
+    #[command(after_help = "\
+Examples:
+  donelight size precision --index cpk --at 1.5 --within 10%
+  donelight size precision --index cpk --at 1.33 --within 0.1 --confidence 90% --kind lower")]
+    Precision(SizePrecision),
+    /// The smallest n that tells a claimed index from another one
+    #[command(after_help = "\
+Examples:
+  donelight size power --index cpk --claim 1.5 --against 1.3
+  donelight size power --index cpk --claim 1.33 --against 1.67 --alpha 10% --power 90%")]
+    Power(SizePower),
+}
+
+/// `donelight size precision …`
+#[derive(Debug, Args)]
+pub struct SizePrecision {
+    /// The index
+    #[arg(long, value_parser = index(), ignore_case = true, default_value = "cpk")]
+    pub index: Index,
+    /// The index assumed, such as 1.5
+    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    pub at: Millionths,
+    /// How far the interval may reach from the estimate: 10% of it, or 0.15 of index
+    #[arg(long, value_name = "WIDTH", value_parser = precision)]
+    pub within: Precision,
+    /// The interval's confidence: 95% or 0.95
+    #[arg(long, value_name = "LEVEL", value_parser = confidence, default_value = "95%")]
+    pub confidence: Confidence,
+    /// Two limits, or only a lower or an upper one
+    #[arg(long, value_parser = kind(), ignore_case = true, default_value = "two-sided")]
+    pub kind: Kind,
+}
+
+/// `donelight size power …`
+#[derive(Debug, Args)]
+pub struct SizePower {
+    /// The index
+    #[arg(long, value_parser = index(), ignore_case = true, default_value = "cpk")]
+    pub index: Index,
+    /// The index claimed: what is rejected with a risk of alpha although it is true
+    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    pub claim: Millionths,
+    /// The other index: what shall be noticed with the wanted power
+    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    pub against: Millionths,
+    /// The risk of rejecting a true claim: 5% or 0.05
+    #[arg(long, value_name = "LEVEL", value_parser = alpha, default_value = "5%")]
+    pub alpha: Millionths,
+    /// The chance of noticing the other index: 95% or 0.95
+    #[arg(long, value_name = "LEVEL", value_parser = confidence, default_value = "95%")]
+    pub power: Confidence,
+}
+
+/// `donelight plan …`
+#[derive(Debug, Subcommand)]
+pub enum Plan {
+    /// Write a complete, valid, commented plan to start from
+    #[command(after_help = "Example:\n  donelight plan new plan.toml")]
+    New {
+        /// The file to write
+        file: PathBuf,
+        /// Replace the file if there is one
+        #[arg(long)]
+        force: bool,
+    },
+    /// Say all that is wrong with a plan, or what it asks for in words
+    #[command(after_help = "Example:\n  donelight plan check plan.toml")]
+    Check {
+        /// The plan
+        file: PathBuf,
+    },
+}
+
+/// Which station.
+#[derive(Debug, Args)]
+pub struct Port {
+    /// The station's serial port; not needed when just one station is attached
+    #[arg(long, value_name = "PORT")]
+    pub port: Option<String>,
+}
+
+/// `donelight station …`
+#[derive(Debug, Subcommand)]
+pub enum Station {
+    /// The stations that are attached
+    List,
+    /// What a station is doing
+    Status {
+        /// Which one
+        #[command(flatten)]
+        port: Port,
+    },
+    /// Load a plan
+    #[command(after_help = "Example:\n  donelight station load plan.toml --port /dev/ttyACM0")]
+    Load {
+        /// The plan
+        plan: PathBuf,
+        /// Which one
+        #[command(flatten)]
+        port: Port,
+    },
+    /// Fetch the records that the ledger does not have yet, and keep them
+    #[command(after_help = "Example:\n  donelight station pull --ledger lot7.sqlite")]
+    Pull {
+        /// The ledger [default: in the user's data folder]
+        #[arg(long, value_name = "FILE")]
+        ledger: Option<PathBuf>,
+        /// Which one
+        #[command(flatten)]
+        port: Port,
+    },
+    /// Set the station's clock to this computer's
+    Clock {
+        /// Which one
+        #[command(flatten)]
+        port: Port,
+    },
+    /// Let the station's lamps blink, to see which one it is
+    Blink {
+        /// Which one
+        #[command(flatten)]
+        port: Port,
+    },
+}
+
+/// `donelight virtual …`
+#[derive(Debug, Args)]
+#[command(after_help = "\
+Examples:
+  donelight virtual --store bench --process normal:2.000,0.012 --seed 7
+  donelight virtual --store bench --feed lines.txt --rate 20")]
+pub struct Virtual {
+    /// The folder of its journal; made if need be
+    #[arg(long, value_name = "DIR")]
+    pub store: PathBuf,
+    /// A simulated process: normal:MEAN,SD in the plan's unit
+    #[arg(long, value_name = "normal:MEAN,SD", value_parser = normal_process, conflicts_with = "feed", allow_hyphen_values = true)]
+    pub process: Option<NormalProcess>,
+    /// A file of gauge lines
+    #[arg(long, value_name = "FILE")]
+    pub feed: Option<PathBuf>,
+    /// The start of the simulation's random numbers
+    #[arg(long, value_name = "N", default_value_t = 1)]
+    pub seed: u64,
+    /// Readings a second
+    #[arg(long, value_name = "PER_SECOND", value_parser = rate, default_value = "10")]
+    pub rate: f64,
+    /// The process's mean moves by so much from one reading to the next
+    #[arg(long, value_name = "STEP", value_parser = finite, requires = "process", allow_hyphen_values = true)]
+    pub drift: Option<f64>,
+    /// Every so many readings, one is an outlier
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(1..), requires = "process")]
+    pub outlier_every: Option<u32>,
+    /// From this reading on, the gauge repeats itself
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(1..), requires = "process")]
+    pub stuck_from: Option<u32>,
+}
+
+/// `donelight assess …`
+#[derive(Debug, Args)]
+#[command(group = clap::ArgGroup::new("source").required(true))]
+#[command(group = clap::ArgGroup::new("limits").required(true).multiple(true))]
+#[command(after_help = "\
+Examples:
+  donelight assess lids.csv --lsl 1.95 --usl 2.05 --resolution 0.001
+  donelight assess lids.csv --column thickness --usl 2.05 --resolution 0.001 --index cpu --require 1.33
+  donelight assess --summary n=212,mean=2.0013,sd=0.0101 --lsl 1.95 --usl 2.05 --report lids.html")]
+pub struct Assess {
+    /// Readings: a CSV file, or text with one reading a line
+    #[arg(value_name = "FILE.csv", group = "source")]
+    pub file: Option<PathBuf>,
+    /// Instead of readings: their number, mean and standard deviation (n − 1)
+    #[arg(long, value_name = "n=…,mean=…,sd=…", value_parser = summary, group = "source")]
+    pub summary: Option<Summary>,
+    /// The column of the readings, by its title or number [default: the first with numbers]
+    #[arg(long, value_name = "NAME|NUMBER", conflicts_with = "summary")]
+    pub column: Option<String>,
+    /// The gauge's step, such as 0.001: readings are counted in it, exactly
+    #[arg(long, value_name = "STEP", required_unless_present = "summary")]
+    pub resolution: Option<Resolution>,
+    /// The unit's word
+    #[arg(long, value_name = "WORD", default_value = "", hide_default_value = true)]
+    pub unit: String,
+    /// Lower specification limit
+    #[arg(long, value_name = "LIMIT", group = "limits", allow_hyphen_values = true)]
+    pub lsl: Option<Decimal>,
+    /// Upper specification limit
+    #[arg(long, value_name = "LIMIT", group = "limits", allow_hyphen_values = true)]
+    pub usl: Option<Decimal>,
+    /// Target
+    #[arg(long, value_name = "VALUE", allow_hyphen_values = true)]
+    pub target: Option<Decimal>,
+    /// The index
+    #[arg(long, value_parser = index(), ignore_case = true, default_value = "cpk")]
+    pub index: Index,
+    /// The interval's confidence: 95% or 0.95
+    #[arg(long, value_name = "LEVEL", value_parser = confidence, default_value = "95%")]
+    pub confidence: Confidence,
+    /// Two limits, or only a lower or an upper one
+    #[arg(long, value_parser = kind(), ignore_case = true, default_value = "two-sided")]
+    pub kind: Kind,
+    /// The index to be shown: exit code 1 unless the lower limit reaches it
+    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    pub require: Option<Millionths>,
+    /// Write the page, with pictures
+    #[arg(long, value_name = "FILE.html")]
+    pub report: Option<PathBuf>,
+    /// The page's title [default: the file's name]
+    #[arg(long)]
+    pub title: Option<String>,
+}
+
+/// `donelight report …`
+#[derive(Debug, Args)]
+#[command(after_help = "\
+Examples:
+  donelight report -o report.html
+  donelight report \"Wick tubes, lot 7\" --ledger lot7.sqlite -o lot7.html --csv lot7.csv")]
+pub struct Report {
+    /// The study's name or number [default: the newest]
+    pub study: Option<String>,
+    /// The ledger [default: in the user's data folder]
+    #[arg(long, value_name = "FILE")]
+    pub ledger: Option<PathBuf>,
+    /// Write the page
+    #[arg(short, long, value_name = "FILE.html")]
+    pub output: Option<PathBuf>,
+    /// Write the readings
+    #[arg(long, value_name = "FILE")]
+    pub csv: Option<PathBuf>,
+}
+
+/// `donelight demo …`
+#[derive(Debug, Args)]
+#[command(after_help = "Example:\n  donelight demo --out demo")]
+pub struct Demo {
+    /// Where plan.toml, ledger.sqlite and report.html go [default: a new folder]
+    #[arg(long, value_name = "DIR")]
+    pub out: Option<PathBuf>,
+}
+
+/// `normal:MEAN,SD`
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct NormalProcess {
+    /// Finite.
+    pub mean: f64,
+    /// Finite and above 0.
+    pub sd: f64,
+}
+
+/// `n=…,mean=…,sd=…`
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Summary {
+    /// Number of readings.
+    pub n: Count,
+    /// Their mean.
+    pub mean: f64,
+    /// Their standard deviation, with n − 1.
+    pub sd: f64,
+}
+
+fn index() -> impl TypedValueParser<Value = Index> {
+    PossibleValuesParser::new(["cp", "cpl", "cpu", "cpk", "cpm"]).try_map(|name| name.parse::<Index>())
+}
+
+fn kind() -> impl TypedValueParser<Value = Kind> {
+    PossibleValuesParser::new(["two-sided", "lower", "upper"]).try_map(|name| name.parse::<Kind>())
+}
+
+fn confidence(text: &str) -> Result<Confidence, String> {
+    let level = level::read(text).map_err(|error| error.to_string())?;
+    Confidence::from_millionths(level.millionths).ok_or_else(|| "not between 50% and 99.9999%".to_owned())
+}
+
+fn alpha(text: &str) -> Result<Millionths, String> {
+    let level = level::read(text).map_err(|error| error.to_string())?;
+    match level.millionths {
+        1..=500_000 => Ok(Millionths(level.millionths)),
+        _ => Err("not above 0% and up to 50%; write for example 5% or 0.05".to_owned()),
+    }
+}
+
+fn index_value(text: &str) -> Result<Millionths, String> {
+    let level = level::read(text).map_err(|error| match error {
+        level::LevelError::NotANumber => "not a positive number such as 1.33".to_owned(),
+        other => other.to_string(),
+    })?;
+    match level {
+        level::Level { percent: true, .. } => {
+            Err("an index has no percent sign; write for example 1.33".to_owned())
+        }
+        level::Level { millionths: 10_000..=100_000_000, .. } => Ok(Millionths(level.millionths)),
+        _ => Err("not between 0.01 and 100".to_owned()),
+    }
+}
+
+fn precision(text: &str) -> Result<Precision, String> {
+    let level = level::read(text).map_err(|error| error.to_string())?;
+    match level {
+        level::Level { millionths: 0, .. } => Err("a width must be above zero".to_owned()),
+        level::Level { percent: true, millionths } => Ok(Precision::Relative(Millionths(millionths))),
+        level::Level { percent: false, millionths } => Ok(Precision::Absolute(Millionths(millionths))),
+    }
+}
+
+fn finite(text: &str) -> Result<f64, String> {
+    match text.trim().parse::<f64>() {
+        Ok(value) if value.is_finite() => Ok(value),
+        _ => Err(format!("{text:?} is not a number with a decimal point, such as 2.001")),
+    }
+}
+
+fn count(text: &str) -> Result<Count, String> {
+    let n = text.parse().map_err(|_| format!("n={text} is not a whole number"))?;
+    Count::new(n).ok_or_else(|| format!("n={text} is above one million"))
+}
+
+fn rate(text: &str) -> Result<f64, String> {
+    finite(text).and_then(|rate| {
+        if rate > 0.0 && rate <= 100_000.0 {
+            Ok(rate)
+        } else {
+            Err("not above 0 and up to 100000".to_owned())
+        }
+    })
+}
+
+fn normal_process(text: &str) -> Result<NormalProcess, String> {
+    let numbers = text.strip_prefix("normal:").and_then(|rest| rest.split_once(','));
+    let Some((mean, sd)) = numbers else {
+        return Err("write normal:MEAN,SD, for example normal:2.000,0.012".to_owned());
+    };
+    let (mean, sd) = (finite(mean)?, finite(sd)?);
+    if sd > 0.0 {
+        Ok(NormalProcess { mean, sd })
+    } else {
+        Err("the standard deviation must be above zero".to_owned())
+    }
+}
+
+fn summary(text: &str) -> Result<Summary, String> {
+    let (mut n, mut mean, mut sd) = (None, None, None);
+    for item in text.split(',') {
+        let (name, value) =
+            item.split_once('=').ok_or("write n=…,mean=…,sd=…, for example n=50,mean=2.001,sd=0.01")?;
+        let (name, value) = (name.trim(), value.trim());
+        let twice = match name {
+            "n" => n.replace(count(value)?).is_some(),
+            "mean" => mean.replace(finite(value)?).is_some(),
+            "sd" => sd.replace(finite(value)?).is_some(),
+            _ => return Err(format!("{name:?} is not known; write n=…,mean=…,sd=…")),
+        };
+        if twice {
+            return Err(format!("{name} is given twice"));
+        }
+    }
+    match (n, mean, sd) {
+        (Some(n), Some(mean), Some(sd)) => Ok(Summary { n, mean, sd }),
+        _ => Err("n, mean and sd are all needed: n=…,mean=…,sd=…".to_owned()),
+    }
+}

@@ -1,0 +1,33 @@
+//! One module a command. Each takes its options and gives an [`Answer`] or a [`Failure`].
+
+mod size;
+
+use crate::cli::Command;
+use crate::output::{Answer, Console, Exit, Failure};
+
+/// Does what the command line says.
+///
+/// # Errors
+/// What the command could not do, with what to do about it.
+pub fn run(command: Command, _console: &mut Console) -> Result<Answer, Failure> {
+    match command {
+        Command::Size(size) => size::run(&size),
+        Command::Plan(_) => Err(not_built_yet("plan")),
+        Command::Station(_) => Err(not_built_yet("station")),
+        Command::Virtual(_) => Err(not_built_yet("virtual")),
+        Command::Assess(_) => Err(not_built_yet("assess")),
+        Command::Report(_) => Err(not_built_yet("report")),
+        Command::Demo(_) => Err(not_built_yet("demo")),
+    }
+}
+
+/// Holds a command's place until its module is there.
+fn not_built_yet(command: &str) -> Failure {
+    Failure {
+        kind: "not-built-yet",
+        message: format!("`donelight {command}` is not built yet"),
+        help: "Use a later version.".to_owned(),
+        exit: Exit::Refused,
+        details: None,
+    }
+}

@@ -1,0 +1,167 @@
+//! `donelight size`: how many pieces a study needs, by precision or by power.
+
+use donelight_core::interval::{Interval, Kind};
+use donelight_core::quantity::{Confidence, Millionths, Precision};
+use donelight_core::sizing::SizingError;
+use donelight_core::sizing::power::{self, PowerSize};
+use donelight_core::sizing::precision::{self, PrecisionSize};
+use serde_json::{Value, json};
+
+use crate::cli::{Size, SizePower, SizePrecision};
+use crate::level;
+use crate::output::{Answer, Exit, Explain, Failure};
+
+impl Explain for SizingError {
+    fn kind(&self) -> &'static str {
+        match self {
+            Self::AboveLimit => "size-above-limit",
+            Self::NoMethodYet(_) => "no-method-yet",
+            _ => "size-options",
+        }
+    }
+
+    fn help(&self) -> String {
+        String::new()
+    }
+
+    fn exit(&self) -> Exit {
+        match self {
+            Self::AboveLimit | Self::NoMethodYet(_) => Exit::Refused,
+            _ => Exit::WrongUse,
+        }
+    }
+}
+
+/// Answers `donelight size …`.
+///
+/// # Errors
+/// Options that contradict each other, or a demand that no study meets.
+pub(super) fn run(size: &Size) -> Result<Answer, Failure> {
+    match size {
+        Size::Precision(options) => by_precision(options),
+        Size::Power(options) => by_power(options),
+    }
+}
+
+const METHOD: &str = "Method: normal approximation of Bissell (1990), sigma overall with n \u{2212} 1 degrees of \
+    freedom.\nIt supposes a stable process and readings near to normal.";
+
+fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
+    let &SizePrecision { index, at, within, confidence, kind } = options;
+    let size = precision::smallest(index, at.to_f64(), within, confidence, kind)?;
+    let PrecisionSize { n, achieved, achieved_before, interval } = size;
+    let before = achieved_before.map_or_else(
+        || "Fewer pieces have no interval.".to_owned(),
+        |before| {
+            format!("With {} it would be {}, which is too far.", pieces(n.get() - 1), width(within, before))
+        },
+    );
+    let text = format!(
+        "Measure {}.\n\nIf {index} then comes out at {}, {} is {}.\n\
+         It reaches {} from the estimate; {} is wanted. {before}\n\n{METHOD}",
+        pieces(n.get()),
+        level::plain(at.0),
+        called(confidence, kind),
+        shown(&interval),
+        width(within, achieved),
+        wanted(within),
+    );
+    Ok(Answer::done(
+        text,
+        json!({
+            "n": n.get(),
+            "achieved": achieved,
+            "achieved_before": achieved_before,
+            "low": interval.low,
+            "high": interval.high,
+            "index": index.name().to_lowercase(),
+            "at": at.to_f64(),
+            "within": goal_json(within),
+            "confidence": confidence.to_f64(),
+            "kind": kind.name(),
+            "method": "bissell",
+        }),
+    ))
+}
+
+fn by_power(options: &SizePower) -> Result<Answer, Failure> {
+    let &SizePower { index, claim, against, alpha, power } = options;
+    let size = power::smallest(index, claim.to_f64(), against.to_f64(), alpha, power)?;
+    let PowerSize { n, achieved, achieved_before, critical } = size;
+    let side = if against < claim { "below" } else { "above" };
+    let before = achieved_before.map_or_else(
+        || "Fewer pieces have no test.".to_owned(),
+        |before| format!("{} would notice it with only {}.", pieces(n.get() - 1), percent(before, 4)),
+    );
+    let text = format!(
+        "Measure {}.\n\nReject the claim that {index} is {} if the estimate is {side} {critical:.4}.\n\
+         A true claim is then rejected with a risk of {}; an index of {} is noticed with {}.\n{before}\n\n{METHOD}",
+        pieces(n.get()),
+        level::plain(claim.0),
+        level::percent(alpha.0),
+        level::plain(against.0),
+        percent(achieved, 4),
+    );
+    Ok(Answer::done(
+        text,
+        json!({
+            "n": n.get(),
+            "achieved": achieved,
+            "achieved_before": achieved_before,
+            "critical": critical,
+            "index": index.name().to_lowercase(),
+            "claim": claim.to_f64(),
+            "against": against.to_f64(),
+            "alpha": alpha.to_f64(),
+            "power": power.to_f64(),
+            "method": "bissell",
+        }),
+    ))
+}
+
+fn pieces(n: u32) -> String {
+    format!("{n} pieces")
+}
+
+/// "its two-sided 95 % interval", "its lower 95 % bound".
+fn called(confidence: Confidence, kind: Kind) -> String {
+    let confidence = level::percent(confidence.millionths());
+    match kind {
+        Kind::TwoSided => format!("its two-sided {confidence} interval"),
+        Kind::Lower => format!("its lower {confidence} bound"),
+        Kind::Upper => format!("its upper {confidence} bound"),
+    }
+}
+
+fn shown(interval: &Interval) -> String {
+    match (interval.low, interval.high) {
+        (Some(low), Some(high)) => format!("{low:.4} to {high:.4}"),
+        (Some(end), None) | (None, Some(end)) => format!("{end:.4}"),
+        (None, None) => "unknown".to_owned(),
+    }
+}
+
+fn width(precision: Precision, achieved: f64) -> String {
+    match precision {
+        Precision::Relative(_) => percent(achieved, 4),
+        Precision::Absolute(_) => format!("{achieved:.6}"),
+    }
+}
+
+fn wanted(precision: Precision) -> String {
+    match precision {
+        Precision::Relative(Millionths(goal)) => format!("at most {}", level::percent(goal)),
+        Precision::Absolute(Millionths(goal)) => format!("at most {}", level::plain(goal)),
+    }
+}
+
+fn goal_json(precision: Precision) -> Value {
+    match precision {
+        Precision::Relative(goal) => json!({ "relative": goal.to_f64() }),
+        Precision::Absolute(goal) => json!({ "absolute": goal.to_f64() }),
+    }
+}
+
+fn percent(fraction: f64, places: usize) -> String {
+    format!("{:.places$} %", fraction * 100.0)
+}

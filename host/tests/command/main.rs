@@ -1,0 +1,5 @@
+//! The built command, run as a script or a person runs it: its answers, errors and exit codes.
+
+mod driver;
+mod output;
+mod size;

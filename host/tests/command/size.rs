@@ -1,0 +1,108 @@
+//! `donelight size`, as a script and as a person see it.
+
+use crate::driver::donelight;
+
+#[test]
+fn cpk_of_1_5_within_ten_percent_takes_212_pieces() {
+    // Common practice, no source.
+    let answer = donelight("size precision --index cpk --at 1.5 --within 10% --json").ends_with(0).json();
+    assert_eq!(answer["n"], 212);
+    let close = |name: &str, value: f64| {
+        let given = answer[name].as_f64().unwrap();
+        assert!((given - value).abs() < 5e-6, "{name} {given}");
+    };
+    close("achieved", 0.099989);
+    close("achieved_before", 0.100227);
+    close("low", 1.350016);
+    close("high", 1.649984);
+    assert_eq!(answer["kind"], "two-sided");
+    assert_eq!(answer["confidence"], 0.95);
+    assert_eq!(answer["method"], "bissell");
+}
+
+#[test]
+fn a_claim_of_1_5_against_1_3_takes_297_pieces() {
+    // Common practice, no source.
+    let answer = donelight("size power --index cpk --claim 1.5 --against 1.3 --json").ends_with(0).json();
+    assert_eq!(answer["n"], 297);
+    let achieved = answer["achieved"].as_f64().unwrap();
+    assert!((achieved - 0.950464).abs() < 5e-7, "{achieved}");
+    assert!(answer["achieved_before"].as_f64().unwrap() < 0.95);
+    assert!((answer["critical"].as_f64().unwrap() - 1.3937).abs() < 5e-5);
+}
+
+#[test]
+fn the_words_name_the_pieces_the_interval_and_what_one_piece_fewer_would_do() {
+    let answer = donelight("size precision --index cpk --at 1.5 --within 10%").ends_with(0);
+    assert_eq!(
+        answer.out,
+        "Measure 212 pieces.\n\
+         \n\
+         If Cpk then comes out at 1.5, its two-sided 95 % interval is 1.3500 to 1.6500.\n\
+         It reaches 9.9989 % from the estimate; at most 10 % is wanted. With 211 pieces it would be 10.0227 %, which is too far.\n\
+         \n\
+         Method: normal approximation of Bissell (1990), sigma overall with n \u{2212} 1 degrees of freedom.\n\
+         It supposes a stable process and readings near to normal.\n"
+    );
+    let answer = donelight("size power --index cpk --claim 1.5 --against 1.3").ends_with(0);
+    assert!(answer.out.starts_with("Measure 297 pieces.\n"), "{}", answer.out);
+    assert!(answer.out.contains("95.0464 %") && answer.out.contains("94.9852 %"), "{}", answer.out);
+}
+
+#[test]
+fn the_same_level_in_any_writing_gives_the_same_answer() {
+    let first = donelight("size precision --at 1.5 --within 10% --confidence 95% --json").json();
+    for line in [
+        "size precision --at 1,5 --within 10.0% --confidence 0.95 --json",
+        "--json size precision --index CPK --at 1.50 --within 10% --kind Two-Sided",
+    ] {
+        assert_eq!(donelight(line).ends_with(0).json(), first);
+    }
+}
+
+#[test]
+fn an_absolute_width_and_a_bound_are_answered_in_their_own_terms() {
+    let answer = donelight("size precision --at 1.5 --within 0.15 --json").ends_with(0).json();
+    assert_eq!(answer["n"], 212, "0.15 is 10 % of 1.5");
+    assert!(answer["achieved"].as_f64().unwrap() <= 0.15);
+    let answer = donelight("size precision --at 1.5 --within 10% --kind lower --json").ends_with(0).json();
+    assert!(answer["high"].is_null() && answer["low"].as_f64().unwrap() >= 1.35);
+}
+
+#[test]
+fn options_out_of_range_or_contradicting_each_other_are_wrong_use() {
+    for line in [
+        "size",
+        "size precision --at 1.5",
+        "size precision --at 1.5 --within 0%",
+        "size precision --at 0 --within 10%",
+        "size precision --at -1 --within 10%",
+        "size precision --at 150% --within 10%",
+        "size precision --at 1.5 --within 10% --confidence 95",
+        "size precision --at 1.5 --within 10% --confidence 49%",
+        "size precision --at 1.5 --within 10% --confidence 100%",
+        "size precision --at 1.5 --within 10% --confidence 95.00001%",
+        "size precision --at 1.5 --within 10% --index cpq",
+        "size precision --at 1.5 --within 10% --kind both",
+        "size power --claim 1.5 --against 1.5",
+        "size power --claim 1.5 --against 1.3 --alpha 0%",
+        "size power --claim 1.5 --against 1.3 --alpha 51%",
+        "size power --claim 1.5 --against 1.3 --power 100%",
+        "size power --claim 1.5 --against 1.3 --depth 3",
+    ] {
+        let answer = donelight(line).ends_with(2);
+        assert!(answer.err.starts_with("error: ") || answer.err.contains("Usage:"), "{line}: {}", answer.err);
+        assert!(answer.out.is_empty(), "{line}: {}", answer.out);
+    }
+}
+
+#[test]
+fn what_no_study_can_reach_is_refused_with_advice() {
+    let answer = donelight("size precision --at 1.5 --within 0.01% --json").ends_with(1);
+    let error = &answer.json()["error"];
+    assert_eq!(error["kind"], "size-above-limit");
+    assert!(error["message"].as_str().unwrap().contains("accept a wider precision"));
+    assert!(answer.err.contains("more than one million pieces"));
+    let answer = donelight("size precision --index cpm --at 1.5 --within 10%").ends_with(1);
+    assert!(answer.err.contains("choose cpk"), "{}", answer.err);
+}
