@@ -1,0 +1,356 @@
+//! The sampling plan: what is measured, what is wanted of it, when it is enough, and how the gauge talks.
+//!
+//! A [`Draft`] may hold anything and names all its faults at once; a [`Plan`] is a draft without a fault, and is
+//! checked again whenever it is decoded, so a station never runs on nonsense.
+
+use serde::{Deserialize, Serialize};
+
+use crate::{
+    capability::{Index, Specification},
+    counts::{Decimal, Resolution},
+    interval::{Kind, Quantile},
+    quantity::{Confidence, Precision},
+    stopping::StoppingRule,
+    text::Text,
+};
+
+/// A serial line's parity bit.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub enum Parity {
+    /// No parity bit.
+    None,
+    /// An even number of ones.
+    Even,
+    /// An odd number of ones.
+    Odd,
+}
+
+/// How the gauge sends its lines.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub struct LineSettings {
+    /// Bits a second, 300 to 115 200.
+    pub baud: u32,
+    /// 7 or 8.
+    pub data_bits: u8,
+    /// The parity bit.
+    pub parity: Parity,
+    /// 1 or 2.
+    pub stop_bits: u8,
+}
+
+impl Default for LineSettings {
+    fn default() -> Self {
+        Self { baud: 9600, data_bits: 8, parity: Parity::None, stop_bits: 1 }
+    }
+}
+
+/// What a plan is made of, unchecked.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Draft {
+    /// The study's name.
+    pub name: Text<40>,
+    /// The part that is measured; may be empty.
+    pub part: Text<24>,
+    /// What is measured of it; may be empty.
+    pub characteristic: Text<24>,
+    /// The unit's word, as the gauge may send it behind the number; may be empty.
+    pub unit: Text<8>,
+    /// The gauge's digital step, in the unit.
+    pub resolution: Resolution,
+    /// The lower specification limit, in the unit.
+    pub lower: Option<Decimal>,
+    /// The upper specification limit, in the unit.
+    pub upper: Option<Decimal>,
+    /// The target, in the unit.
+    pub target: Option<Decimal>,
+    /// The index that the study is about.
+    pub index: Index,
+    /// The confidence of its interval.
+    pub confidence: Confidence,
+    /// Two-sided, or a bound.
+    pub kind: Kind,
+    /// When it is enough.
+    pub rule: StoppingRule,
+    /// How the gauge sends.
+    pub gauge: LineSettings,
+    /// So many equal readings one after the other hold the study until someone has looked (gauge stuck?); 0: never.
+    pub same_in_a_row: u8,
+}
+
+/// One thing wrong with a draft. [`Fault::field`] names the field that has to change.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+#[non_exhaustive]
+pub enum Fault {
+    /// The study has no name.
+    NoName,
+    /// The unit is not a plain ASCII word.
+    UnitNotAWord,
+    /// Neither limit is given.
+    NoLimit,
+    /// The lower limit is not below the upper one.
+    LimitsReversed,
+    /// The target is not between the limits.
+    TargetOutside,
+    /// A limit or the target lies beyond what the resolution can count.
+    LimitBeyondRange,
+    /// The limits are less than one step of the resolution apart.
+    ResolutionTooCoarse,
+    /// The index needs a lower limit.
+    IndexNeedsLower,
+    /// The index needs an upper limit.
+    IndexNeedsUpper,
+    /// The index has no interval method yet.
+    IndexWithoutInterval,
+    /// Fewer than two pieces are planned.
+    PlannedTooFew,
+    /// More pieces are planned than the limit allows.
+    PlannedAboveLimit,
+    /// The precision is an absolute width, which would bend the interval's coverage.
+    PrecisionAbsolute,
+    /// The precision is zero.
+    PrecisionZero,
+    /// The precision cannot be reached within the limit, whatever is measured.
+    PrecisionBeyondLimit,
+    /// The baud rate is not between 300 and 115 200.
+    Baud,
+    /// The data bits are neither 7 nor 8.
+    DataBits,
+    /// The stop bits are neither 1 nor 2.
+    StopBits,
+    /// One or two equal readings in a row are no sign of a stuck gauge.
+    SameInARow,
+}
+
+/// The field of a plan that a fault points at.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[allow(missing_docs, reason = "the fields of Draft, described there")]
+pub enum Field {
+    Name,
+    Unit,
+    Resolution,
+    Lower,
+    Upper,
+    Target,
+    Index,
+    Planned,
+    Precision,
+    Limit,
+    Baud,
+    DataBits,
+    StopBits,
+    SameInARow,
+}
+
+impl Fault {
+    /// The field that has to change.
+    #[must_use]
+    pub fn field(self) -> Field {
+        match self {
+            Self::NoName => Field::Name,
+            Self::UnitNotAWord => Field::Unit,
+            Self::NoLimit | Self::LimitBeyondRange | Self::IndexNeedsLower => Field::Lower,
+            Self::LimitsReversed | Self::IndexNeedsUpper => Field::Upper,
+            Self::TargetOutside => Field::Target,
+            Self::ResolutionTooCoarse => Field::Resolution,
+            Self::IndexWithoutInterval => Field::Index,
+            Self::PlannedTooFew | Self::PlannedAboveLimit => Field::Planned,
+            Self::PrecisionAbsolute | Self::PrecisionZero => Field::Precision,
+            Self::PrecisionBeyondLimit => Field::Limit,
+            Self::Baud => Field::Baud,
+            Self::DataBits => Field::DataBits,
+            Self::StopBits => Field::StopBits,
+            Self::SameInARow => Field::SameInARow,
+        }
+    }
+}
+
+impl core::fmt::Display for Fault {
+    fn fmt(&self, f: &mut core::fmt::Formatter<'_>) -> core::fmt::Result {
+        f.write_str(match self {
+            Self::NoName => "the study has no name: give it one",
+            Self::UnitNotAWord => "the unit must be a plain word such as mm, without digits, signs or spaces",
+            Self::NoLimit => "there is neither a lower nor an upper limit: give at least one",
+            Self::LimitsReversed => "the lower limit is not below the upper one: exchange or correct them",
+            Self::TargetOutside => "the target lies outside the limits: correct the one or the other",
+            Self::LimitBeyondRange => {
+                "a limit or the target is too large to be counted in steps of the resolution: check the unit"
+            }
+            Self::ResolutionTooCoarse => {
+                "the limits are less than one step of the resolution apart: use a finer gauge or check the unit"
+            }
+            Self::IndexNeedsLower => "this index needs a lower limit: give one, or choose cpu or cpk",
+            Self::IndexNeedsUpper => "this index needs an upper limit: give one, or choose cpl or cpk",
+            Self::IndexWithoutInterval => {
+                "this index has no interval method on the station yet: choose cpk, cpl, cpu or cp"
+            }
+            Self::PlannedTooFew => "at least two pieces must be planned",
+            Self::PlannedAboveLimit => "more pieces are planned than the limit allows: raise the limit",
+            Self::PrecisionAbsolute => {
+                "a station stops on a relative precision only, such as 10%: an absolute width would stop early \
+                 whenever the estimate is low, and the interval would cover less than it promises"
+            }
+            Self::PrecisionZero => "the precision must be above zero",
+            Self::PrecisionBeyondLimit => {
+                "the precision cannot be reached within the limit, whatever is measured: raise the limit or allow \
+                 a wider interval"
+            }
+            Self::Baud => "the baud rate must be between 300 and 115200",
+            Self::DataBits => "the data bits must be 7 or 8",
+            Self::StopBits => "the stop bits must be 1 or 2",
+            Self::SameInARow => "equal readings in a row: 0 for never, or 3 and more",
+        })
+    }
+}
+
+impl core::error::Error for Fault {}
+
+/// At most so many faults can a draft have at once.
+const FAULTS_MAX: usize = 20;
+
+/// All the faults of a draft.
+pub type Faults = heapless::Vec<Fault, FAULTS_MAX>;
+
+impl Draft {
+    /// Limits beyond so many steps of the resolution are a mistake in the unit; [`crate::counts::Counts`] bounds readings likewise.
+    const STEPS_MAX: f64 = 1e12;
+
+    /// All that is wrong, at once; empty for a valid plan.
+    #[must_use]
+    pub fn faults(&self) -> Faults {
+        let mut faults = Faults::new();
+        let mut check = |wrong: bool, fault: Fault| {
+            if wrong {
+                // Each fault is checked once and there are fewer than FAULTS_MAX of them.
+                let _ = faults.push(fault);
+            }
+        };
+        check(self.name.as_str().trim().is_empty(), Fault::NoName);
+        check(!self.unit.as_str().bytes().all(|b| b.is_ascii_alphabetic() || b == b'%'), Fault::UnitNotAWord);
+        self.check_limits(&mut check);
+        self.check_rule(&mut check);
+        check(!(300..=115_200).contains(&self.gauge.baud), Fault::Baud);
+        check(!matches!(self.gauge.data_bits, 7 | 8), Fault::DataBits);
+        check(!matches!(self.gauge.stop_bits, 1 | 2), Fault::StopBits);
+        check(matches!(self.same_in_a_row, 1 | 2), Fault::SameInARow);
+        faults
+    }
+
+    fn check_limits(&self, check: &mut impl FnMut(bool, Fault)) {
+        check(self.lower.is_none() && self.upper.is_none(), Fault::NoLimit);
+        if let (Some(lower), Some(upper)) = (self.lower, self.upper) {
+            check(lower >= upper, Fault::LimitsReversed);
+            check(
+                lower < upper && upper.to_f64() - lower.to_f64() < self.resolution.to_f64(),
+                Fault::ResolutionTooCoarse,
+            );
+        }
+        if let Some(target) = self.target {
+            let outside = self.lower.is_some_and(|lower| target < lower)
+                || self.upper.is_some_and(|upper| target > upper);
+            check(outside, Fault::TargetOutside);
+        }
+        let countable = |value: Option<Decimal>| value.is_none_or(|v| self.countable(v));
+        check(![self.lower, self.upper, self.target].into_iter().all(countable), Fault::LimitBeyondRange);
+        let some_limit = self.lower.is_some() || self.upper.is_some();
+        let needs_lower = matches!(self.index, Index::Cp | Index::Cpl | Index::Cpm);
+        let needs_upper = matches!(self.index, Index::Cp | Index::Cpu | Index::Cpm);
+        check(some_limit && needs_lower && self.lower.is_none(), Fault::IndexNeedsLower);
+        check(some_limit && needs_upper && self.upper.is_none(), Fault::IndexNeedsUpper);
+        check(self.index == Index::Cpm, Fault::IndexWithoutInterval);
+    }
+
+    /// Whether a reading could come near `value`.
+    fn countable(&self, value: Decimal) -> bool {
+        let steps = libm::fabs(value.to_f64()) / self.resolution.to_f64();
+        self.resolution.to_f64() > 0.0 && steps <= Self::STEPS_MAX
+    }
+
+    fn check_rule(&self, check: &mut impl FnMut(bool, Fault)) {
+        let rule = self.rule;
+        check(rule.planned.get() < 2, Fault::PlannedTooFew);
+        check(rule.planned > rule.limit, Fault::PlannedAboveLimit);
+        match rule.precision {
+            Precision::Absolute(_) => check(true, Fault::PrecisionAbsolute),
+            Precision::Relative(goal) => {
+                check(goal.0 == 0, Fault::PrecisionZero);
+                // The half-width is above z/√(2ν) whatever the estimate (Bissell 1990, the location term left out).
+                let z = Quantile::new(self.confidence, self.kind).z();
+                let nu = f64::from(rule.limit.get()) - 1.0;
+                let goal = goal.to_f64();
+                check(goal > 0.0 && 2.0 * nu * goal * goal < z * z, Fault::PrecisionBeyondLimit);
+            }
+        }
+    }
+}
+
+/// A draft without a fault.
+#[derive(Clone, Debug, Serialize, Deserialize)]
+#[serde(try_from = "Draft", into = "Draft")]
+pub struct Plan {
+    draft: Draft,
+    specification: Specification,
+    quantile: Quantile,
+}
+
+impl PartialEq for Plan {
+    fn eq(&self, other: &Self) -> bool {
+        self.draft == other.draft
+    }
+}
+
+impl Eq for Plan {}
+
+impl Plan {
+    /// What the plan says.
+    #[must_use]
+    pub fn draft(&self) -> &Draft {
+        &self.draft
+    }
+
+    /// The limits and the target.
+    #[must_use]
+    pub fn specification(&self) -> &Specification {
+        &self.specification
+    }
+
+    /// The quantile of its confidence and kind, computed once.
+    #[must_use]
+    pub fn quantile(&self) -> &Quantile {
+        &self.quantile
+    }
+}
+
+impl core::ops::Deref for Plan {
+    type Target = Draft;
+
+    fn deref(&self) -> &Draft {
+        &self.draft
+    }
+}
+
+impl TryFrom<Draft> for Plan {
+    type Error = Fault;
+
+    fn try_from(draft: Draft) -> Result<Self, Fault> {
+        if let Some(fault) = draft.faults().first() {
+            return Err(*fault);
+        }
+        match Specification::new(draft.lower, draft.upper, draft.target) {
+            Ok(specification) => {
+                let quantile = Quantile::new(draft.confidence, draft.kind);
+                Ok(Self { draft, specification, quantile })
+            }
+            // The draft's own checks are at least as strict.
+            Err(_) => Err(Fault::NoLimit),
+        }
+    }
+}
+
+impl From<Plan> for Draft {
+    fn from(plan: Plan) -> Self {
+        plan.draft
+    }
+}
