@@ -29,6 +29,7 @@ pub mod moments;
 pub mod plan;
 pub mod quantity;
 mod ratio;
+pub mod record;
 pub mod sizing;
 pub mod special;
 pub mod stopping;
