@@ -24,6 +24,7 @@ extern crate std;
 
 pub mod capability;
 pub mod counts;
+pub mod gauge;
 pub mod interval;
 pub mod moments;
 pub mod plan;
