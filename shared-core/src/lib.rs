@@ -26,6 +26,7 @@ pub mod capability;
 pub mod counts;
 pub mod gauge;
 pub mod interval;
+pub mod journal;
 pub mod moments;
 pub mod plan;
 pub mod quantity;

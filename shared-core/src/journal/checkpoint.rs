@@ -1,0 +1,153 @@
+//! Checkpoints: what must survive when the records that led to it are erased.
+//!
+//! Two sectors take turns. Each holds slots that are filled one after the other; when one sector is full the other is
+//! erased, so a valid checkpoint exists at every moment after the first. The highest number wins.
+//!
+//! ```text
+//! | "DC" | format: 1 | 0xFF | number: u32 | released: u32 | next: u32 | length: u16 | state … | CRC-32 of all before: u32 |
+//! ```
+
+use embedded_storage::nor_flash::NorFlash;
+
+use crate::record::{CRC, Seq};
+
+/// Bytes of a slot.
+pub(super) const SLOT: usize = 512;
+const SLOT_U32: u32 = 512;
+const HEADER: usize = 18;
+const SUM: usize = 4;
+const MAGIC: [u8; 4] = *b"DC\x01\xff";
+/// The most that a state may take.
+pub const STATE_MAX: usize = SLOT - HEADER - SUM;
+
+/// The place of the latest checkpoint, and of the next one.
+#[derive(Debug)]
+pub(super) struct Checkpoints {
+    slots_in_sector: u32,
+    sector: u32,
+    latest: Option<Found>,
+    /// Slot of the next checkpoint, counted through both sectors. At the begin of a sector, that sector is erased first.
+    next_slot: u32,
+}
+
+/// What a valid slot says of itself.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Found {
+    slot: u32,
+    number: u32,
+    pub(super) released: Seq,
+    pub(super) next: Seq,
+    length: usize,
+}
+
+/// One slot's bytes.
+pub(super) type Slot = [u8; SLOT];
+
+fn check(slot: &Slot, index: u32) -> Option<Found> {
+    let (magic, rest) = slot.split_first_chunk::<4>()?;
+    if *magic != MAGIC {
+        return None;
+    }
+    let (number, rest) = rest.split_first_chunk::<4>()?;
+    let (released, rest) = rest.split_first_chunk::<4>()?;
+    let (next, rest) = rest.split_first_chunk::<4>()?;
+    let (length, _) = rest.split_first_chunk::<2>()?;
+    let length = usize::from(u16::from_le_bytes(*length));
+    let (sealed, rest) = slot.split_at_checked(HEADER + length)?;
+    let sum = rest.first_chunk::<SUM>()?;
+    (CRC.checksum(sealed) == u32::from_le_bytes(*sum)).then_some(Found {
+        slot: index,
+        number: u32::from_le_bytes(*number),
+        released: Seq(u32::from_le_bytes(*released)),
+        next: Seq(u32::from_le_bytes(*next)),
+        length,
+    })
+}
+
+impl Checkpoints {
+    /// Looks through both sectors, which begin at address 0.
+    pub(super) fn find<F: NorFlash>(flash: &mut F, buffer: &mut Slot) -> Result<Self, F::Error> {
+        #[allow(clippy::cast_possible_truncation, reason = "an erase unit of a NOR flash is far below 4 GiB")]
+        let sector = F::ERASE_SIZE as u32;
+        let slots_in_sector = sector / SLOT_U32;
+        let mut latest: Option<Found> = None;
+        for slot in 0..2 * slots_in_sector {
+            flash.read(slot * SLOT_U32, buffer)?;
+            if let Some(found) = check(buffer, slot)
+                && latest.is_none_or(|l| found.number > l.number)
+            {
+                latest = Some(found);
+            }
+        }
+        // After a boot the other sector is begun: the slot behind the latest may hold half a checkpoint.
+        let next_slot = match latest {
+            Some(found) if found.slot < slots_in_sector => slots_in_sector,
+            _ => 0,
+        };
+        Ok(Self { slots_in_sector, sector, latest, next_slot })
+    }
+
+    /// Reads the latest checkpoint's state into `buffer`; none was ever written: `None`.
+    pub(super) fn latest<'b, F: NorFlash>(
+        &self,
+        flash: &mut F,
+        buffer: &'b mut Slot,
+    ) -> Result<Option<(Found, &'b [u8])>, F::Error> {
+        let Some(found) = self.latest else { return Ok(None) };
+        flash.read(found.slot * SLOT_U32, buffer)?;
+        // It was checked by `find`.
+        let state = buffer.get(HEADER..HEADER + found.length).unwrap_or_default();
+        Ok(Some((found, state)))
+    }
+
+    /// Writes a checkpoint that says what is released and which seq comes next; `state` puts the state into the space it is given and says how much it took. When this
+    /// returns, the checkpoint is durable and read back.
+    pub(super) fn write<F: NorFlash>(
+        &mut self,
+        flash: &mut F,
+        buffer: &mut Slot,
+        (released, next): (Seq, Seq),
+        state: impl FnOnce(&mut [u8]) -> Option<usize>,
+    ) -> Result<bool, F::Error> {
+        let number = self.latest.map_or(1, |l| l.number.saturating_add(1));
+        let Some(used) = encode(buffer, number, (released, next), state) else { return Ok(false) };
+        let slot = self.next_slot;
+        if slot.is_multiple_of(self.slots_in_sector) {
+            let begin = slot / self.slots_in_sector * self.sector;
+            flash.erase(begin, begin + self.sector)?;
+        }
+        // Whatever comes of the write, this slot is used up.
+        self.next_slot = (slot + 1) % (2 * self.slots_in_sector);
+        for (page, offset) in buffer.get(..used).unwrap_or_default().chunks(256).zip((0u32..).step_by(256)) {
+            flash.write(slot * SLOT_U32 + offset, page)?;
+        }
+        flash.read(slot * SLOT_U32, buffer)?;
+        match check(buffer, slot) {
+            Some(found) if found.number == number => {
+                self.latest = Some(found);
+                Ok(true)
+            }
+            _ => Ok(false),
+        }
+    }
+}
+
+fn encode(
+    buffer: &mut Slot,
+    number: u32,
+    (released, next): (Seq, Seq),
+    state: impl FnOnce(&mut [u8]) -> Option<usize>,
+) -> Option<usize> {
+    buffer.fill(0xff);
+    let (header, body) = buffer.split_first_chunk_mut::<HEADER>()?;
+    let length = state(body.get_mut(..STATE_MAX)?)?;
+    let [n0, n1, n2, n3] = number.to_le_bytes();
+    let [r0, r1, r2, r3] = released.0.to_le_bytes();
+    let [s0, s1, s2, s3] = next.0.to_le_bytes();
+    let [l0, l1] = u16::try_from(length).ok()?.to_le_bytes();
+    let [m0, m1, m2, m3] = MAGIC;
+    *header = [m0, m1, m2, m3, n0, n1, n2, n3, r0, r1, r2, r3, s0, s1, s2, s3, l0, l1];
+    let (sealed, rest) = buffer.split_at_mut_checked(HEADER + length)?;
+    *rest.first_chunk_mut::<SUM>()? = CRC.checksum(sealed).to_le_bytes();
+    Some(HEADER + length + SUM)
+}
