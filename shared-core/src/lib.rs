@@ -34,5 +34,6 @@ mod ratio;
 pub mod record;
 pub mod sizing;
 pub mod special;
+pub mod station;
 pub mod stopping;
 pub mod text;

@@ -1,0 +1,250 @@
+//! The station's state: a pure function of its records. Device and host apply the same records to the same code.
+//!
+//! `Empty` (no study) → `Gathering` → `Settled` or `Spent`; `Held` lies over `Gathering` while the operator must look.
+//! What is measured after `Settled` or `Spent` is surplus: kept, and outside the study.
+
+use serde::{Deserialize, Serialize};
+
+use crate::{
+    capability::Sample,
+    counts::Counts,
+    interval::{self, Estimate},
+    moments::Moments,
+    plan::Plan,
+    quantity::Count,
+    record::{Event, Seq},
+    stopping::Standing,
+};
+
+/// Why a study waits for the operator to look.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+#[non_exhaustive]
+pub enum Held {
+    /// The gauge gave the same reading as often in a row as the plan calls stuck.
+    GaugeStuck,
+}
+
+/// The counts of a study.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Progress {
+    /// Where it stands.
+    pub standing: Standing,
+    /// Pieces that count.
+    pub n: Count,
+    /// Pieces planned.
+    pub planned: Count,
+    /// Pieces at most.
+    pub limit: Count,
+    /// Readings after the study was settled or spent.
+    pub surplus: u32,
+    /// Readings that the operator took back.
+    pub taken_back: u32,
+}
+
+/// The latest reading that can still be taken back.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+struct Latest {
+    seq: Seq,
+    counts: Counts,
+    surplus: bool,
+}
+
+/// One study: the plan and what came of it so far.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Study {
+    began: Seq,
+    plan: Plan,
+    moments: Moments,
+    standing: Standing,
+    surplus: u32,
+    taken_back: u32,
+    latest: Option<Latest>,
+    same_in_a_row: u8,
+    held: Option<Held>,
+}
+
+impl Study {
+    fn new(began: Seq, plan: Plan) -> Self {
+        Self {
+            began,
+            plan,
+            moments: Moments::default(),
+            standing: Standing::Gathering,
+            surplus: 0,
+            taken_back: 0,
+            latest: None,
+            same_in_a_row: 0,
+            held: None,
+        }
+    }
+
+    /// The record that began it.
+    #[must_use]
+    pub fn began(&self) -> Seq {
+        self.began
+    }
+
+    /// Its plan.
+    #[must_use]
+    pub fn plan(&self) -> &Plan {
+        &self.plan
+    }
+
+    /// The sums of the pieces that count.
+    #[must_use]
+    pub fn moments(&self) -> &Moments {
+        &self.moments
+    }
+
+    /// Where it stands.
+    #[must_use]
+    pub fn standing(&self) -> Standing {
+        self.standing
+    }
+
+    /// What the operator must look at.
+    #[must_use]
+    pub fn held(&self) -> Option<Held> {
+        self.held
+    }
+
+    /// Its counts.
+    #[must_use]
+    pub fn progress(&self) -> Progress {
+        Progress {
+            standing: self.standing,
+            n: self.moments.n(),
+            planned: self.plan.rule.planned,
+            limit: self.plan.rule.limit,
+            surplus: self.surplus,
+            taken_back: self.taken_back,
+        }
+    }
+
+    /// The sample so far; `None` below two pieces or without spread.
+    #[must_use]
+    pub fn sample(&self) -> Option<Sample> {
+        Sample::from_moments(&self.moments, self.plan.resolution, self.plan.specification()).ok()
+    }
+
+    /// The plan's index with its interval, as of now; `None` where there is no sample yet.
+    #[must_use]
+    pub fn estimate(&self) -> Option<Estimate> {
+        interval::with_quantile(&self.sample()?, self.plan.index, self.plan.quantile()).ok()
+    }
+
+    fn reading(&mut self, seq: Seq, counts: Counts) {
+        let surplus = self.standing != Standing::Gathering;
+        let same = self.latest.is_some_and(|latest| latest.counts == counts);
+        self.latest = Some(Latest { seq, counts, surplus });
+        if surplus {
+            self.surplus = self.surplus.saturating_add(1);
+            return;
+        }
+        // The recorder lets no reading through that a full study could not count.
+        let _ = self.moments.add(counts);
+        self.same_in_a_row = if same { self.same_in_a_row.saturating_add(1) } else { 1 };
+        if self.plan.same_in_a_row != 0 && self.same_in_a_row >= self.plan.same_in_a_row {
+            self.held = Some(Held::GaugeStuck);
+        }
+        self.judge();
+    }
+
+    fn take_back(&mut self, seq: Seq) {
+        let Some(latest) = self.latest.take_if(|latest| latest.seq == seq) else { return };
+        self.taken_back = self.taken_back.saturating_add(1);
+        self.same_in_a_row = 0;
+        if latest.surplus {
+            self.surplus = self.surplus.saturating_sub(1);
+        } else {
+            let _ = self.moments.take_back(latest.counts);
+            self.judge();
+        }
+    }
+
+    fn seen(&mut self) {
+        self.held = None;
+        self.same_in_a_row = 0;
+        if self.standing == Standing::Gathering {
+            self.judge();
+        }
+    }
+
+    fn judge(&mut self) {
+        self.standing = match self.held {
+            Some(_) => Standing::Gathering,
+            None => self.plan.rule.judge(self.moments.n(), || self.estimate()),
+        };
+    }
+}
+
+/// All that a station knows.
+#[derive(Clone, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Station {
+    through: Option<Seq>,
+    boots: u32,
+    refused: u32,
+    study: Option<Study>,
+}
+
+impl Station {
+    /// Takes the next record. A number that is not above the last one changes nothing: repeating is harmless.
+    pub fn apply(&mut self, seq: Seq, event: &Event) {
+        if self.through.is_some_and(|through| seq <= through) {
+            return;
+        }
+        self.through = Some(seq);
+        match event {
+            Event::Boot { boot } => self.boots = *boot,
+            Event::Plan(plan) => self.study = Some(Study::new(seq, plan.clone())),
+            Event::Refused { times, .. } => self.refused = self.refused.saturating_add(u32::from(*times)),
+            Event::Clock { .. } => {}
+            Event::Reading(counts) => {
+                if let Some(study) = &mut self.study {
+                    study.reading(seq, *counts);
+                }
+            }
+            Event::TakenBack(reading) => {
+                if let Some(study) = &mut self.study {
+                    study.take_back(*reading);
+                }
+            }
+            Event::Seen => {
+                if let Some(study) = &mut self.study {
+                    study.seen();
+                }
+            }
+        }
+    }
+
+    /// The last record applied.
+    #[must_use]
+    pub fn through(&self) -> Option<Seq> {
+        self.through
+    }
+
+    /// How often the station has started.
+    #[must_use]
+    pub fn boots(&self) -> u32 {
+        self.boots
+    }
+
+    /// Refusals on record.
+    #[must_use]
+    pub fn refused(&self) -> u32 {
+        self.refused
+    }
+
+    /// The study: the one under way, or the last one.
+    #[must_use]
+    pub fn study(&self) -> Option<&Study> {
+        self.study.as_ref()
+    }
+
+    /// The reading that the operator can take back.
+    #[must_use]
+    pub fn last_reading(&self) -> Option<Seq> {
+        self.study.as_ref()?.latest.map(|latest| latest.seq)
+    }
+}
