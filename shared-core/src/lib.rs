@@ -37,3 +37,4 @@ pub mod special;
 pub mod station;
 pub mod stopping;
 pub mod text;
+pub mod wire;
