@@ -1,0 +1,421 @@
+//! The recorder: journal, station, gauge line and link in one machine without I/O of its own. The Pico's firmware and the
+//! virtual station both drive this, byte by byte and tick by tick.
+//!
+//! It is the one place where *durable first* is enforced: an event changes the station's state, and so the lamps, only
+//! after [`Journal::append`] returned.
+
+use core::ops::ControlFlow;
+
+use embedded_storage::nor_flash::MultiwriteNorFlash;
+
+use crate::{
+    gauge::LineAssembler,
+    journal::{AppendError, Journal, OpenError, Prepared, STATE_MAX},
+    lamps::{self, Call, Lamps},
+    plan::LineSettings,
+    quantity::Count,
+    record::{Event, Millis, Refusal, Seq},
+    station::Station,
+    stopping::Standing,
+    text::Text,
+    wire::{
+        self, FRAME_MAX, FrameError, FrameReader, Hello, JournalHealth, RECORDS_MAX, Reason, Reply, Request,
+        StationId, Status, StudyStatus,
+    },
+};
+
+/// Pages kept back from readings, so that boots, clocks and plans can still be recorded when the journal is full.
+const RESERVED_PAGES: u32 = 20;
+/// The erase ahead of need waits until the gauge was silent for so long.
+const QUIET_MS: u64 = 200;
+/// Refusals are collected for so long before they are recorded, so that rubbish does not fill the journal.
+const REFUSALS_EVERY_MS: u64 = 1_000;
+/// Different reasons collected at most.
+const REASONS_MAX: usize = 8;
+
+/// A button beside the lamps.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub enum Button {
+    /// Take the latest reading back.
+    TakeBack,
+    /// I have looked at what held the study.
+    Seen,
+}
+
+/// A station at work. See the module's documentation.
+#[derive(Debug)]
+pub struct Recorder<F> {
+    journal: Journal<F>,
+    station: Station,
+    id: StationId,
+    firmware: Text<32>,
+    gauge: LineAssembler,
+    gauge_heard: Millis,
+    frames: FrameReader,
+    reply: [u8; FRAME_MAX],
+    health: JournalHealth,
+    refusals: heapless::Vec<(Refusal, u16), REASONS_MAX>,
+    last_refusal: Option<(Millis, Refusal)>,
+    refused_unrecorded: u32,
+    minded: Millis,
+    taken: Option<Millis>,
+    blinking: Option<Millis>,
+}
+
+impl<F: MultiwriteNorFlash> Recorder<F> {
+    /// Finds the journal, replays it and records the boot.
+    ///
+    /// # Errors
+    /// Only if the flash cannot be read at all; a full journal or one that cannot be written is shown instead.
+    pub fn open(
+        flash: F,
+        id: StationId,
+        firmware: Text<32>,
+        now: Millis,
+    ) -> Result<Self, OpenError<F::Error>> {
+        let mut state = [0; STATE_MAX];
+        let (mut journal, length) = Journal::open(flash, &mut state)?;
+        // A state of another version does not decode: the replay then begins at the first record that is kept.
+        let mut station: Station = length
+            .and_then(|length| state.get(..length))
+            .and_then(|bytes| postcard::from_bytes(bytes).ok())
+            .unwrap_or_default();
+        let from = station.through().map_or(Seq::FIRST, Seq::next);
+        journal.visit(from, |seq, sealed| {
+            if let Ok(record) = sealed.record() {
+                station.apply(seq, &record.event);
+            }
+            ControlFlow::Continue(())
+        })?;
+        let mut recorder = Self {
+            journal,
+            station,
+            id,
+            firmware,
+            gauge: LineAssembler::new(now),
+            gauge_heard: now,
+            frames: FrameReader::default(),
+            reply: [0; FRAME_MAX],
+            health: JournalHealth::Well,
+            refusals: heapless::Vec::new(),
+            last_refusal: None,
+            refused_unrecorded: 0,
+            minded: now,
+            taken: None,
+            blinking: None,
+        };
+        recorder.look_at_journal();
+        let boot = recorder.station.boots().saturating_add(1);
+        // Where even that cannot be recorded, the journal's health says so.
+        let _ = recorder.record(now, &Event::Boot { boot });
+        Ok(recorder)
+    }
+
+    /// The state, for whoever shows it.
+    #[must_use]
+    pub fn station(&self) -> &Station {
+        &self.station
+    }
+
+    /// The journal, for tests that look at it.
+    pub fn journal(&mut self) -> &mut Journal<F> {
+        &mut self.journal
+    }
+
+    /// How the gauge sends, by the plan.
+    #[must_use]
+    pub fn line_settings(&self) -> LineSettings {
+        self.station.study().map_or_else(LineSettings::default, |study| study.plan().gauge)
+    }
+
+    /// Takes what the gauge sent, in order. Readings in it are durable when this returns.
+    pub fn gauge_bytes(&mut self, now: Millis, bytes: &[u8]) {
+        for byte in bytes {
+            self.gauge_heard = now;
+            let outcome = match self.gauge.push(now, *byte) {
+                None => continue,
+                Some(Err(refusal)) => Err(refusal),
+                Some(Ok(line)) => read_line(&self.station, line),
+            };
+            match outcome.and_then(|counts| self.take_reading(now, counts)) {
+                Ok(()) => self.taken = Some(now),
+                Err(refusal) => self.refuse(now, refusal),
+            }
+        }
+    }
+
+    /// Bytes of the gauge were lost before they could be taken.
+    pub fn gauge_overrun(&mut self, now: Millis) {
+        self.gauge.spoil(now);
+        self.refuse(now, Refusal::GaugeOverrun);
+    }
+
+    /// Takes a byte from the host. If it completes a request, gives the reply's frame: send it whole before the next
+    /// byte is fed.
+    pub fn host_byte(&mut self, now: Millis, byte: u8) -> Option<&[u8]> {
+        let frame = self.frames.push(byte)?;
+        let (number, request) = match wire::decode::<Request>(frame) {
+            Ok((number, request)) => (number, Ok(request)),
+            Err(FrameError::Version { number, .. }) => {
+                (number, Err(Reason::Version { station: wire::VERSION }))
+            }
+            Err(FrameError::Unknown { number }) => (number, Err(Reason::UnknownRequest)),
+            // Whoever sent it hears nothing and asks again.
+            Err(FrameError::Damaged | FrameError::TooLong) => return None,
+        };
+        let mut records = [0; RECORDS_MAX];
+        let reply = match request {
+            Ok(request) => self.answer(now, request, &mut records),
+            Err(reason) => Reply::Refused(reason),
+        };
+        // All replies fit: their parts are bounded, as a test proves.
+        wire::encode(number, &reply, &mut self.reply).ok()
+    }
+
+    /// A button was pressed.
+    pub fn press(&mut self, now: Millis, button: Button) {
+        let outcome = match button {
+            Button::TakeBack => match self.station.last_reading() {
+                Some(seq) => self.record(now, &Event::TakenBack(seq)),
+                None => Err(Refusal::NothingToTakeBack),
+            },
+            Button::Seen if self.station.study().is_some_and(|study| study.held().is_some()) => {
+                self.record(now, &Event::Seen)
+            }
+            Button::Seen => return,
+        };
+        if let Err(refusal) = outcome {
+            self.refuse(now, refusal);
+        }
+    }
+
+    /// Lets time pass; call it every 10 ms or more often. In quiet moments this erases flash ahead of need, which can
+    /// take the flash's longest erase time.
+    pub fn tick(&mut self, now: Millis) {
+        if let Some(refusal) = self.gauge.tick(now) {
+            self.refuse(now, refusal);
+        }
+        if now.since(self.minded) >= REFUSALS_EVERY_MS {
+            self.minded = now;
+            self.record_refusals(now);
+            self.look_at_journal();
+        }
+        if now.since(self.gauge_heard) >= QUIET_MS {
+            let _ = self.prepare();
+        }
+    }
+
+    /// What the lamps show at `now`.
+    #[must_use]
+    pub fn lamps(&self, now: Millis) -> Lamps {
+        if self.blinking.is_some_and(|since| now.since(since) < lamps::BLINK_MS) {
+            return lamps::blink(now);
+        }
+        let standing = self.station.study().map(|study| study.standing());
+        Lamps {
+            done: standing == Some(Standing::Settled),
+            attention: self.call(now).is_some_and(|call| call.lit(now)),
+            taken: self.taken.is_some_and(|since| now.since(since) < lamps::TAKEN_SHOWN_MS),
+        }
+    }
+
+    fn call(&self, now: Millis) -> Option<Call> {
+        let study = self.station.study();
+        if matches!(self.health, JournalHealth::Full | JournalHealth::Faulty)
+            || study.is_some_and(|study| study.held().is_some())
+        {
+            return Some(Call::Act);
+        }
+        if let Some((since, _)) = self.last_refusal
+            && now.since(since) < lamps::REFUSAL_SHOWN_MS
+        {
+            return Some(Call::Refused { since });
+        }
+        if study.is_some_and(|study| study.standing() == Standing::Spent) {
+            return Some(Call::Spent);
+        }
+        (self.health == JournalHealth::NearlyFull).then_some(Call::Pull)
+    }
+
+    // ---- recording ----
+
+    fn take_reading(&mut self, now: Millis, counts: crate::counts::Counts) -> Result<(), Refusal> {
+        if !self.journal.has_room(RESERVED_PAGES).map_err(|_| Refusal::FlashFault)? {
+            return Err(Refusal::JournalFull);
+        }
+        self.record(now, &Event::Reading(counts)).map(|_| ())
+    }
+
+    /// Durable first, then applied.
+    fn record(&mut self, now: Millis, event: &Event) -> Result<Seq, Refusal> {
+        let seq = match self.journal.append(now, event) {
+            Err(AppendError::NotPrepared) => {
+                if self.prepare()? == Prepared::Full {
+                    return Err(Refusal::JournalFull);
+                }
+                self.journal.append(now, event)
+            }
+            other => other,
+        };
+        match seq {
+            Ok(seq) => {
+                self.station.apply(seq, event);
+                Ok(seq)
+            }
+            Err(_) => {
+                self.health = JournalHealth::Faulty;
+                Err(Refusal::FlashFault)
+            }
+        }
+    }
+
+    fn prepare(&mut self) -> Result<Prepared, Refusal> {
+        let station = &self.station;
+        let state = |space: &mut [u8]| postcard::to_slice(station, space).ok().map(|used| used.len());
+        self.journal.prepare(state).map_err(|_| {
+            self.health = JournalHealth::Faulty;
+            Refusal::FlashFault
+        })
+    }
+
+    fn refuse(&mut self, now: Millis, reason: Refusal) {
+        self.last_refusal = Some((now, reason));
+        if matches!(reason, Refusal::JournalFull | Refusal::FlashFault) {
+            self.refused_unrecorded = self.refused_unrecorded.saturating_add(1);
+            self.look_at_journal();
+            return;
+        }
+        if let Some((_, times)) = self.refusals.iter_mut().find(|(known, _)| *known == reason) {
+            *times = times.saturating_add(1);
+            return;
+        }
+        if self.refusals.is_full() {
+            self.record_refusals(now);
+        }
+        // Just emptied where it was full.
+        let _ = self.refusals.push((reason, 1));
+    }
+
+    fn record_refusals(&mut self, now: Millis) {
+        while let Some((reason, times)) = self.refusals.pop() {
+            let room = self.journal.has_room(RESERVED_PAGES).unwrap_or(false);
+            if !room || self.record(now, &Event::Refused { reason, times }).is_err() {
+                self.refused_unrecorded = self.refused_unrecorded.saturating_add(u32::from(times));
+            }
+        }
+    }
+
+    fn look_at_journal(&mut self) {
+        if self.health == JournalHealth::Faulty {
+            return;
+        }
+        self.health = match self.journal.pages_left() {
+            Err(_) => JournalHealth::Faulty,
+            Ok(left) if left <= RESERVED_PAGES => JournalHealth::Full,
+            Ok(left) if left <= self.journal.places() / 8 => JournalHealth::NearlyFull,
+            Ok(_) => JournalHealth::Well,
+        };
+    }
+
+    // ---- answering ----
+
+    fn answer<'r>(&mut self, now: Millis, request: Request, records: &'r mut [u8; RECORDS_MAX]) -> Reply<'r> {
+        match request {
+            Request::Hello => Reply::Hello(Hello {
+                station: self.id,
+                firmware: self.firmware.clone(),
+                next: self.journal.next(),
+                oldest: self.journal.oldest().unwrap_or(self.journal.next()),
+            }),
+            Request::Status => Reply::Status(self.status(now)),
+            Request::Load { plan, replace } => recorded(self.load(now, plan, replace)),
+            Request::Records { from } if from > self.journal.next() => Reply::Refused(Reason::BeyondJournal),
+            Request::Records { from } => match self.journal.read(from, records) {
+                Ok(used) => Reply::Records(records.get(..used).unwrap_or_default()),
+                Err(_) => Reply::Refused(Reason::NotRecorded(Refusal::FlashFault)),
+            },
+            Request::Received { through } if through >= self.journal.next() => {
+                Reply::Refused(Reason::BeyondJournal)
+            }
+            Request::Received { through } => {
+                self.journal.release(through);
+                self.look_at_journal();
+                Reply::Done
+            }
+            Request::SetClock { unix_ms } => {
+                recorded(self.record(now, &Event::Clock { unix_ms }).map_err(Reason::NotRecorded))
+            }
+            Request::Blink => {
+                self.blinking = Some(now);
+                Reply::Done
+            }
+        }
+    }
+
+    fn load(&mut self, now: Millis, plan: crate::plan::Plan, replace: bool) -> Result<Seq, Reason> {
+        if let Some(study) = self.station.study() {
+            let untouched = study.moments().n() == Count::ZERO && study.progress().taken_back == 0;
+            // Asked again because the answer was lost: the study is there already.
+            if untouched && *study.plan() == plan {
+                return Ok(study.began());
+            }
+            if !untouched && study.standing() == Standing::Gathering && !replace {
+                return Err(Reason::StudyUnfinished);
+            }
+        }
+        let before = self.line_settings();
+        let seq = self.record(now, &Event::Plan(plan)).map_err(Reason::NotRecorded)?;
+        if self.line_settings() != before {
+            self.gauge = LineAssembler::new(now);
+        }
+        Ok(seq)
+    }
+
+    fn status(&mut self, now: Millis) -> Status {
+        self.look_at_journal();
+        let left = self.journal.pages_left().unwrap_or(0).saturating_sub(RESERVED_PAGES);
+        let last = self.journal.next().0.saturating_sub(1);
+        Status {
+            study: self.station.study().map(|study| {
+                let sample = study.sample();
+                let estimate = study.estimate();
+                StudyStatus {
+                    began: study.began(),
+                    name: study.plan().name.clone(),
+                    progress: study.progress(),
+                    mean: study.moments().mean(study.plan().resolution),
+                    standard_deviation: sample.map(|sample| sample.sigma()),
+                    estimate: estimate.map(|e| e.estimate),
+                    low: estimate.and_then(|e| e.interval.low),
+                    high: estimate.and_then(|e| e.interval.high),
+                }
+            }),
+            held: self.station.study().and_then(|study| study.held()),
+            boots: self.station.boots(),
+            up: now,
+            room: Journal::<F>::readings_in(left),
+            unconfirmed: last.saturating_sub(self.journal.released().0),
+            refused: self.station.refused().saturating_add(self.refused_unrecorded),
+            last_refusal: self.last_refusal.map(|(_, refusal)| refusal),
+            journal: self.health,
+        }
+    }
+}
+
+fn recorded<'r>(outcome: Result<Seq, Reason>) -> Reply<'r> {
+    match outcome {
+        Ok(seq) => Reply::Recorded(seq),
+        Err(reason) => Reply::Refused(reason),
+    }
+}
+
+/// What the line says, if there is a study that can take it.
+fn read_line(station: &Station, line: &[u8]) -> Result<crate::counts::Counts, Refusal> {
+    let study = station.study().ok_or(Refusal::NoPlan)?;
+    let counts = study.plan().resolution.read(line, study.plan().unit.as_str()).map_err(Refusal::Reading)?;
+    if study.moments().n() == Count::MAX {
+        return Err(Refusal::StudyFull);
+    }
+    Ok(counts)
+}
