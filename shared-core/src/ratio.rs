@@ -4,7 +4,7 @@
 //! at every width, and no intermediate rounding.
 
 /// An unsigned integer below 2^256, just wide enough for the sums of squares of [`crate::moments`].
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
 pub(crate) struct Wide {
     // In this order: the derived comparison looks at the high half first.
     high: u128,
@@ -98,3 +98,6 @@ pub(crate) fn ratio_i128(numerator: i128, denominator: u128) -> f64 {
     let magnitude = ratio(numerator.unsigned_abs().into(), denominator.into());
     if numerator < 0 { -magnitude } else { magnitude }
 }
+
+#[cfg(test)]
+pub(crate) mod tests;
