@@ -312,3 +312,6 @@ fn write_decimal(f: &mut fmt::Formatter<'_>, mantissa: i64, decimals: u8) -> fmt
     let one = 10_u64.pow(decimals.into());
     write!(f, "{sign}{}.{:0width$}", magnitude / one, magnitude % one, width = usize::from(decimals))
 }
+
+#[cfg(test)]
+mod tests;
