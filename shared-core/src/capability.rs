@@ -171,3 +171,6 @@ impl FromStr for Index {
         Self::ALL.into_iter().find(|index| index.name().eq_ignore_ascii_case(text)).ok_or(UnknownIndex)
     }
 }
+
+#[cfg(test)]
+mod tests;
