@@ -217,3 +217,6 @@ fn symmetric(estimate: f64, standard_error: f64, quantile: &Quantile) -> Interva
         high: (quantile.kind != Kind::Lower).then_some(estimate + reach),
     }
 }
+
+#[cfg(test)]
+mod tests;
