@@ -98,3 +98,66 @@ fn cpm_is_refused_by_name() {
     let size = power::smallest(Index::Cpm, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE);
     assert_eq!(size, Err(SizingError::NoMethodYet(Index::Cpm)));
 }
+
+mod laws {
+    use proptest::prelude::*;
+
+    use super::*;
+
+    fn index() -> impl Strategy<Value = Index> {
+        prop_oneof![Just(Index::Cpk), Just(Index::Cpl), Just(Index::Cpu), Just(Index::Cp)]
+    }
+
+    fn kind() -> impl Strategy<Value = Kind> {
+        prop_oneof![Just(Kind::TwoSided), Just(Kind::Lower), Just(Kind::Upper)]
+    }
+
+    fn precision() -> impl Strategy<Value = Precision> {
+        (any::<bool>(), 40_000_u32..2_000_000).prop_map(|(relative, goal)| {
+            if relative {
+                Precision::Relative(Millionths(goal))
+            } else {
+                Precision::Absolute(Millionths(goal))
+            }
+        })
+    }
+
+    proptest! {
+        #[test]
+        fn no_smaller_sample_is_precise_enough(
+            index in index(), at in 0.1..3.0, precision in precision(), level in 500_000_u32..999_999, kind in kind(),
+        ) {
+            let confidence = Confidence::from_millionths(level).unwrap();
+            let size = precision::smallest(index, at, precision, confidence, kind).unwrap();
+            let achieved = |n| {
+                let estimate = precision::precision_at(Count::new(n).unwrap(), index, at, confidence, kind).unwrap();
+                precision.achieved(estimate.half_width, at)
+            };
+            let n = size.n.get();
+            prop_assert_eq!(achieved(n), size.achieved);
+            prop_assert!(size.achieved <= precision.goal());
+            prop_assert_eq!(size.achieved_before, (n > 2).then(|| achieved(n - 1)));
+            for smaller in 2..n.min(3000) {
+                prop_assert!(achieved(smaller) > precision.goal(), "{}", smaller);
+            }
+        }
+
+        #[test]
+        fn no_smaller_sample_has_the_power(
+            index in index(), claim in 0.1..3.0, factor in prop_oneof![0.3..0.9, 1.1..3.0],
+            alpha in 1_u32..=500_000, power in 500_000_u32..999_999,
+        ) {
+            let goal = Confidence::from_millionths(power).unwrap();
+            let (against, alpha) = (claim * factor, Millionths(alpha));
+            let size = power::smallest(index, claim, against, alpha, goal).unwrap();
+            let at = |n| power::power_at(Count::new(n).unwrap(), index, claim, against, alpha).unwrap();
+            let n = size.n.get();
+            prop_assert_eq!(at(n), size.achieved);
+            prop_assert!(size.achieved >= goal.to_f64());
+            prop_assert_eq!(size.achieved_before, (n > 2).then(|| at(n - 1)));
+            for smaller in 2..n.min(3000) {
+                prop_assert!(at(smaller) < goal.to_f64(), "{}", smaller);
+            }
+        }
+    }
+}
