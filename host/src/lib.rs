@@ -9,6 +9,7 @@ pub mod cli;
 pub mod commands;
 pub mod level;
 pub mod output;
+pub mod virtual_station;
 
 use std::ffi::OsString;
 use std::process::ExitCode;
