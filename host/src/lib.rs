@@ -7,8 +7,12 @@
 
 pub mod cli;
 pub mod commands;
+pub mod files;
 pub mod level;
 pub mod output;
+pub mod plan_file;
+pub mod readings;
+pub mod report;
 pub mod virtual_station;
 
 use std::ffi::OsString;

@@ -1,5 +1,7 @@
 //! One module a command. Each takes its options and gives an [`Answer`] or a [`Failure`].
 
+mod assess;
+mod plan;
 mod size;
 
 use crate::cli::Command;
@@ -12,10 +14,10 @@ use crate::output::{Answer, Console, Exit, Failure};
 pub fn run(command: Command, _console: &mut Console) -> Result<Answer, Failure> {
     match command {
         Command::Size(size) => size::run(&size),
-        Command::Plan(_) => Err(not_built_yet("plan")),
+        Command::Plan(plan) => plan::run(&plan),
         Command::Station(_) => Err(not_built_yet("station")),
         Command::Virtual(_) => Err(not_built_yet("virtual")),
-        Command::Assess(_) => Err(not_built_yet("assess")),
+        Command::Assess(options) => assess::run(&options),
         Command::Report(_) => Err(not_built_yet("report")),
         Command::Demo(_) => Err(not_built_yet("demo")),
     }

@@ -1,0 +1,167 @@
+use super::*;
+
+/// The example with one line changed; `line` is that line's number.
+fn changed(from: &str, to: &str) -> (usize, Result<Plan, Vec<Fault>>) {
+    assert_eq!(EXAMPLE.matches(from).count(), 1, "{from}");
+    let line = 1 + EXAMPLE[..EXAMPLE.find(from).unwrap()].matches('\n').count();
+    (line, from_text(&EXAMPLE.replace(from, to)))
+}
+
+#[track_caller]
+fn one_fault(from: &str, to: &str, key: &str, words: &str) {
+    let (line, result) = changed(from, to);
+    let faults = result.unwrap_err();
+    assert_eq!(faults.len(), 1, "{faults:?}");
+    assert_eq!((faults[0].line, faults[0].key.as_str()), (line, key), "{faults:?}");
+    assert!(faults[0].message.contains(words), "{faults:?}");
+}
+
+#[test]
+fn the_example_is_a_valid_plan_and_says_what_it_seems_to_say() {
+    let plan = from_text(EXAMPLE).unwrap();
+    assert_eq!(plan.name.as_str(), "Wick tubes, first lot");
+    assert_eq!(plan.resolution.to_string(), "0.001");
+    assert_eq!(plan.lower.unwrap().to_string(), "11.95");
+    assert_eq!(plan.rule.planned.get(), 212);
+    assert_eq!(plan.same_in_a_row, 12);
+}
+
+#[test]
+fn numbers_are_read_as_they_are_written_with_or_without_quotes() {
+    let (_, quoted) = changed("lower = \"11.950\"", "lower = \"11.949999999999\"");
+    let (_, bare) = changed("lower = \"11.950\"", "lower = 11.949_999_999_999");
+    assert_eq!(quoted.clone().unwrap().lower.unwrap().to_string(), "11.949999999999");
+    assert_eq!(quoted, bare);
+    let (_, whole) = changed("lower = \"11.950\"", "lower = -3");
+    assert_eq!(whole.unwrap().lower.unwrap().to_string(), "-3");
+    one_fault("lower = \"11.950\"", "lower = 1.195e1", "specification.lower", "no exponent");
+    one_fault("lower = \"11.950\"", "lower = nan", "specification.lower", "no digits");
+    one_fault("lower = \"11.950\"", "lower = 0xB", "specification.lower", "not a plain decimal number");
+}
+
+#[test]
+fn each_fault_is_named_at_its_line() {
+    one_fault("name = \"Wick tubes, first lot\"", "name = \"\"", "name", "no name");
+    let long = format!("part = \"{}\"", "x".repeat(25));
+    one_fault("part = \"wick tube WT-40\"", &long, "part", "too long");
+    one_fault("unit = \"mm\"", "unit = \"m m\"", "unit", "plain word");
+    one_fault("resolution = \"0.001\"", "resolution = 0", "resolution", "above zero");
+    one_fault("resolution = \"0.001\"", "resolution = true", "resolution", "not a boolean");
+    one_fault("resolution = \"0.001\"", "resolution = \"0.5\"", "resolution", "less than one step");
+    one_fault("target = \"12.000\"", "target = \"13\"", "specification.target", "outside");
+    one_fault("index = \"cpk\"", "index = \"cpm\"", "capability.index", "no interval method");
+    one_fault("index = \"cpk\"", "index = \"cpz\"", "capability.index", "unknown index");
+    one_fault("confidence = \"95%\"", "confidence = 95", "capability.confidence", "not between");
+    one_fault("kind = \"two-sided\"", "kind = \"both\"", "capability.kind", "unknown kind");
+    one_fault("planned = 212", "planned = 1", "stop.planned", "at least two");
+    one_fault("planned = 212", "planned = 300", "stop.planned", "raise the limit");
+    one_fault("planned = 212", "planned = 2.5", "stop.planned", "whole number");
+    one_fault("precision = \"10%\"", "precision = 0.15", "stop.precision", "relative");
+    one_fault("precision = \"10%\"", "precision = \"0%\"", "stop.precision", "above zero");
+    one_fault("baud = 9600", "baud = 200", "gauge.baud", "baud");
+    one_fault("data_bits = 8", "data_bits = 9", "gauge.data_bits", "7 or 8");
+    one_fault("parity = \"none\"", "parity = \"mark\"", "gauge.parity", "none, even or odd");
+    one_fault("stop_bits = 1", "stop_bits = 3", "gauge.stop_bits", "1 or 2");
+    one_fault("same_in_a_row = 12", "same_in_a_row = 2", "watch.same_in_a_row", "3 and more");
+    one_fault("same_in_a_row = 12", "same_in_a_row = 256", "watch.same_in_a_row", "range");
+}
+
+#[test]
+fn what_is_missing_or_unknown_is_named_with_what_would_be_right() {
+    let (line, result) = changed("planned = 212", "planed = 212");
+    let faults = result.unwrap_err();
+    assert_eq!(faults.len(), 2, "{faults:?}");
+    assert_eq!(faults[0].line, 1 + EXAMPLE[..EXAMPLE.find("[stop]").unwrap()].matches('\n').count());
+    assert!(faults[0].message.contains("missing; write for example planned = 212"), "{faults:?}");
+    assert_eq!(faults[1].line, line);
+    assert!(faults[1].message.contains("did you mean planned?"), "{faults:?}");
+    let faults = from_text("").unwrap_err();
+    let keys: Vec<&str> = faults.iter().map(|fault| fault.key.as_str()).collect();
+    assert_eq!(keys, ["capability", "name", "resolution", "specification", "stop"]);
+    let faults = from_text(&EXAMPLE.replace("[gauge]", "[guage]")).unwrap_err();
+    assert_eq!(faults.len(), 1, "{faults:?}");
+    assert!(faults[0].message.contains("did you mean gauge?"), "{faults:?}");
+    let faults = from_text(&EXAMPLE.replace("[stop]", "[other]")).unwrap_err();
+    assert_eq!(faults.len(), 2, "{faults:?}");
+    let faults = from_text("specification = 3").unwrap_err();
+    assert!(
+        faults.iter().any(|fault| fault.message.contains("write [specification] on a line")),
+        "{faults:?}"
+    );
+}
+
+#[test]
+fn limits_in_the_wrong_order_are_named_at_the_upper_one() {
+    let faults = from_text(&EXAMPLE.replace("upper = \"12.050\"", "upper = \"11.9\"")).unwrap_err();
+    assert_eq!(faults[0].key, "specification.upper");
+    assert!(faults[0].message.contains("not below"), "{faults:?}");
+    assert_eq!(EXAMPLE.lines().nth(faults[0].line - 1), Some("upper = \"12.050\""));
+}
+
+#[test]
+fn a_precision_out_of_reach_is_named_at_the_limit_that_would_have_to_rise() {
+    let faults = from_text(&EXAMPLE.replace("\"10%\"", "\"1%\"")).unwrap_err();
+    assert_eq!(faults.len(), 1, "{faults:?}");
+    assert_eq!(faults[0].key, "stop.limit");
+    assert_eq!(EXAMPLE.lines().nth(faults[0].line - 1), Some("limit = 240"));
+}
+
+#[test]
+fn many_faults_are_named_at_once_and_in_the_order_of_their_lines() {
+    let text = EXAMPLE
+        .replace("unit = \"mm\"", "unit = \"3 mm\"")
+        .replace("upper = \"12.050\"", "upper = \"11.0\"")
+        .replace("kind = \"two-sided\"", "kind = \"upwards\"")
+        .replace("planned = 212", "planned = 500")
+        .replace("baud = 9600", "baud = 9")
+        .replace("stop_bits = 1", "stop_bits = 1\ncolour = \"red\"");
+    let faults = from_text(&text).unwrap_err();
+    let lines: Vec<&str> = faults.iter().map(|fault| text.lines().nth(fault.line - 1).unwrap()).collect();
+    assert_eq!(
+        lines,
+        [
+            "unit = \"3 mm\"",
+            "upper = \"11.0\"",
+            "target = \"12.000\"",
+            "kind = \"upwards\"",
+            "planned = 500",
+            "baud = 9",
+            "colour = \"red\"",
+        ]
+    );
+}
+
+#[test]
+fn what_follows_from_a_value_that_cannot_be_read_is_not_a_fault_of_its_own() {
+    one_fault("lower = \"11.950\"", "lower = \"eleven\"", "specification.lower", "no digits");
+    let text = EXAMPLE.replace("upper = \"12.050\"\n", "").replace("\"11.950\"", "\"eleven\"");
+    assert_eq!(from_text(&text).unwrap_err().len(), 1);
+    let text = EXAMPLE.replace("\"0.001\"", "\"fine\"");
+    assert_eq!(from_text(&text).unwrap_err().len(), 1);
+}
+
+#[test]
+fn text_that_is_no_toml_is_named_by_its_lines() {
+    let text = EXAMPLE.replace("planned = 212", "planned 212").replace("baud = 9600", "baud = = 9600");
+    let faults = from_text(&text).unwrap_err();
+    let mut lines: Vec<&str> = faults.iter().map(|fault| text.lines().nth(fault.line - 1).unwrap()).collect();
+    lines.dedup();
+    assert_eq!(lines, ["planned 212", "baud = = 9600"]);
+    let faults = from_text("name = \"a\"\nname = \"b\"\n").unwrap_err();
+    assert_eq!(faults[0].line, 2, "{faults:?}");
+    for rubbish in ["\u{0}", "[[[", "= = =", "a = '''", "\u{feff}", "x = 1979-13-45"] {
+        assert!(from_text(rubbish).is_err());
+    }
+}
+
+#[test]
+fn keys_that_may_be_left_out_have_the_defaults_that_the_example_names() {
+    let text = "name = \"a\"\nresolution = 0.01\n[specification]\nupper = 3\n[capability]\nindex = \"cpu\"\n\
+                [stop]\nplanned = 212\nprecision = \"10%\"\nlimit = 240\n";
+    let plan = from_text(text).unwrap();
+    assert_eq!(plan.gauge, donelight_core::plan::LineSettings::default());
+    assert_eq!(plan.confidence.millionths(), 950_000);
+    assert_eq!(plan.kind.name(), "two-sided");
+    assert_eq!(plan.same_in_a_row, 0);
+    assert!(describe::summary(&plan).contains("at most 3"));
+}

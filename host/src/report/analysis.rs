@@ -1,0 +1,174 @@
+//! What the core says about a study: sample, indices, intervals, and how they went. No statistics of its own.
+
+use donelight_core::capability::{Index, IndexError, Sample, SampleError};
+use donelight_core::counts::{Counts, Decimal, Resolution};
+use donelight_core::interval::{self, Interval, IntervalError};
+use donelight_core::moments::Moments;
+use donelight_core::quantity::Count;
+
+use super::charts::narrowing::Step;
+use super::{Belonging, Data, Reading, Study};
+
+/// All numbers of a report.
+#[derive(Clone, Debug)]
+pub struct Analysis {
+    /// Readings that count.
+    pub n: u32,
+    /// Readings after the study's end.
+    pub surplus: u32,
+    /// Readings that were taken back.
+    pub voided: u32,
+    /// Their mean; `None` without readings.
+    pub mean: Option<f64>,
+    /// Their standard deviation with n − 1; `None` below two readings.
+    pub sd: Option<f64>,
+    /// Degrees of freedom behind it.
+    pub nu: Option<f64>,
+    /// The index that was asked for, or why there is none.
+    pub asked: Result<Row, Trouble>,
+    /// Every index that the specification allows.
+    pub rows: Vec<Row>,
+    /// Estimate and interval after each reading, or after some of them.
+    pub steps: Vec<Step>,
+    /// Readings below the lower limit and above the upper one.
+    pub beyond: (u32, u32),
+}
+
+/// One index.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Row {
+    /// Which.
+    pub index: Index,
+    /// Its estimate.
+    pub estimate: f64,
+    /// Its interval; `None` where there is no method yet.
+    pub interval: Option<Interval>,
+}
+
+/// Why there is no estimate.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, thiserror::Error)]
+pub enum Trouble {
+    /// The readings do not allow one.
+    #[error("{0}")]
+    Sample(SampleError),
+    /// The specification does not allow the index.
+    #[error("{0}")]
+    Index(IndexError),
+}
+
+/// At most about so many steps are drawn.
+const STEPS_MAX: usize = 400;
+
+/// Works out all numbers of the report.
+#[must_use]
+pub fn of(study: &Study) -> Analysis {
+    match &study.data {
+        Data::Readings { resolution, readings } => of_readings(study, *resolution, readings),
+        Data::Summary { n, mean, sd } => {
+            let sample = Sample::from_summary(*n, *mean, *sd, &study.specification);
+            Analysis {
+                n: n.get(),
+                surplus: 0,
+                voided: 0,
+                mean: Some(*mean),
+                sd: Some(*sd),
+                nu: sample.as_ref().ok().map(|sample| sample.nu().get()),
+                asked: asked(study, &sample),
+                rows: rows(study, &sample),
+                steps: Vec::new(),
+                beyond: (0, 0),
+            }
+        }
+    }
+}
+
+fn of_readings(study: &Study, resolution: Resolution, readings: &[Reading]) -> Analysis {
+    let of = |belonging| readings.iter().filter(move |reading| reading.belonging == belonging);
+    let counted: Vec<Counts> = of(Belonging::Counted).map(|reading| reading.counts).collect();
+    let moments = sum(&counted);
+    let sample = Sample::from_moments(&moments, resolution, &study.specification);
+    Analysis {
+        n: moments.n().get(),
+        surplus: saturating(of(Belonging::Surplus).count()),
+        voided: saturating(of(Belonging::Voided).count()),
+        mean: moments.mean(resolution),
+        sd: moments.standard_deviation(resolution),
+        nu: sample.as_ref().ok().map(|sample| sample.nu().get()),
+        asked: asked(study, &sample),
+        rows: rows(study, &sample),
+        steps: steps(study, resolution, &counted),
+        beyond: beyond(study, resolution, &counted),
+    }
+}
+
+/// The sums of all readings. Whoever fills a [`Study`] keeps to [`Count::MAX`]; what lies beyond it would be left out.
+fn sum(counted: &[Counts]) -> Moments {
+    let mut moments = Moments::default();
+    for &counts in counted.iter().take(Count::MAX.get() as usize) {
+        let _ = moments.add(counts);
+    }
+    moments
+}
+
+fn asked(study: &Study, sample: &Result<Sample, SampleError>) -> Result<Row, Trouble> {
+    let sample = sample.as_ref().map_err(|error| Trouble::Sample(*error))?;
+    row(study, sample, study.question.index).map_err(Trouble::Index)
+}
+
+fn rows(study: &Study, sample: &Result<Sample, SampleError>) -> Vec<Row> {
+    let Ok(sample) = sample else { return Vec::new() };
+    [Index::Cpk, Index::Cp, Index::Cpl, Index::Cpu, Index::Cpm]
+        .into_iter()
+        .filter_map(|index| row(study, sample, index).ok())
+        .collect()
+}
+
+fn row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> {
+    let estimate = sample.estimate(index)?;
+    let interval = match interval::of(sample, index, study.question.confidence, study.question.kind) {
+        Ok(found) => Some(found.interval),
+        Err(IntervalError::NoMethodYet(_)) => None,
+        Err(IntervalError::Index(error)) => return Err(error),
+    };
+    Ok(Row { index, estimate, interval })
+}
+
+fn steps(study: &Study, resolution: Resolution, counted: &[Counts]) -> Vec<Step> {
+    let stride = counted.len().div_ceil(STEPS_MAX).max(1);
+    let mut moments = Moments::default();
+    let mut steps = Vec::new();
+    for (i, &counts) in counted.iter().enumerate() {
+        if moments.add(counts).is_err() {
+            break;
+        }
+        let n = i + 1;
+        if n % stride != 0 && n != counted.len() {
+            continue;
+        }
+        let Ok(sample) = Sample::from_moments(&moments, resolution, &study.specification) else { continue };
+        if let Ok(Row { estimate, interval: Some(interval), .. }) = row(study, &sample, study.question.index)
+        {
+            steps.push(Step { n: moments.n().get(), estimate, low: interval.low, high: interval.high });
+        }
+    }
+    steps
+}
+
+/// A reading exactly at a limit is within it. Both sides of the comparison are the nearest doubles of short decimals.
+fn beyond(study: &Study, resolution: Resolution, counted: &[Counts]) -> (u32, u32) {
+    let value = |counts: Counts| value(resolution, counts);
+    let (lower, upper) = (study.specification.lower(), study.specification.upper());
+    let below = counted.iter().filter(|&&counts| lower.is_some_and(|limit| value(counts) < limit.to_f64()));
+    let above = counted.iter().filter(|&&counts| upper.is_some_and(|limit| value(counts) > limit.to_f64()));
+    (saturating(below.count()), saturating(above.count()))
+}
+
+/// A reading in the unit, for drawing and comparing: the double nearest to its decimal text.
+#[must_use]
+pub fn value(resolution: Resolution, counts: Counts) -> f64 {
+    Decimal::parse(resolution.show(counts).to_string()).map_or(f64::NAN, Decimal::to_f64)
+}
+
+fn saturating(n: usize) -> u32 {
+    u32::try_from(n).unwrap_or(u32::MAX)
+}

@@ -1,0 +1,253 @@
+//! The report in sentences: the verdict, what makes one doubt it, and what it is not.
+
+use donelight_core::counts::{Decimal, Resolution};
+use donelight_core::interval::{Interval, Kind};
+use donelight_core::plan::Plan;
+use donelight_core::quantity::Confidence;
+use donelight_core::stopping::Standing;
+
+use super::analysis::{Analysis, Row};
+use super::{Data, Question, Study};
+use crate::level;
+
+/// Stands wherever a verdict stands.
+pub const SAFETY: &str = "This verdict does not replace the standards in force, the customer's rules or the judgement \
+    of a qualified person. It does not say that a part or a machine is safe.";
+
+/// The verdict's outcome, told by a word beside its sentences.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Outcome {
+    /// The lower limit reaches what is required.
+    Shown,
+    /// It does not.
+    NotShown,
+    /// Nothing was required: an estimate only.
+    Estimate,
+    /// There is not even an estimate.
+    None,
+}
+
+impl Outcome {
+    /// One or two words for it.
+    #[must_use]
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::Shown => "shown",
+            Self::NotShown => "not shown",
+            Self::Estimate => "estimate",
+            Self::None => "no estimate",
+        }
+    }
+}
+
+/// The verdict.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Verdict {
+    /// In a word.
+    pub outcome: Outcome,
+    /// In a sentence.
+    pub headline: String,
+    /// What follows from it, and where the study stands.
+    pub more: Vec<String>,
+}
+
+/// Puts the analysis into words.
+#[must_use]
+pub fn verdict(study: &Study, analysis: &Analysis) -> Verdict {
+    let (outcome, headline) = match &analysis.asked {
+        Ok(row) => claim(&study.question, row),
+        Err(trouble) => {
+            (Outcome::None, format!("There is no estimate of {}: {trouble}.", study.question.index))
+        }
+    };
+    let mut more = Vec::new();
+    if outcome == Outcome::NotShown {
+        more.push(
+            "Not shown is not the same as shown to be bad: more readings narrow the interval, and may or may not lift \
+             its lower limit."
+                .to_owned(),
+        );
+    }
+    if let Some((plan, standing)) = &study.planned {
+        more.push(progress(plan, *standing, analysis.n));
+    }
+    Verdict { outcome, headline, more }
+}
+
+fn claim(question: &Question, row: &Row) -> (Outcome, String) {
+    let estimate = format!("{} is estimated at {:.3}", row.index, row.estimate);
+    let Some(interval) = row.interval else {
+        let outcome = if question.required.is_some() { Outcome::NotShown } else { Outcome::Estimate };
+        return (outcome, format!("{estimate}; there is no interval method for it yet."));
+    };
+    let name = interval_name(question.confidence, question.kind);
+    let shown = format!("{estimate}; its {name} is {}", interval_text(&interval));
+    match (question.required, interval.low) {
+        (Some(required), Some(low)) if low >= required.to_f64() => (
+            Outcome::Shown,
+            format!("{} is shown to be at least {}: {shown}.", row.index, level::plain(required.0)),
+        ),
+        (Some(required), _) => (
+            Outcome::NotShown,
+            format!("{} is not shown to be at least {}: {shown}.", row.index, level::plain(required.0)),
+        ),
+        (None, _) => (Outcome::Estimate, format!("{shown}.")),
+    }
+}
+
+fn progress(plan: &Plan, standing: Standing, n: u32) -> String {
+    let rule = plan.rule;
+    match standing {
+        Standing::Gathering => format!(
+            "The study is not finished: {n} readings are in, at least {} are planned, and no more than {} are asked for.",
+            rule.planned.get(),
+            rule.limit.get()
+        ),
+        Standing::Settled => format!(
+            "The study is finished: {n} readings are in ({} planned), and the interval is as narrow as planned.",
+            rule.planned.get()
+        ),
+        Standing::Spent => format!(
+            "The plan's limit of {} readings is reached, but the interval is not as narrow as planned.",
+            rule.limit.get()
+        ),
+    }
+}
+
+/// "two-sided 95 % interval", "lower 95 % bound".
+#[must_use]
+pub fn interval_name(confidence: Confidence, kind: Kind) -> String {
+    let confidence = level::percent(confidence.millionths());
+    match kind {
+        Kind::TwoSided => format!("two-sided {confidence} interval"),
+        Kind::Lower => format!("lower {confidence} bound"),
+        Kind::Upper => format!("upper {confidence} bound"),
+    }
+}
+
+/// "1.350 to 1.650", or the one end.
+#[must_use]
+pub fn interval_text(interval: &Interval) -> String {
+    match (interval.low, interval.high) {
+        (Some(low), Some(high)) => format!("{low:.3} to {high:.3}"),
+        (Some(end), None) | (None, Some(end)) => format!("{end:.3}"),
+        (None, None) => "unknown".to_owned(),
+    }
+}
+
+/// A limit with at least as many decimals as the gauge shows, and a true minus sign: `11.950` at a resolution of 0.001.
+#[must_use]
+pub fn limit(value: Decimal, resolution: Option<Resolution>) -> String {
+    let mut text = value.to_string();
+    let wanted = resolution.map_or(0, Resolution::decimals);
+    if value.decimals() == 0 && wanted > 0 {
+        text.push('.');
+    }
+    text.extend((value.decimals()..wanted).map(|_| '0'));
+    text.replace('-', "\u{2212}")
+}
+
+/// What the interval's method really covers; own computation, see the core's `interval::bissell`.
+#[must_use]
+pub const fn coverage(kind: Kind) -> &'static str {
+    match kind {
+        Kind::TwoSided => {
+            "The intervals are Bissell's normal approximation (1990). Of Cpk, a nominal two-sided 95 % covers 94.8 % to \
+             96.1 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
+        }
+        Kind::Lower => {
+            "The bounds are Bissell's normal approximation (1990). Of Cpk, a nominal lower 95 % bound covers 94.7 % to \
+             98.7 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
+        }
+        Kind::Upper => {
+            "The bounds are Bissell's normal approximation (1990). Of Cpk, a nominal upper 95 % bound covers 91.1 % to \
+             95.7 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
+        }
+    }
+}
+
+/// Whatever should make the reader look twice. Not tested here, and therefore always said: stability and normality.
+#[must_use]
+pub fn doubts(study: &Study, analysis: &Analysis) -> Vec<String> {
+    let mut doubts = Vec::new();
+    // Common practice, no source.
+    const FEW: u32 = 30;
+    if analysis.n < FEW {
+        doubts.push(format!(
+            "Only {} are in; below {FEW} the approximation and the pictures say little.",
+            readings(analysis.n)
+        ));
+    }
+    let (below, above) = analysis.beyond;
+    if below + above > 0 {
+        doubts.push(format!(
+            "{} beyond the limits: {below} below the lower, {above} above the upper.",
+            if below + above == 1 {
+                "1 reading lies".to_owned()
+            } else {
+                format!("{} readings lie", below + above)
+            }
+        ));
+    }
+    if let (Data::Readings { resolution, .. }, Some(sd)) = (&study.data, analysis.sd) {
+        doubts.extend(coarse(*resolution, sd));
+    }
+    if analysis.voided > 0 {
+        doubts.push(format!("{} taken back by the operator.", were(analysis.voided)));
+    }
+    if !study.incidents.is_empty() {
+        doubts.push(format!(
+            "{} on the way; see the list below.",
+            if study.incidents.len() == 1 {
+                "1 incident".to_owned()
+            } else {
+                format!("{} incidents", study.incidents.len())
+            }
+        ));
+    }
+    doubts.push(match study.data {
+        Data::Readings { .. } => {
+            "Nothing here tests that the process was stable and the readings near to normal: judge by the pictures."
+                .to_owned()
+        }
+        Data::Summary { .. } => {
+            "A summary does not tell whether the process was stable and the readings near to normal.".to_owned()
+        }
+    });
+    doubts
+}
+
+/// Rounding to steps of q adds about q²/12 to the variance (Sheppard 1898, from memory): 2 % of it at q = s/2.
+fn coarse(resolution: Resolution, sd: f64) -> Option<String> {
+    let steps = sd / resolution.to_f64();
+    (steps > 0.0 && steps < 2.0).then(|| {
+        format!(
+            "The gauge's resolution is coarse: the standard deviation is only {steps:.1} steps of it, so rounding adds \
+             to the spread."
+        )
+    })
+}
+
+fn readings(n: u32) -> String {
+    if n == 1 { "1 reading".to_owned() } else { format!("{n} readings") }
+}
+
+fn were(n: u32) -> String {
+    if n == 1 { "1 reading was".to_owned() } else { format!("{n} readings were") }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_limit_has_the_decimals_of_the_gauge_and_never_fewer_than_its_own() {
+        let shown =
+            |value: &str, resolution: &str| limit(value.parse().unwrap(), Some(resolution.parse().unwrap()));
+        assert_eq!(shown("11.95", "0.001"), "11.950");
+        assert_eq!(shown("12", "0.01"), "12.00");
+        assert_eq!(shown("-12.0005", "0.01"), "\u{2212}12.0005");
+        assert_eq!(shown("12", "5"), "12");
+        assert_eq!(limit("12.5".parse().unwrap(), None), "12.5");
+    }
+}
