@@ -118,6 +118,16 @@ mod reading {
     }
 
     #[test]
+    fn zeros_beyond_all_counting_still_carry_nothing() {
+        let zeros = "0".repeat(300);
+        for count in 250..300 {
+            let zeros = &zeros[..count];
+            assert_eq!(read("0.001", &format!("{zeros}9.95{zeros}")), Ok(9950));
+            assert_eq!(read("0.001", &format!("0.{zeros}1")), Err(ReadingError::FinerThanResolution));
+        }
+    }
+
+    #[test]
     fn a_unit_beyond_ascii_or_none_at_all_is_fine() {
         let resolution: Resolution = "0.1".parse().unwrap();
         assert_eq!(resolution.read("12.5 µm".as_bytes(), "µm"), Ok(Counts(125)));

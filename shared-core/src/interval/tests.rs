@@ -31,6 +31,15 @@ fn a_half_width_is_the_longer_side_or_the_distance_of_a_bound() {
 }
 
 #[test]
+fn a_precision_is_reached_at_its_goal_and_not_above() {
+    let quarter = crate::quantity::Millionths(250_000);
+    let (relative, absolute) = (Precision::Relative(quarter), Precision::Absolute(quarter));
+    assert!(relative.allows(0.5, 2.0) && absolute.allows(0.25, 2.0));
+    assert!(!relative.allows(0.5_f64.next_up(), 2.0) && !absolute.allows(0.25_f64.next_up(), 2.0));
+    assert_eq!((relative.achieved(0.5, 2.0), absolute.achieved(0.5, 2.0)), (0.25, 0.5));
+}
+
+#[test]
 fn each_kind_has_the_ends_it_is_named_for_and_a_bound_lies_nearer() {
     let sample = sample("-4", "5", "");
     let of = |kind| of(&sample, Index::Cpk, NINETY_FIVE, kind).unwrap();

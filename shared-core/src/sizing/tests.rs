@@ -65,10 +65,10 @@ fn a_size_of_two_has_no_size_before_it() {
 
 #[test]
 fn the_size_may_be_the_largest_count_and_no_more() {
-    // Around 1 + z²/(2 r²): with r = 0.1386 % the size lies just below a million, with 0.138 % above.
+    // For Cp n = 1 + z²/(2 r²), rounded up: 888 858 for r = 0.147 %, 1 008 576 for r = 0.138 %.
     let just_below = Precision::Relative(Millionths(1_470));
     let size = precision::smallest(Index::Cp, 1.0, just_below, NINETY_FIVE, Kind::TwoSided).unwrap();
-    assert!(size.n.get() > 800_000 && size.n < Count::MAX);
+    assert_eq!(size.n.get(), 888_858);
     let beyond = Precision::Relative(Millionths(1_380));
     let refused = precision::smallest(Index::Cp, 1.0, beyond, NINETY_FIVE, Kind::TwoSided);
     assert_eq!(refused, Err(SizingError::AboveLimit));
