@@ -89,7 +89,7 @@ const ASSUMED: [f64; 4] = [1.0, 1.33, 1.67, 2.0];
 
 /// However large the index: the location term of the standard error is then next to nothing.
 fn floor(plan: &Plan) -> Option<u32> {
-    needed(plan, 1e6)
+    needed(plan, donelight_core::sizing::MAX_INDEX)
 }
 
 /// What the plan says and what it asks of the study.

@@ -123,3 +123,6 @@ pub struct Incident {
     /// What happened.
     pub what: String,
 }
+
+#[cfg(test)]
+mod tests;

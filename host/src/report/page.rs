@@ -90,7 +90,7 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                             td class="number" { (axis::number(row.estimate, 3)) }
                             @if kind != Kind::Upper { td class="number" { (end(row.interval.and_then(|i| i.low))) } }
                             @if kind != Kind::Lower { td class="number" { (end(row.interval.and_then(|i| i.high))) } }
-                            td {
+                            td class="remark" {
                                 @if row.interval.is_none() { "No interval method yet." }
                                 @else if row.index == study.question.index { "The study's question." }
                             }
@@ -304,8 +304,9 @@ fn record(study: &Study, analysis: &Analysis) -> Markup {
     if let Some(nu) = analysis.nu {
         numbers.push(Fact::new("Degrees of freedom", nu.to_string()));
     }
+    numbers.extend(specification_facts(study));
     html! {
-        section { h2 { "Numbers" } (facts(&numbers)) (facts(&specification_facts(study))) }
+        section { h2 { "Numbers" } (facts(&numbers)) }
         @if let Some((plan, _)) = &study.planned { section { h2 { "Plan" } (facts(&plan_facts(plan))) } }
         @if !study.origin.is_empty() { section { h2 { "Where the data came from" } (facts(&study.origin)) } }
         @if !study.incidents.is_empty() {

@@ -23,6 +23,8 @@ pub enum Outcome {
     NotShown,
     /// Nothing was required: an estimate only.
     Estimate,
+    /// The plan asks for more readings: whatever the interval is now, it settles nothing.
+    Unfinished,
     /// There is not even an estimate.
     None,
 }
@@ -35,6 +37,7 @@ impl Outcome {
             Self::Shown => "shown",
             Self::NotShown => "not shown",
             Self::Estimate => "estimate",
+            Self::Unfinished => "not finished",
             Self::None => "no estimate",
         }
     }
@@ -54,11 +57,17 @@ pub struct Verdict {
 /// Puts the analysis into words.
 #[must_use]
 pub fn verdict(study: &Study, analysis: &Analysis) -> Verdict {
+    let unfinished = matches!(study.planned, Some((_, Standing::Gathering)));
     let (outcome, headline) = match &analysis.asked {
-        Ok(row) => claim(&study.question, row),
         Err(trouble) => {
             (Outcome::None, format!("There is no estimate of {}: {trouble}.", study.question.index))
         }
+        // No claim is judged before the plan's end: to stop at the first moment at which it holds would be no test.
+        Ok(row) if unfinished => {
+            let (_, so_far) = claim(&Question { required: None, ..study.question }, row);
+            (Outcome::Unfinished, format!("Not finished. So far, {so_far}"))
+        }
+        Ok(row) => claim(&study.question, row),
     };
     let mut more = Vec::new();
     if outcome == Outcome::NotShown {

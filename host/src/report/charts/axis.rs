@@ -153,7 +153,8 @@ pub fn level(frame: &Frame, scale: &Scale, ticks: &[Tick], name: &str) -> Markup
 /// How many level ticks fit without their labels touching.
 #[must_use]
 pub fn level_ticks_that_fit(width: f64, widest_label: &str) -> u32 {
-    (width / (label_width(widest_label) + 24.0)).clamp(2.0, 10.0) as u32
+    // Up to a quarter more ticks than asked for may come.
+    (width / (label_width(widest_label) + 24.0) / 1.25).clamp(2.0, 10.0) as u32
 }
 
 #[cfg(test)]

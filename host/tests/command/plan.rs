@@ -1,0 +1,104 @@
+//! `donelight plan`: an example to start from, and every fault at once.
+
+use std::fs;
+use std::path::Path;
+
+use crate::driver::run;
+
+#[test]
+fn a_new_plan_is_valid_and_is_not_written_over_a_file_that_is_there() {
+    let folder = tempfile::tempdir().unwrap();
+    let plan = folder.path().join("plan.toml");
+    let answer = run(&["plan", "new", "plan.toml"], folder.path()).ends_with(0);
+    assert!(answer.out.contains("donelight plan check plan.toml"), "{}", answer.out);
+    let written = fs::read_to_string(&plan).unwrap();
+    assert!(written.lines().filter(|line| line.starts_with('#')).count() >= 20, "the plan is commented");
+
+    let check = run(&["plan", "check", "plan.toml"], folder.path()).ends_with(0);
+    assert!(check.out.starts_with("plan.toml is a valid plan.\n"), "{}", check.out);
+    for words in
+        ["212, and never more than 240", "1.33: 218", "and never fewer than 194", "covers 94.8 % to 96.1 %"]
+    {
+        assert!(check.out.contains(words), "{words} is not in\n{}", check.out);
+    }
+
+    fs::write(&plan, "mine").unwrap();
+    let again = run(&["plan", "new", "plan.toml"], folder.path()).ends_with(1);
+    assert!(again.err.contains("exists already") && again.err.contains("--force"), "{}", again.err);
+    assert_eq!(fs::read_to_string(&plan).unwrap(), "mine");
+    run(&["plan", "new", "plan.toml", "--force"], folder.path()).ends_with(0);
+    assert_eq!(fs::read_to_string(&plan).unwrap(), written);
+}
+
+#[test]
+fn a_valid_plan_is_answered_in_json_with_what_it_takes() {
+    let folder = tempfile::tempdir().unwrap();
+    run(&["plan", "new", "plan.toml"], folder.path()).ends_with(0);
+    let json = run(&["plan", "check", "plan.toml", "--json"], folder.path()).ends_with(0).json();
+    assert_eq!(json["valid"], true);
+    assert_eq!(json["planned"], 212);
+    assert_eq!(json["resolution"], "0.001");
+    assert_eq!(json["precision"]["relative"], 0.1);
+    // 1 + z²/(2 r²) at 95 % and 10 % is 193.07; own computation.
+    assert_eq!(json["floor"], 194);
+}
+
+#[test]
+fn a_plan_that_contradicts_itself_is_told_all_its_faults_with_their_lines() {
+    let folder = tempfile::tempdir().unwrap();
+    let text = "\
+name = \"Wick tubes\"
+resolution = \"0.001\"
+colour = \"red\"
+
+[specification]
+lower = \"12.05\"
+upper = \"11.95\"
+
+[capability]
+index = \"cpk\"
+confidence = \"9 5%\"
+
+[stop]
+planned = 300
+precision = \"10%\"
+limit = 240
+";
+    fs::write(folder.path().join("plan.toml"), text).unwrap();
+    let answer = run(&["plan", "check", "plan.toml", "--json"], folder.path()).ends_with(1);
+    for line in [
+        "plan.toml is no valid plan: 4 faults",
+        "line 3: colour: unknown key; known here: name,",
+        "line 7: specification.upper: the lower limit is not below the upper one",
+        "line 11: capability.confidence: not a number; write for example 95%",
+        "line 14: stop.planned: more pieces are planned than the limit allows",
+    ] {
+        assert!(answer.err.contains(line), "{line} is not in\n{}", answer.err);
+    }
+    let error = &answer.json()["error"];
+    assert_eq!(error["kind"], "plan-invalid");
+    let lines: Vec<u64> =
+        error["faults"].as_array().unwrap().iter().map(|fault| fault["line"].as_u64().unwrap()).collect();
+    assert_eq!(lines, [3, 7, 11, 14]);
+}
+
+#[test]
+fn a_plan_that_cannot_be_read_or_written_is_refused_with_advice() {
+    let folder = tempfile::tempdir().unwrap();
+    let answer = run(&["plan", "check", "none.toml", "--json"], folder.path()).ends_with(1);
+    assert_eq!(answer.json()["error"]["kind"], "file-missing");
+    assert!(
+        answer.err.contains("cannot read none.toml") && answer.err.contains("plan new"),
+        "{}",
+        answer.err
+    );
+    run(&["plan", "check", "."], folder.path()).ends_with(1);
+    fs::write(folder.path().join("binary.toml"), [0xff, 0xfe, 0x00, 0x80]).unwrap();
+    let answer = run(&["plan", "check", "binary.toml"], folder.path()).ends_with(1);
+    assert!(answer.err.contains("not text in UTF-8"), "{}", answer.err);
+    let answer = run(&["plan", "new", "no/such/folder/plan.toml"], folder.path()).ends_with(1);
+    assert!(answer.err.contains("Make the folder first"), "{}", answer.err);
+    let answer = run(&["plan", "new", ".", "--force"], folder.path()).ends_with(1);
+    assert!(answer.err.contains("cannot write ."), "{}", answer.err);
+    assert!(Path::new(folder.path()).is_dir());
+}
