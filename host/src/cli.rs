@@ -293,6 +293,9 @@ pub struct Report {
     /// Write the readings
     #[arg(long, value_name = "FILE")]
     pub csv: Option<PathBuf>,
+    /// The index to be shown: exit code 1 unless the study is finished and the lower limit reaches it
+    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    pub require: Option<Millionths>,
 }
 
 /// `donelight demo …`

@@ -15,8 +15,8 @@ pub enum WriteError {
         /// Which file.
         path: PathBuf,
     },
-    /// It is one of the files that are read.
-    #[error("{} is both read and to be written", path.display())]
+    /// It is one of the files that are read, or written otherwise.
+    #[error("{} is named twice: it cannot be written and serve for something else too", path.display())]
     IsSource {
         /// Which file.
         path: PathBuf,
@@ -66,12 +66,15 @@ impl Explain for WriteError {
     }
 }
 
-/// Refuses to let an output replace an input, by whatever path both are named.
+/// Refuses to let an output replace an input (or another output), by whatever path both are named.
 ///
 /// # Errors
 /// [`WriteError::IsSource`].
 pub fn keep_apart(output: &Path, sources: &[&Path]) -> Result<(), WriteError> {
     let real = |path: &Path| fs::canonicalize(path).ok();
+    if sources.contains(&output) {
+        return Err(WriteError::IsSource { path: output.to_owned() });
+    }
     match real(output) {
         Some(written) if sources.iter().any(|source| real(source).as_ref() == Some(&written)) => {
             Err(WriteError::IsSource { path: output.to_owned() })
@@ -160,7 +163,9 @@ mod tests {
         fs::write(&path, "1").unwrap();
         let other = folder.path().join(".").join("a.csv");
         assert!(matches!(keep_apart(&other, &[&path]), Err(WriteError::IsSource { .. })));
-        assert!(keep_apart(&folder.path().join("b.csv"), &[&path]).is_ok());
+        let new = folder.path().join("b.csv");
+        assert!(keep_apart(&new, &[&path]).is_ok());
+        assert!(matches!(keep_apart(&new, &[&path, &new]), Err(WriteError::IsSource { .. })));
     }
 
     #[test]

@@ -6,7 +6,7 @@ use serde_json::{Value, json};
 
 use super::analysis::{Analysis, Row};
 use super::words::{self, Outcome};
-use super::{Belonging, Data, Study};
+use super::{Belonging, Data, Study, Weight};
 
 /// One row a reading: its number, value as exact decimal text, whether it counts, and record number and time where they
 /// are known. A summary has no rows.
@@ -83,7 +83,7 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
         "doubts": words::doubts(study, analysis),
         "note": words::SAFETY,
         "origin": study.origin.iter().map(|fact| (fact.name.clone(), json!(fact.value))).collect::<serde_json::Map<_, _>>(),
-        "incidents": study.incidents.iter().map(|incident| json!({ "place": incident.place, "what": incident.what }))
+        "incidents": study.incidents.iter().map(|incident| json!({ "place": incident.place, "what": incident.what, "loss": incident.weight == Weight::Loss }))
             .collect::<Vec<_>>(),
     })
 }

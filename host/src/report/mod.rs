@@ -122,6 +122,17 @@ pub struct Incident {
     pub place: String,
     /// What happened.
     pub what: String,
+    /// Whether readings may be missing or wrong for it.
+    pub weight: Weight,
+}
+
+/// How much an incident weighs.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Weight {
+    /// Good to know; every reading is there.
+    Note,
+    /// Readings may be missing or wrong.
+    Loss,
 }
 
 #[cfg(test)]

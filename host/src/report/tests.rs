@@ -44,6 +44,7 @@ fn study() -> Study {
         incidents: vec![Incident {
             place: "record 17".to_owned(),
             what: "refused: no digits in the line".to_owned(),
+            weight: Weight::Note,
         }],
     }
 }
@@ -135,6 +136,16 @@ fn readings_of(study: &mut Study) -> &mut Vec<Reading> {
 }
 
 #[test]
+fn a_loss_on_the_way_is_a_doubt_of_its_own() {
+    let mut study = study();
+    let said =
+        |study: &Study| words::doubts(study, &analysis::of(study)).join(" ").contains("may be missing");
+    assert!(!said(&study));
+    study.incidents[0].weight = Weight::Loss;
+    assert!(said(&study));
+}
+
+#[test]
 fn a_study_without_an_estimate_still_has_a_page_that_says_why() {
     for (readings, why) in [
         (Vec::new(), "fewer than two readings"),
@@ -159,7 +170,8 @@ fn whatever_a_name_holds_is_text_and_never_markup() {
     study.characteristic = nasty.to_owned();
     study.unit = "<i>".to_owned();
     study.origin = vec![Fact::new(nasty, nasty)];
-    study.incidents = vec![Incident { place: nasty.to_owned(), what: nasty.to_owned() }];
+    study.incidents =
+        vec![Incident { place: nasty.to_owned(), what: nasty.to_owned(), weight: Weight::Loss }];
     let (_, page) = page_of(&study);
     assert!(!page.contains("<b>") && !page.contains("<script") && !page.contains("<i>"));
     assert!(page.contains("&lt;b&gt;&amp;&quot;"));

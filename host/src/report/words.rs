@@ -7,7 +7,7 @@ use donelight_core::quantity::Confidence;
 use donelight_core::stopping::Standing;
 
 use super::analysis::{Analysis, Row};
-use super::{Data, Question, Study};
+use super::{Data, Question, Study, Weight};
 use crate::level;
 
 /// Stands wherever a verdict stands.
@@ -203,6 +203,11 @@ pub fn doubts(study: &Study, analysis: &Analysis) -> Vec<String> {
     }
     if analysis.voided > 0 {
         doubts.push(format!("{} taken back by the operator.", were(analysis.voided)));
+    }
+    if study.incidents.iter().any(|incident| incident.weight == Weight::Loss) {
+        doubts.push(
+            "Readings may be missing or wrong: records are missing or contradict each other.".to_owned(),
+        );
     }
     if !study.incidents.is_empty() {
         doubts.push(format!(

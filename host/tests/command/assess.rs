@@ -199,11 +199,7 @@ fn what_makes_no_sense_is_wrong_use_and_what_the_world_lacks_is_refused() {
         ("assess sheet.xls --lsl 1 --resolution 0.1", 1, "Save it as CSV"),
         ("assess two.csv --lsl 1 --resolution 0.1", 1, "--column 2"),
         ("assess two.csv --lsl 1 --resolution 0.1 --column c", 1, "no column \"c\""),
-        (
-            "assess two.csv --lsl 1 --resolution 0.1 --column b --report two.csv",
-            2,
-            "both read and to be written",
-        ),
+        ("assess two.csv --lsl 1 --resolution 0.1 --column b --report two.csv", 2, "is named twice"),
         ("assess two.csv --lsl 1 --resolution 0.1 --column b --report no/x.html", 1, "Make the folder first"),
     ] {
         let said = run(&line.split(' ').collect::<Vec<_>>(), folder.path());
