@@ -24,6 +24,8 @@ extern crate std;
 
 pub mod capability;
 pub mod counts;
+#[cfg(test)]
+mod flash_model;
 pub mod gauge;
 pub mod interval;
 pub mod journal;

@@ -214,8 +214,9 @@ const FAULTS_MAX: usize = 20;
 pub type Faults = heapless::Vec<Fault, FAULTS_MAX>;
 
 impl Draft {
-    /// Limits beyond so many steps of the resolution are a mistake in the unit; [`crate::counts::Counts`] bounds readings likewise.
-    const STEPS_MAX: f64 = 1e12;
+    /// Readings are bounded to so many units of the resolution's last decimal (see [`crate::counts`]); a limit beyond
+    /// that is a mistake in the unit.
+    const LAST_DECIMALS_MAX: f64 = 1e12;
 
     /// All that is wrong, at once; empty for a valid plan.
     #[must_use]
@@ -264,8 +265,8 @@ impl Draft {
 
     /// Whether a reading could come near `value`.
     fn countable(&self, value: Decimal) -> bool {
-        let steps = libm::fabs(value.to_f64()) / self.resolution.to_f64();
-        self.resolution.to_f64() > 0.0 && steps <= Self::STEPS_MAX
+        let last_decimal = self.resolution.to_f64() / f64::from(self.resolution.step());
+        libm::fabs(value.to_f64()) <= Self::LAST_DECIMALS_MAX * last_decimal
     }
 
     fn check_rule(&self, check: &mut impl FnMut(bool, Fault)) {
@@ -354,3 +355,6 @@ impl From<Plan> for Draft {
         plan.draft
     }
 }
+
+#[cfg(test)]
+pub(crate) mod tests;

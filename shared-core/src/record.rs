@@ -277,3 +277,6 @@ impl<'a> Sealed<'a> {
         self.0.get(1..self.0.len().saturating_sub(4)).unwrap_or_default()
     }
 }
+
+#[cfg(test)]
+mod tests;

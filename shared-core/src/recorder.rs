@@ -419,3 +419,6 @@ fn read_line(station: &Station, line: &[u8]) -> Result<crate::counts::Counts, Re
     }
     Ok(counts)
 }
+
+#[cfg(test)]
+mod tests;

@@ -248,3 +248,6 @@ impl Station {
         self.study.as_ref()?.latest.map(|latest| latest.seq)
     }
 }
+
+#[cfg(test)]
+mod tests;

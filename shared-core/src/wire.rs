@@ -362,3 +362,6 @@ pub fn decode<'a, T: Deserialize<'a>>(frame: &'a [u8]) -> Result<(u16, T), Frame
         _ => Err(FrameError::Unknown { number }),
     }
 }
+
+#[cfg(test)]
+mod tests;

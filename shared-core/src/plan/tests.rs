@@ -1,0 +1,133 @@
+//! What makes a plan invalid, one fault at a time and all at once.
+
+use super::*;
+use crate::quantity::{Count, Millionths};
+
+/// A valid draft: 212 pieces of a Cpk at ±10 %.
+pub(crate) fn draft() -> Draft {
+    let decimal = |text: &str| Some(Decimal::parse(text).unwrap());
+    Draft {
+        name: Text::new("escapement arbor, first run").unwrap(),
+        part: Text::new("arbor").unwrap(),
+        characteristic: Text::new("pivot diameter").unwrap(),
+        unit: Text::new("mm").unwrap(),
+        resolution: Resolution::from_decimal(Decimal::parse("0.001").unwrap()).unwrap(),
+        lower: decimal("9.97"),
+        upper: decimal("10.03"),
+        target: decimal("10"),
+        index: Index::Cpk,
+        confidence: Confidence::NINETY_FIVE_PERCENT,
+        kind: Kind::TwoSided,
+        rule: StoppingRule {
+            planned: Count::new(212).unwrap(),
+            precision: Precision::Relative(Millionths(100_000)),
+            limit: Count::new(260).unwrap(),
+        },
+        gauge: LineSettings::default(),
+        same_in_a_row: 8,
+    }
+}
+
+/// The longest plan that there can be, to bound records and frames.
+pub(crate) fn longest() -> Draft {
+    Draft {
+        name: Text::new(&"n".repeat(40)).unwrap(),
+        part: Text::new(&"p".repeat(24)).unwrap(),
+        characteristic: Text::new(&"c".repeat(24)).unwrap(),
+        unit: Text::new("millimet").unwrap(),
+        resolution: Resolution::from_decimal(Decimal::parse("0.000009999").unwrap()).unwrap(),
+        lower: Some(Decimal::parse("-999.999999999999").unwrap()),
+        upper: Some(Decimal::parse("999.999999999999").unwrap()),
+        target: Some(Decimal::parse("999.999999999998").unwrap()),
+        rule: StoppingRule {
+            planned: Count::MAX,
+            precision: Precision::Relative(Millionths(u32::MAX)),
+            limit: Count::MAX,
+        },
+        gauge: LineSettings { baud: 115_200, data_bits: 8, parity: Parity::Odd, stop_bits: 2 },
+        same_in_a_row: 255,
+        ..draft()
+    }
+}
+
+fn faults(change: impl FnOnce(&mut Draft)) -> Faults {
+    let mut draft = draft();
+    change(&mut draft);
+    draft.faults()
+}
+
+#[test]
+fn a_draft_without_a_fault_becomes_a_plan_and_back() {
+    assert_eq!(draft().faults(), []);
+    assert_eq!(longest().faults(), []);
+    let plan = Plan::try_from(draft()).unwrap();
+    assert_eq!(Draft::from(plan), draft());
+}
+
+#[test]
+fn each_contradiction_is_its_own_fault() {
+    let decimal = |text: &str| Some(Decimal::parse(text).unwrap());
+    let count = |n: u32| Count::new(n).unwrap();
+    assert_eq!(faults(|d| d.name = Text::new("  ").unwrap()), [Fault::NoName]);
+    assert_eq!(faults(|d| d.unit = Text::new("m m").unwrap()), [Fault::UnitNotAWord]);
+    assert_eq!(faults(|d| (d.lower, d.upper, d.target) = (None, None, None)), [Fault::NoLimit]);
+    assert_eq!(faults(|d| d.upper = decimal("9.97")), [Fault::LimitsReversed, Fault::TargetOutside]);
+    assert_eq!(faults(|d| d.target = decimal("10.031")), [Fault::TargetOutside]);
+    assert_eq!(faults(|d| d.upper = decimal("9999999999999")), [Fault::LimitBeyondRange]);
+    assert_eq!(
+        faults(|d| (d.lower, d.upper, d.target) = (decimal("9.9701"), decimal("9.9702"), None)),
+        [Fault::ResolutionTooCoarse]
+    );
+    assert_eq!(faults(|d| (d.index, d.lower) = (Index::Cpl, None)), [Fault::IndexNeedsLower]);
+    assert_eq!(faults(|d| (d.index, d.upper) = (Index::Cpu, None)), [Fault::IndexNeedsUpper]);
+    assert_eq!(faults(|d| (d.index, d.upper) = (Index::Cp, None)), [Fault::IndexNeedsUpper]);
+    assert_eq!(faults(|d| d.index = Index::Cpm), [Fault::IndexWithoutInterval]);
+    assert_eq!(faults(|d| d.rule.planned = count(1)), [Fault::PlannedTooFew]);
+    assert_eq!(faults(|d| d.rule.planned = count(261)), [Fault::PlannedAboveLimit]);
+    assert_eq!(
+        faults(|d| d.rule.precision = Precision::Absolute(Millionths(150_000))),
+        [Fault::PrecisionAbsolute]
+    );
+    assert_eq!(faults(|d| d.rule.precision = Precision::Relative(Millionths(0))), [Fault::PrecisionZero]);
+    assert_eq!(faults(|d| d.gauge.baud = 299), [Fault::Baud]);
+    assert_eq!(faults(|d| d.gauge.baud = 115_201), [Fault::Baud]);
+    assert_eq!(faults(|d| d.gauge.data_bits = 9), [Fault::DataBits]);
+    assert_eq!(faults(|d| d.gauge.stop_bits = 0), [Fault::StopBits]);
+    assert_eq!(faults(|d| d.same_in_a_row = 1), [Fault::SameInARow]);
+}
+
+/// The floor n = 1 + z²/(2r²) of Bissell's relative half-width: 193.07 at 10 % and 95 % (the reference tables'
+/// README gives 194 as the first whole number).
+#[test]
+fn a_precision_that_no_estimate_could_reach_within_the_limit_is_a_fault() {
+    let at_limit = |limit: u32| {
+        faults(|d| {
+            d.rule.planned = Count::new(2).unwrap();
+            d.rule.limit = Count::new(limit).unwrap();
+        })
+    };
+    assert_eq!(at_limit(193), [Fault::PrecisionBeyondLimit]);
+    assert_eq!(at_limit(194), []);
+}
+
+#[test]
+fn many_faults_are_told_at_once() {
+    let found = faults(|d| {
+        d.name = Text::default();
+        d.lower = None;
+        d.upper = None;
+        d.rule.planned = Count::ZERO;
+        d.gauge.stop_bits = 3;
+    });
+    assert_eq!(found, [Fault::NoName, Fault::NoLimit, Fault::PlannedTooFew, Fault::StopBits]);
+}
+
+#[test]
+fn a_plan_with_a_fault_does_not_decode() {
+    let mut bytes = [0; 300];
+    let bad = Draft { same_in_a_row: 1, ..draft() };
+    let used = postcard::to_slice(&bad, &mut bytes).unwrap();
+    assert!(postcard::from_bytes::<Plan>(used).is_err());
+    let used = postcard::to_slice(&draft(), &mut bytes).unwrap();
+    assert_eq!(postcard::from_bytes::<Plan>(used).unwrap(), Plan::try_from(draft()).unwrap());
+}

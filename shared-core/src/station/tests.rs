@@ -1,0 +1,200 @@
+//! The state machine: what each record does, and that nothing but the records counts.
+
+use std::vec::Vec;
+
+use proptest::prelude::*;
+
+use super::*;
+use crate::{
+    plan::{Draft, tests as plans},
+    quantity::{Millionths, Precision},
+    record::Refusal,
+    stopping::StoppingRule,
+};
+
+/// A study that wants few pieces: 5 planned, ±50 %, 12 at most; 4 equal readings hold it.
+fn small_plan() -> Event {
+    let draft = Draft {
+        rule: StoppingRule {
+            planned: Count::new(5).unwrap(),
+            precision: Precision::Relative(Millionths(500_000)),
+            limit: Count::new(12).unwrap(),
+        },
+        same_in_a_row: 4,
+        ..plans::draft()
+    };
+    Event::Plan(Plan::try_from(draft).unwrap())
+}
+
+fn reading(counts: i64) -> Event {
+    Event::Reading(Counts::new(counts).unwrap())
+}
+
+fn replay(events: &[Event]) -> Station {
+    let mut station = Station::default();
+    for (i, event) in events.iter().enumerate() {
+        station.apply(Seq(i as u32 + 1), event);
+    }
+    station
+}
+
+fn study_of(counts: &[i64]) -> Study {
+    let mut events = std::vec![small_plan()];
+    events.extend(counts.iter().map(|c| reading(*c)));
+    replay(&events).study().unwrap().clone()
+}
+
+const SPREAD: [i64; 12] =
+    [10_001, 9_999, 10_002, 9_998, 10_003, 9_997, 10_001, 9_999, 10_002, 9_998, 10_000, 10_003];
+
+#[test]
+fn a_study_gathers_until_count_and_precision_are_reached_and_then_keeps_surplus_apart() {
+    // Bissell's floor at ±50 % and 95 % is 9 pieces (1 + z²/(2r²) = 8.68), so precision comes after the count.
+    let settled = (1..=12).find(|n| study_of(&SPREAD[..*n]).standing() == Standing::Settled).unwrap();
+    assert!((9..12).contains(&settled), "{settled}");
+    let study = study_of(&SPREAD);
+    assert_eq!(study.standing(), Standing::Settled);
+    assert_eq!(study.progress().n.get() as usize, settled);
+    assert_eq!(study.progress().surplus as usize, 12 - settled);
+    assert_eq!(study.moments(), study_of(&SPREAD[..settled]).moments());
+}
+
+#[test]
+fn a_study_is_spent_at_its_limit_without_the_precision() {
+    // The mean lies at the lower limit: the estimate is near zero, and no relative width is reached.
+    let at_limit: Vec<i64> = SPREAD.iter().map(|c| c - 30).collect();
+    assert_eq!(study_of(&at_limit[..11]).standing(), Standing::Gathering);
+    assert_eq!(study_of(&at_limit).standing(), Standing::Spent);
+}
+
+#[test]
+fn equal_readings_hold_the_study_until_someone_has_looked() {
+    let stuck = [10_001, 9_999, 10_002, 9_998, 10_003, 10_003, 10_003, 10_003];
+    let study = study_of(&stuck);
+    assert_eq!(study.held(), Some(Held::GaugeStuck));
+    assert_eq!(study.progress().n.get(), 8, "the readings are kept");
+
+    let mut events = std::vec![small_plan()];
+    events.extend(SPREAD[..4].iter().chain(&[10_003; 4]).chain(&SPREAD[..4]).map(|c| reading(*c)));
+    let held = replay(&events);
+    assert_eq!(held.study().unwrap().standing(), Standing::Gathering, "held, though the limit is reached");
+    events.push(Event::Seen);
+    let seen = replay(&events);
+    assert_eq!(seen.study().unwrap().held(), None);
+    assert_ne!(seen.study().unwrap().standing(), Standing::Gathering);
+}
+
+#[test]
+fn the_settling_reading_can_be_taken_back_and_the_study_goes_on() {
+    let settled = study_of(&SPREAD).progress().n.get() as usize;
+    let mut events = std::vec![small_plan()];
+    events.extend(SPREAD[..settled].iter().map(|c| reading(*c)));
+    events.push(Event::TakenBack(Seq(settled as u32 + 1)));
+    let study = replay(&events).study().unwrap().clone();
+    assert_eq!(study.standing(), Standing::Gathering);
+    assert_eq!(study.moments(), study_of(&SPREAD[..settled - 1]).moments());
+    assert_eq!(study.progress().taken_back, 1);
+}
+
+#[test]
+fn only_the_latest_reading_can_be_taken_back_and_only_once() {
+    let base = [small_plan(), reading(1), reading(2)];
+    let twice =
+        [&base[..], &[Event::TakenBack(Seq(3)), Event::TakenBack(Seq(3)), Event::TakenBack(Seq(2))]].concat();
+    let study = replay(&twice).study().unwrap().clone();
+    assert_eq!((study.progress().n.get(), study.progress().taken_back), (1, 1));
+    assert_eq!(replay(&twice).last_reading(), None);
+}
+
+#[test]
+fn a_new_plan_ends_what_went_before() {
+    let events = [small_plan(), reading(1), reading(2), small_plan(), reading(7)];
+    let study = replay(&events).study().unwrap().clone();
+    assert_eq!((study.began(), study.progress().n.get()), (Seq(4), 1));
+}
+
+fn any_event() -> impl Strategy<Value = Event> {
+    prop_oneof![
+        1 => Just(small_plan()),
+        20 => (9_990i64..10_010).prop_map(reading),
+        3 => (1u32..60).prop_map(|seq| Event::TakenBack(Seq(seq))),
+        2 => Just(Event::Seen),
+        1 => any::<u32>().prop_map(|boot| Event::Boot { boot }),
+        1 => (1u16..9).prop_map(|times| Event::Refused { reason: Refusal::LineTooLong, times }),
+    ]
+}
+
+proptest! {
+    #[test]
+    fn a_state_that_was_stored_goes_on_as_one_that_was_not(
+        events in proptest::collection::vec(any_event(), 0..60),
+        at in any::<prop::sample::Index>(),
+    ) {
+        let whole = replay(&events);
+        let cut = if events.is_empty() { 0 } else { at.index(events.len()) };
+        let mut bytes = [0; crate::journal::STATE_MAX];
+        let stored = postcard::to_slice(&replay(&events[..cut]), &mut bytes).unwrap();
+        let mut station: Station = postcard::from_bytes(stored).unwrap();
+        for (i, event) in events.iter().enumerate().skip(cut) {
+            station.apply(Seq(i as u32 + 1), event);
+        }
+        prop_assert_eq!(station, whole);
+    }
+
+    #[test]
+    fn records_that_come_again_change_nothing(
+        events in proptest::collection::vec(any_event(), 1..60),
+        again in any::<prop::sample::Index>(),
+    ) {
+        let mut station = replay(&events);
+        let whole = station.clone();
+        let from = again.index(events.len());
+        for (i, event) in events.iter().enumerate().skip(from) {
+            station.apply(Seq(i as u32 + 1), event);
+        }
+        prop_assert_eq!(station, whole);
+    }
+
+    #[test]
+    fn the_study_s_sums_are_those_of_the_readings_that_count(
+        events in proptest::collection::vec(any_event(), 0..60),
+    ) {
+        let mut station = Station::default();
+        let mut counted: Vec<(Seq, Counts)> = Vec::new();
+        for (i, event) in events.iter().enumerate() {
+            let seq = Seq(i as u32 + 1);
+            let gathering = station.study().is_some_and(|s| s.standing() == Standing::Gathering);
+            match event {
+                Event::Plan(_) => counted.clear(),
+                Event::Reading(c) if gathering => counted.push((seq, *c)),
+                Event::TakenBack(s) if station.last_reading() == Some(*s) => counted.retain(|(q, _)| q != s),
+                _ => {}
+            }
+            station.apply(seq, event);
+        }
+        let mut sums = Moments::default();
+        for (_, counts) in &counted {
+            sums.add(*counts).unwrap();
+        }
+        prop_assert_eq!(station.study().map(|s| *s.moments()).unwrap_or_default(), sums);
+    }
+}
+
+#[test]
+fn the_largest_state_fits_a_checkpoint() {
+    let mut station = replay(&[Event::Plan(Plan::try_from(plans::longest()).unwrap())]);
+    let study = station.study.as_mut().unwrap();
+    for counts in [1_000_000_000_000, -1_000_000_000_000] {
+        for _ in 0..500_000 {
+            study.moments.add(Counts::new(counts).unwrap()).unwrap();
+        }
+    }
+    study.surplus = u32::MAX;
+    study.taken_back = u32::MAX;
+    study.latest =
+        Some(Latest { seq: Seq(u32::MAX), counts: Counts::new(-1_000_000_000_000).unwrap(), surplus: true });
+    study.held = Some(Held::GaugeStuck);
+    (station.boots, station.refused) = (u32::MAX, u32::MAX);
+    let mut bytes = [0; crate::journal::STATE_MAX];
+    assert!(postcard::to_slice(&station, &mut bytes).is_ok());
+}
