@@ -209,7 +209,7 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
     /// What the lamps show at `now`.
     #[must_use]
     pub fn lamps(&self, now: Millis) -> Lamps {
-        if self.blinking.is_some_and(|since| now.since(since) < lamps::BLINK_MS) {
+        if self.blinks(now) {
             return lamps::blink(now);
         }
         let standing = self.station.study().map(|study| study.standing());
@@ -220,7 +220,15 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         }
     }
 
-    fn call(&self, now: Millis) -> Option<Call> {
+    /// Whether the lamps show which station this is, since the host asked.
+    #[must_use]
+    pub fn blinks(&self, now: Millis) -> bool {
+        self.blinking.is_some_and(|since| now.since(since) < lamps::BLINK_MS)
+    }
+
+    /// Why the attention lamp flashes at `now`, if it does.
+    #[must_use]
+    pub fn call(&self, now: Millis) -> Option<Call> {
         let study = self.station.study();
         if matches!(self.health, JournalHealth::Full | JournalHealth::Faulty)
             || study.is_some_and(|study| study.held().is_some())
