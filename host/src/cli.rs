@@ -191,8 +191,16 @@ pub enum Station {
 /// `donelight virtual …`
 #[derive(Debug, Args)]
 #[command(after_help = "\
+The first line is the port; any `station` command can use it. Then each event is a line, until Ctrl-C.
+Buttons, each a line on standard input: take back, seen
+
+The operator waits for a plan, and while the station calls for someone to look; he stops when the study is settled
+or spent. A simulated piece depends on the seed and its place in the study only: a station that was stopped goes on
+where it was. A file of lines starts at its beginning each time.
+
 Examples:
   donelight virtual --store bench --process normal:2.000,0.012 --seed 7
+  donelight virtual --store bench --process normal:2.000,0.012 --stuck-from 40
   donelight virtual --store bench --feed lines.txt --rate 20")]
 pub struct Virtual {
     /// The folder of its journal; made if need be
@@ -201,24 +209,27 @@ pub struct Virtual {
     /// A simulated process: normal:MEAN,SD in the plan's unit
     #[arg(long, value_name = "normal:MEAN,SD", value_parser = normal_process, conflicts_with = "feed", allow_hyphen_values = true)]
     pub process: Option<NormalProcess>,
-    /// A file of gauge lines
+    /// A file of gauge lines, sent as they are; then the gauge is silent
     #[arg(long, value_name = "FILE")]
     pub feed: Option<PathBuf>,
     /// The start of the simulation's random numbers
     #[arg(long, value_name = "N", default_value_t = 1)]
     pub seed: u64,
-    /// Readings a second
-    #[arg(long, value_name = "PER_SECOND", value_parser = rate, default_value = "10")]
-    pub rate: f64,
+    /// Readings a second [default: 10 from a process; from a file as fast as the station takes them]
+    #[arg(long, value_name = "PER_SECOND", value_parser = rate)]
+    pub rate: Option<f64>,
     /// The process's mean moves by so much from one reading to the next
     #[arg(long, value_name = "STEP", value_parser = finite, requires = "process", allow_hyphen_values = true)]
     pub drift: Option<f64>,
-    /// Every so many readings, one is an outlier
+    /// Every so many readings, one is an outlier, 8 standard deviations off to either side
     #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(1..), requires = "process")]
     pub outlier_every: Option<u32>,
-    /// From this reading on, the gauge repeats itself
+    /// From this reading of the study on, the gauge repeats itself
     #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(1..), requires = "process")]
     pub stuck_from: Option<u32>,
+    /// Measure on when the study is settled or spent: surplus, outside the study
+    #[arg(long)]
+    pub keep_measuring: bool,
 }
 
 /// `donelight assess …`
