@@ -3,6 +3,7 @@
 mod assess;
 mod plan;
 mod size;
+mod virtual_station;
 
 use crate::cli::Command;
 use crate::output::{Answer, Console, Exit, Failure};
@@ -11,12 +12,12 @@ use crate::output::{Answer, Console, Exit, Failure};
 ///
 /// # Errors
 /// What the command could not do, with what to do about it.
-pub fn run(command: Command, _console: &mut Console) -> Result<Answer, Failure> {
+pub fn run(command: Command, console: &mut Console) -> Result<Answer, Failure> {
     match command {
         Command::Size(size) => size::run(&size),
         Command::Plan(plan) => plan::run(&plan),
         Command::Station(_) => Err(not_built_yet("station")),
-        Command::Virtual(_) => Err(not_built_yet("virtual")),
+        Command::Virtual(options) => virtual_station::run(&options, console),
         Command::Assess(options) => assess::run(&options),
         Command::Report(_) => Err(not_built_yet("report")),
         Command::Demo(_) => Err(not_built_yet("demo")),

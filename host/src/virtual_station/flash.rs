@@ -119,10 +119,10 @@ pub type RamFlash = Flash<Vec<u8>>;
 pub type FileFlash = Flash<FlashFile>;
 
 impl RamFlash {
-    /// An erased flash of [`FLASH_SIZE`] bytes.
+    /// An erased flash of so many sectors of 4096 bytes; a journal needs four at least.
     #[must_use]
-    pub fn blank() -> Self {
-        Self { medium: vec![ERASED; FLASH_SIZE], fault: None }
+    pub fn blank(sectors: usize) -> Self {
+        Self { medium: vec![ERASED; sectors * SECTOR], fault: None }
     }
 }
 
@@ -207,7 +207,7 @@ mod tests {
 
     #[test]
     fn programming_only_clears_bits_and_erasing_sets_a_whole_sector() {
-        let mut flash = RamFlash::blank();
+        let mut flash = RamFlash::blank(256);
         flash.write(4095, &[0b1010_1010, 0x0f]).unwrap();
         flash.write(4095, &[0b1100_1100]).unwrap();
         let mut bytes = [0; 3];
@@ -220,7 +220,7 @@ mod tests {
 
     #[test]
     fn a_place_beyond_the_flash_is_an_error_and_is_kept_as_the_fault() {
-        let mut flash = RamFlash::blank();
+        let mut flash = RamFlash::blank(256);
         let end = u32::try_from(FLASH_SIZE).unwrap();
         let beyond = FlashError::Misused(NorFlashErrorKind::OutOfBounds);
         assert_eq!(flash.write(end - 1, &[0, 0]), Err(beyond));
