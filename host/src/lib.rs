@@ -8,7 +8,9 @@
 pub mod cli;
 pub mod commands;
 pub mod files;
+pub mod ledger;
 pub mod level;
+pub mod link;
 pub mod output;
 pub mod plan_file;
 pub mod readings;

@@ -1,0 +1,172 @@
+//! From a station's records to its studies, through the station's own state machine.
+
+use donelight_core::record::{Event, Millis, Record, Sealed, Seq};
+use donelight_core::station::{Held, Progress, Station};
+use donelight_core::wire::StationId;
+
+use super::studies::{Fate, Happening, Incident, Kept, Reading, StudyKey};
+use super::{Gap, UnixMillis, WallTime};
+
+/// Takes a station's records in order.
+pub(super) struct Replay {
+    id: StationId,
+    firmware: String,
+    station: Station,
+    time: WallTime,
+    next: Seq,
+    studies: Vec<Kept>,
+    /// The stations' own times of what is in `studies`, in its order; wall times are known only at the end.
+    times: Vec<Times>,
+}
+
+/// The times since boot of a study's plan, readings and incidents.
+#[derive(Default)]
+struct Times {
+    began: Millis,
+    readings: Vec<Millis>,
+    incidents: Vec<Option<Millis>>,
+}
+
+impl Replay {
+    pub(super) fn new(id: StationId, firmware: &str) -> Self {
+        Self {
+            id,
+            firmware: firmware.to_owned(),
+            station: Station::default(),
+            time: WallTime::default(),
+            next: Seq::FIRST,
+            studies: Vec::new(),
+            times: Vec::new(),
+        }
+    }
+
+    /// The next record; those between the last one and this one are missing.
+    pub(super) fn take(&mut self, received: UnixMillis, seq: Seq, sealed: Sealed<'_>) {
+        self.missing_until(seq);
+        self.next = seq.next();
+        match sealed.record() {
+            Ok(record) => self.apply(received, record),
+            Err(_) => self.note(seq, None, Happening::UnknownKind),
+        }
+        if let Some((kept, study)) = self.studies.last_mut().zip(self.station.study()) {
+            kept.study = study.clone();
+            kept.last_received = received;
+            kept.through = seq;
+        }
+    }
+
+    /// The records from the last one on to this one are missing. A boot may be among them.
+    pub(super) fn missing_until(&mut self, seq: Seq) {
+        if seq > self.next {
+            let gap = Gap { first: self.next, last: Seq(seq.0 - 1) };
+            self.note(gap.first, None, Happening::Missing(gap));
+            self.time.restart(seq);
+            self.next = seq;
+        }
+    }
+
+    fn apply(&mut self, received: UnixMillis, record: Record) {
+        let Record { seq, at, event } = record;
+        let before = self.progress();
+        let held_before = self.held();
+        self.station.apply(seq, &event);
+        match event {
+            Event::Boot { boot } => {
+                self.time.restart(seq);
+                self.note(seq, Some(at), Happening::Restarted { boot });
+            }
+            Event::Plan(_) => self.begin(received, seq, at),
+            Event::Clock { unix_ms } => self.time.clock(seq, at, unix_ms),
+            Event::Reading(counts) => {
+                let fate = match (before, self.progress()) {
+                    (Some(before), Some(now)) if now.surplus > before.surplus => Fate::Surplus,
+                    _ => Fate::Counted,
+                };
+                if let Some((kept, times)) = self.latest() {
+                    kept.readings.push(Reading { seq, time: None, counts, fate });
+                    times.readings.push(at);
+                }
+            }
+            Event::Refused { reason, times } => {
+                self.note(seq, Some(at), Happening::Refused { reason, times });
+            }
+            Event::TakenBack(reading) => self.take_back(seq, at, reading, before),
+            Event::Seen => self.note(seq, Some(at), Happening::Seen),
+            _ => self.note(seq, Some(at), Happening::UnknownKind),
+        }
+        if let (None, Some(held)) = (held_before, self.held()) {
+            self.note(seq, Some(at), Happening::Held(held));
+        }
+    }
+
+    fn begin(&mut self, received: UnixMillis, seq: Seq, at: Millis) {
+        let Some(study) = self.station.study() else { return };
+        self.studies.push(Kept {
+            key: StudyKey { station: self.id, began: seq },
+            firmware: self.firmware.clone(),
+            study: study.clone(),
+            readings: Vec::new(),
+            incidents: Vec::new(),
+            began: None,
+            began_received: received,
+            last_received: received,
+            through: seq,
+        });
+        self.times.push(Times { began: at, ..Times::default() });
+    }
+
+    fn take_back(&mut self, seq: Seq, at: Millis, reading: Seq, before: Option<Progress>) {
+        let count = |progress: Option<Progress>| progress.map_or(0, |progress| progress.taken_back);
+        if count(self.progress()) == count(before) {
+            return;
+        }
+        if let Some((kept, _)) = self.latest()
+            && let Some(taken) = kept.readings.iter_mut().rev().find(|kept| kept.seq == reading)
+        {
+            taken.fate = Fate::TakenBack;
+        }
+        self.note(seq, Some(at), Happening::TakenBack(reading));
+    }
+
+    fn note(&mut self, seq: Seq, at: Option<Millis>, what: Happening) {
+        if let Some((kept, times)) = self.latest() {
+            kept.incidents.push(Incident { seq, time: None, what });
+            times.incidents.push(at);
+        }
+    }
+
+    fn latest(&mut self) -> Option<(&mut Kept, &mut Times)> {
+        self.studies.last_mut().zip(self.times.last_mut())
+    }
+
+    fn progress(&self) -> Option<Progress> {
+        self.station.study().map(|study| study.progress())
+    }
+
+    fn held(&self) -> Option<Held> {
+        self.station.study().and_then(|study| study.held())
+    }
+
+    /// Gives the studies with their wall times; `conflicts` are numbers with a second, differing record.
+    pub(super) fn finish(mut self, conflicts: &[u32]) -> Vec<Kept> {
+        for (kept, times) in self.studies.iter_mut().zip(&self.times) {
+            let of = |seq, at: Millis| self.time.of(seq, at);
+            kept.began = of(kept.key.began, times.began);
+            for (reading, at) in kept.readings.iter_mut().zip(&times.readings) {
+                reading.time = of(reading.seq, *at);
+            }
+            for (incident, at) in kept.incidents.iter_mut().zip(&times.incidents) {
+                incident.time = at.and_then(|at| of(incident.seq, at));
+            }
+            let here = conflicts
+                .iter()
+                .map(|seq| Seq(*seq))
+                .filter(|seq| (kept.key.began..=kept.through).contains(seq));
+            let here: Vec<Incident> =
+                here.map(|seq| Incident { seq, time: None, what: Happening::Conflict }).collect();
+            kept.incidents.extend(here);
+            kept.incidents.sort_by_key(|incident| incident.seq);
+        }
+        self.studies
+    }
+}

@@ -1,0 +1,65 @@
+//! Pulling over a good line.
+
+use donelight::ledger::Fate;
+use donelight::link::Session;
+use donelight::link::pull::pull;
+use donelight_core::stopping::Standing;
+
+use crate::support::*;
+
+#[test]
+fn the_ledger_holds_the_journal_word_for_word() {
+    let (_folder, path) = folder();
+    let mut station = station_with_readings(200);
+    let pulled = pull_all(&mut station, &mut open(&path));
+    let journal = journal(&mut station);
+    assert_eq!(rows(&path), journal);
+    assert_eq!(pulled.new as usize, journal.len());
+    assert!(pulled.gaps.is_empty());
+    let (mut session, _) = Session::open(&mut station).unwrap();
+    assert_eq!(session.status().unwrap().unconfirmed, 0, "all is confirmed");
+}
+
+#[test]
+fn pulling_twice_changes_nothing() {
+    let (_folder, path) = folder();
+    let mut station = station_with_readings(60);
+    pull_all(&mut station, &mut open(&path));
+    let before = rows(&path);
+    let again = pull_all(&mut station, &mut open(&path));
+    assert_eq!(again.new, 0);
+    assert_eq!(rows(&path), before);
+}
+
+#[test]
+fn the_study_in_the_ledger_is_the_study_on_the_station() {
+    let (_folder, path) = folder();
+    let mut station = station_with_readings(40);
+    station
+        .recorder()
+        .press(donelight_core::record::Millis(14_000), donelight_core::recorder::Button::TakeBack);
+    pull_all(&mut station, &mut open(&path));
+    let kept = open(&path).study(None).unwrap();
+    assert_eq!(Some(&kept.study), station.recorder().station().study());
+    assert_eq!(kept.study.standing(), Standing::Settled);
+    let fates = |fate| kept.readings.iter().filter(|reading| reading.fate == fate).count();
+    let progress = kept.study.progress();
+    assert_eq!(kept.readings.len(), 40);
+    assert_eq!(fates(Fate::Counted), progress.n.get() as usize);
+    assert_eq!(fates(Fate::Surplus), progress.surplus as usize);
+    assert_eq!(fates(Fate::TakenBack), 1);
+}
+
+#[test]
+fn progress_reaches_its_end() {
+    let (_folder, path) = folder();
+    let mut station = station_with_readings(300);
+    let mut ledger = open(&path);
+    let (mut session, hello) = Session::open(&mut station).unwrap();
+    let mut told = Vec::new();
+    pull(&mut session, &mut ledger, &mut |progress| told.push(progress)).unwrap();
+    assert!(told.len() > 3, "several windows: {told:?}");
+    assert!(told.windows(2).all(|pair| pair[0].total != pair[1].total || pair[0].done < pair[1].done));
+    let whole = told.iter().rfind(|progress| progress.total == hello.next.0 - 1).unwrap();
+    assert_eq!(whole.done, whole.total);
+}
