@@ -46,7 +46,7 @@ pub(crate) fn plan(name: &str) -> Plan {
 
 /// A fresh station.
 pub(crate) fn station() -> MemoryLink {
-    MemoryLink::start(RamFlash::blank(), STATION).unwrap()
+    MemoryLink::start(RamFlash::blank(32), STATION).unwrap()
 }
 
 /// A station with a study of so many readings, loaded over the link.
