@@ -1,1 +1,7 @@
 //! What the end-to-end tests share.
+#![forbid(unsafe_code)]
+
+pub mod command;
+pub mod nist;
+#[cfg(unix)]
+pub mod virtual_bench;
