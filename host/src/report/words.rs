@@ -161,7 +161,7 @@ pub fn limit(value: Decimal, resolution: Option<Resolution>) -> String {
 pub const fn coverage(kind: Kind) -> &'static str {
     match kind {
         Kind::TwoSided => {
-            "The intervals are Bissell's normal approximation (1990). Of Cpk, a nominal two-sided 95 % covers 94.8 % to \
+            "The intervals are Bissell's normal approximation (1990). Of Cpk, a nominal two-sided 95 % covers 94.7 % to \
              96.1 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
         }
         Kind::Lower => {
@@ -169,7 +169,7 @@ pub const fn coverage(kind: Kind) -> &'static str {
              98.7 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
         }
         Kind::Upper => {
-            "The bounds are Bissell's normal approximation (1990). Of Cpk, a nominal upper 95 % bound covers 91.1 % to \
+            "The bounds are Bissell's normal approximation (1990). Of Cpk, a nominal upper 95 % bound covers 91.2 % to \
              95.7 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
         }
     }
@@ -253,6 +253,22 @@ fn were(n: u32) -> String {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    /// What the sentences claim, against exact integration (own computation; the file says how).
+    #[test]
+    fn the_coverage_that_is_told_is_the_coverage_that_was_computed() {
+        let file = concat!(env!("CARGO_MANIFEST_DIR"), "/../tests/reference/coverage_bissell_95.csv");
+        let table = std::fs::read_to_string(file).unwrap();
+        for kind in [Kind::TwoSided, Kind::Lower, Kind::Upper] {
+            let rows = table.lines().filter_map(|line| line.split_once(&format!(",{},", kind.name())));
+            let covered: Vec<f64> = rows.map(|(_, coverage)| coverage.parse().unwrap()).collect();
+            assert!(covered.len() > 200);
+            let least = covered.iter().copied().fold(1.0, f64::min);
+            let most = covered.iter().copied().fold(0.0, f64::max);
+            let claim = format!("covers {:.1} % to {:.1} % in truth", 100.0 * least, 100.0 * most);
+            assert!(coverage(kind).contains(&claim), "{claim} is not in {}", coverage(kind));
+        }
+    }
 
     #[test]
     fn a_limit_has_the_decimals_of_the_gauge_and_never_fewer_than_its_own() {
