@@ -33,6 +33,8 @@ pub struct LineAssembler {
     listening_since: Millis,
     heard: bool,
     last_byte: Millis,
+    /// Nobody could listen for a while: the next look at the clock counts as hearing a byte.
+    deaf: bool,
 }
 
 impl LineAssembler {
@@ -46,6 +48,7 @@ impl LineAssembler {
             listening_since: now,
             heard: false,
             last_byte: now,
+            deaf: false,
         }
     }
 
@@ -97,6 +100,11 @@ impl LineAssembler {
         self.last_byte = now;
     }
 
+    /// The caller could not take bytes for a while (flash was erased) and they wait for it: that was no silence.
+    pub fn was_deaf(&mut self) {
+        self.deaf = true;
+    }
+
     fn skip(&mut self) {
         self.line.clear();
         self.mode = Mode::Skipping;
@@ -111,6 +119,9 @@ impl LineAssembler {
     }
 
     fn silence(&mut self, now: Millis) -> Option<Refusal> {
+        if core::mem::take(&mut self.deaf) {
+            self.last_byte = now;
+        }
         if now.since(self.last_byte) < SILENCE_MS {
             return None;
         }
@@ -199,6 +210,20 @@ mod tests {
         assert_eq!(assembler.tick(Millis(300)), None);
         assert_eq!(assembler.tick(Millis(1000)), Some(Refusal::LineUnfinished));
         assert_eq!(assembler.tick(Millis(2000)), None);
+    }
+
+    #[test]
+    fn a_line_that_waited_while_flash_was_erased_is_whole() {
+        let mut assembler = settled();
+        feed(&mut assembler, 100, b"12.");
+        assembler.was_deaf();
+        assert_eq!(feed(&mut assembler, 1_000, b"34\n"), [Ok("12.34".into())]);
+        feed(&mut assembler, 1_100, b"5.");
+        assert_eq!(
+            assembler.tick(Millis(2_000)),
+            Some(Refusal::LineUnfinished),
+            "but real silence still counts"
+        );
     }
 
     #[test]

@@ -281,7 +281,11 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
     fn prepare(&mut self) -> Result<Prepared, Refusal> {
         let station = &self.station;
         let state = |space: &mut [u8]| postcard::to_slice(station, space).ok().map(|used| used.len());
-        self.journal.prepare(state).map_err(|_| {
+        let prepared = self.journal.prepare(state);
+        if matches!(prepared, Ok(Prepared::Erased)) {
+            self.gauge.was_deaf();
+        }
+        prepared.map_err(|_| {
             self.health = JournalHealth::Faulty;
             Refusal::FlashFault
         })
