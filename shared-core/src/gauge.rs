@@ -119,7 +119,9 @@ impl LineAssembler {
     }
 
     fn silence(&mut self, now: Millis) -> Option<Refusal> {
-        if core::mem::take(&mut self.deaf) {
+        // Bytes taken together with those before the pause still carry the old time.
+        if self.deaf && now > self.last_byte {
+            self.deaf = false;
             self.last_byte = now;
         }
         if now.since(self.last_byte) < SILENCE_MS {
@@ -215,8 +217,10 @@ mod tests {
     #[test]
     fn a_line_that_waited_while_flash_was_erased_is_whole() {
         let mut assembler = settled();
-        feed(&mut assembler, 100, b"12.");
+        feed(&mut assembler, 100, b"1");
         assembler.was_deaf();
+        assert_eq!(assembler.push(Millis(100), b'2'), None);
+        assert_eq!(assembler.push(Millis(100), b'.'), None);
         assert_eq!(feed(&mut assembler, 1_000, b"34\n"), [Ok("12.34".into())]);
         feed(&mut assembler, 1_100, b"5.");
         assert_eq!(
