@@ -16,8 +16,6 @@ use donelight_core::plan::Plan;
 use donelight_core::quantity::{Confidence, Count, Millionths};
 use donelight_core::stopping::Standing;
 
-pub use charts::sequence::Standing as Belonging;
-
 /// What is reported.
 #[derive(Clone, Debug)]
 pub struct Study {
@@ -75,6 +73,17 @@ pub enum Data {
         /// Their standard deviation, in the unit.
         sd: f64,
     },
+}
+
+/// Whether a reading is part of the study.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Belonging {
+    /// It counts.
+    Counted,
+    /// It came after the study's end.
+    Surplus,
+    /// The operator took it back.
+    Voided,
 }
 
 /// One reading.

@@ -169,7 +169,7 @@ fn in_order(study: &Study, analysis: &Analysis) -> Markup {
     }
     let points: Vec<Point> = readings
         .iter()
-        .map(|reading| Point { value: value(*resolution, reading.counts), standing: reading.belonging })
+        .map(|reading| Point { value: value(*resolution, reading.counts), belonging: reading.belonging })
         .collect();
     let description = format!(
         "{} readings in the order they came in, with the limits. {}",

@@ -228,3 +228,16 @@ fn the_page_is_written_with_what_was_assessed() {
     assert!(page.contains(&fingerprint));
     assert_eq!(fs::read_dir(folder.path()).unwrap().count(), 2, "nothing else is left behind");
 }
+
+#[cfg(target_os = "linux")]
+#[test]
+fn a_full_disk_is_told_and_nothing_is_said_to_be_written() {
+    let line = "assess --summary n=100,mean=12,sd=0.01 --lsl 11.95 --report /dev/full --json";
+    let answer = donelight(line).ends_with(1);
+    assert_eq!(answer.json()["error"]["kind"], "file-unwritable");
+    assert!(
+        answer.err.contains("cannot write /dev/full") && answer.err.contains("Make room"),
+        "{}",
+        answer.err
+    );
+}

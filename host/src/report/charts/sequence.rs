@@ -2,6 +2,8 @@
 
 use maud::{Markup, html};
 
+use crate::report::Belonging;
+
 use super::{Caption, Frame, Px, WIDTH, axis, axis::Scale, line, mark, mark::Mark, path, picture};
 
 const HEIGHT: f64 = 380.0;
@@ -9,18 +11,7 @@ const HEIGHT: f64 = 380.0;
 pub const DRAWN_APART_MAX: usize = 1500;
 const COLUMNS: usize = 600;
 
-/// Whether a reading belongs to the study.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Standing {
-    /// In the study.
-    Counted,
-    /// Came after the study's end.
-    Surplus,
-    /// Taken back by the operator.
-    Voided,
-}
-
-impl Standing {
+impl Belonging {
     const ALL: [Self; 3] = [Self::Counted, Self::Surplus, Self::Voided];
 
     const fn class(self) -> &'static str {
@@ -38,7 +29,7 @@ pub struct Point {
     /// In the unit.
     pub value: f64,
     /// Whether it counts.
-    pub standing: Standing,
+    pub belonging: Belonging,
 }
 
 /// Draws the readings as number 1, 2, 3 …; `name` is the upright axis's, with the unit.
@@ -88,28 +79,28 @@ fn numbers(x: &Scale, fitting: u32) -> Vec<axis::Tick> {
 
 fn apart(points: &[Point], x: &Scale, y: &Scale) -> Markup {
     let place = |(i, point): (usize, &Point)| (x.at((i + 1) as f64), y.at(point.value));
-    let counted = points.iter().enumerate().filter(|(_, point)| point.standing == Standing::Counted);
+    let counted = points.iter().enumerate().filter(|(_, point)| point.belonging == Belonging::Counted);
     let radius = if points.len() > 400 { 1.8 } else { 2.8 };
     html! {
         path class="thread" d=(path(counted.map(place))) {}
         @for (i, point) in points.iter().enumerate() {
             @let (cx, cy) = place((i, point));
-            (symbol(point.standing, cx, cy, radius))
+            (symbol(point.belonging, cx, cy, radius))
         }
     }
 }
 
 /// A dot, a diamond or a cross: told apart without colour.
-fn symbol(standing: Standing, x: f64, y: f64, r: f64) -> Markup {
-    let class = standing.class();
-    match standing {
-        Standing::Counted => html! { circle class=(class) cx=(Px(x)) cy=(Px(y)) r=(Px(r)) {} },
-        Standing::Surplus => {
+fn symbol(belonging: Belonging, x: f64, y: f64, r: f64) -> Markup {
+    let class = belonging.class();
+    match belonging {
+        Belonging::Counted => html! { circle class=(class) cx=(Px(x)) cy=(Px(y)) r=(Px(r)) {} },
+        Belonging::Surplus => {
             let r = r + 1.0;
             let corners = path([(x, y - r), (x + r, y), (x, y + r), (x - r, y)]);
             html! { path class=(class) d={ (corners) "Z" } {} }
         }
-        Standing::Voided => {
+        Belonging::Voided => {
             let r = r + 1.0;
             html! {
                 path class=(class)
@@ -124,12 +115,12 @@ fn together(points: &[Point], x: &Scale, y: &Scale) -> Markup {
     html! {
         @for (column, chunk) in points.chunks(size).enumerate() {
             @let at = x.at((column * size + 1) as f64 + (chunk.len() - 1) as f64 / 2.0);
-            @for standing in Standing::ALL {
-                @let values = chunk.iter().filter(|point| point.standing == standing).map(|point| point.value);
+            @for belonging in Belonging::ALL {
+                @let values = chunk.iter().filter(|point| point.belonging == belonging).map(|point| point.value);
                 @let (low, high) = values.fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(v), h.max(v)));
                 @if low <= high {
                     // Half a unit more at both ends, so that a single value is a dot and not nothing.
-                    (line(&format!("column {}", standing.class()), (at, y.at(low) + 0.5), (at, y.at(high) - 0.5)))
+                    (line(&format!("column {}", belonging.class()), (at, y.at(low) + 0.5), (at, y.at(high) - 0.5)))
                 }
             }
         }
