@@ -156,10 +156,16 @@ pub enum Station {
         port: Port,
     },
     /// Load a plan
-    #[command(after_help = "Example:\n  donelight station load plan.toml --port /dev/ttyACM0")]
+    #[command(after_help = "\
+Examples:
+  donelight station load plan.toml
+  donelight station load plan.toml --replace --port /dev/ttyACM0")]
     Load {
         /// The plan
         plan: PathBuf,
+        /// Give up a study that is under way; its readings stay in the log
+        #[arg(long)]
+        replace: bool,
         /// Which one
         #[command(flatten)]
         port: Port,
