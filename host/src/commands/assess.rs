@@ -147,7 +147,8 @@ fn full_path(path: &Path) -> String {
     fs::canonicalize(path).as_deref().unwrap_or(path).display().to_string()
 }
 
-fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report: Option<&Path>) -> String {
+/// The verdict and the numbers in words.
+pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report: Option<&Path>) -> String {
     let mut lines = vec![verdict.headline.clone()];
     lines.extend(verdict.more.iter().cloned());
     lines.push(String::new());

@@ -2,7 +2,9 @@
 
 mod assess;
 mod plan;
+mod report;
 mod size;
+mod station;
 mod virtual_station;
 
 use crate::cli::Command;
@@ -16,10 +18,10 @@ pub fn run(command: Command, console: &mut Console) -> Result<Answer, Failure> {
     match command {
         Command::Size(size) => size::run(&size),
         Command::Plan(plan) => plan::run(&plan),
-        Command::Station(_) => Err(not_built_yet("station")),
+        Command::Station(station) => station::run(&station, console),
         Command::Virtual(options) => virtual_station::run(&options, console),
         Command::Assess(options) => assess::run(&options),
-        Command::Report(_) => Err(not_built_yet("report")),
+        Command::Report(options) => report::run(&options),
         Command::Demo(_) => Err(not_built_yet("demo")),
     }
 }

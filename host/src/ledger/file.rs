@@ -108,8 +108,10 @@ pub(super) fn open_to_read(path: &Path) -> Result<Connection, LedgerError> {
         head => refuse_unknown(path, head)?,
     }
     let failed = |error: rusqlite::Error| LedgerError::sqlite(path, &error);
-    let connection = Connection::open_with_flags(path, OpenFlags::SQLITE_OPEN_READ_ONLY).map_err(failed)?;
+    // SQLite itself falls back to reading where it may not write; where it may, it takes its index file away at the end.
+    let connection = Connection::open_with_flags(path, OpenFlags::SQLITE_OPEN_READ_WRITE).map_err(failed)?;
     connection.busy_timeout(BUSY).map_err(failed)?;
+    connection.pragma_update(None, "query_only", "ON").map_err(failed)?;
     match version(&connection) {
         Ok(version) if version > VERSION => Err(newer(path, version)),
         Ok(_) => Ok(connection),

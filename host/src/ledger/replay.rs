@@ -4,6 +4,8 @@ use donelight_core::record::{Event, Millis, Record, Sealed, Seq};
 use donelight_core::station::{Held, Progress, Station};
 use donelight_core::wire::StationId;
 
+use sha2::{Digest, Sha256};
+
 use super::studies::{Fate, Happening, Incident, Kept, Reading, StudyKey};
 use super::{Gap, UnixMillis, WallTime};
 
@@ -17,6 +19,8 @@ pub(super) struct Replay {
     studies: Vec<Kept>,
     /// The stations' own times of what is in `studies`, in its order; wall times are known only at the end.
     times: Vec<Times>,
+    /// Of the latest study's records.
+    fingerprint: Sha256,
 }
 
 /// The times since boot of a study's plan, readings and incidents.
@@ -37,6 +41,7 @@ impl Replay {
             next: Seq::FIRST,
             studies: Vec::new(),
             times: Vec::new(),
+            fingerprint: Sha256::new(),
         }
     }
 
@@ -52,6 +57,7 @@ impl Replay {
             kept.study = study.clone();
             kept.last_received = received;
             kept.through = seq;
+            self.fingerprint.update(sealed.bytes());
         }
     }
 
@@ -100,6 +106,7 @@ impl Replay {
     }
 
     fn begin(&mut self, received: UnixMillis, seq: Seq, at: Millis) {
+        self.close();
         let Some(study) = self.station.study() else { return };
         self.studies.push(Kept {
             key: StudyKey { station: self.id, began: seq },
@@ -111,8 +118,17 @@ impl Replay {
             began_received: received,
             last_received: received,
             through: seq,
+            fingerprint: String::new(),
         });
         self.times.push(Times { began: at, ..Times::default() });
+    }
+
+    /// What follows belongs to the next study.
+    fn close(&mut self) {
+        let sum = std::mem::take(&mut self.fingerprint).finalize();
+        if let Some(kept) = self.studies.last_mut() {
+            kept.fingerprint = sum.iter().map(|byte| format!("{byte:02x}")).collect();
+        }
     }
 
     fn take_back(&mut self, seq: Seq, at: Millis, reading: Seq, before: Option<Progress>) {
@@ -149,6 +165,7 @@ impl Replay {
 
     /// Gives the studies with their wall times; `conflicts` are numbers with a second, differing record.
     pub(super) fn finish(mut self, conflicts: &[u32]) -> Vec<Kept> {
+        self.close();
         for (kept, times) in self.studies.iter_mut().zip(&self.times) {
             let of = |seq, at: Millis| self.time.of(seq, at);
             kept.began = of(kept.key.began, times.began);

@@ -112,6 +112,8 @@ pub struct Kept {
     pub last_received: UnixMillis,
     /// The last record before the next study, or the last one kept.
     pub through: Seq,
+    /// SHA-256 of all its records' bytes one behind the other, from the plan's on, in hexadecimal.
+    pub fingerprint: String,
 }
 
 /// Why there is no one study to give.
