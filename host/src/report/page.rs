@@ -16,7 +16,7 @@ use super::charts::{
     sequence::Point,
 };
 use super::words::{self, Verdict};
-use super::{Belonging, Data, Fact, Study};
+use super::{Belonging, Data, Fact, Study, Weight};
 use crate::plan_file::describe;
 
 /// The page; `analysis` must be this study's.
@@ -315,7 +315,10 @@ fn record(study: &Study, analysis: &Analysis) -> Markup {
                 div class="scroll" { table {
                     thead { tr { th scope="col" { "Where" } th scope="col" { "What" } } }
                     tbody { @for incident in &study.incidents {
-                        tr { td { (incident.place) } td { (incident.what) } }
+                        tr { td { (incident.place) } td {
+                            @if incident.weight == Weight::Loss { strong { "Readings may be missing or wrong: " } }
+                            (incident.what)
+                        } }
                     } }
                 } }
             }
