@@ -2,6 +2,7 @@
 
 use std::path::Path;
 
+use donelight_core::interval::Kind;
 use donelight_core::record::{Refusal, Seq};
 use donelight_core::station::Held;
 
@@ -28,6 +29,9 @@ pub(super) fn run(options: &cli::Report) -> Result<Answer, Failure> {
         files::keep_apart(output, &[csv])?;
     }
     let kept = ledger.study(options.study.as_deref())?;
+    if options.require.is_some() && kept.study.plan().kind == Kind::Upper {
+        return Err(RequireWithUpper.into());
+    }
     let mut study = reported(&kept, ledger.path());
     study.question.required = options.require;
     let analysis = analysis::of(&study);
@@ -59,6 +63,25 @@ pub(super) fn run(options: &cli::Report) -> Result<Answer, Failure> {
         text.push_str(&format!("\nThe readings are in {}", csv.display()));
     }
     Ok(Answer { text, json, exit })
+}
+
+/// What is required of an index is a matter of its lower limit.
+#[derive(Debug, thiserror::Error)]
+#[error("--require needs a lower limit, and the study's plan asks for an upper bound only")]
+struct RequireWithUpper;
+
+impl Explain for RequireWithUpper {
+    fn kind(&self) -> &'static str {
+        "contradictory-options"
+    }
+
+    fn help(&self) -> String {
+        "Leave --require out.".to_owned()
+    }
+
+    fn exit(&self) -> Exit {
+        Exit::WrongUse
+    }
 }
 
 /// The CSV writer failed, which in memory it cannot.

@@ -179,45 +179,31 @@ pub const fn coverage(kind: Kind) -> &'static str {
 #[must_use]
 pub fn doubts(study: &Study, analysis: &Analysis) -> Vec<String> {
     let mut doubts = Vec::new();
+    if study.incidents.iter().any(|incident| incident.weight == Weight::Loss) {
+        doubts.push("Readings may be missing or wrong: see what did not go straight.".to_owned());
+    }
     // Common practice, no source.
     const FEW: u32 = 30;
     if analysis.n < FEW {
-        doubts.push(format!(
-            "Only {} are in; below {FEW} the approximation and the pictures say little.",
-            readings(analysis.n)
-        ));
+        let n = number_of(analysis.n, "reading is", "readings are");
+        doubts.push(format!("Only {n} in; below {FEW} the approximation and the pictures say little."));
     }
     let (below, above) = analysis.beyond;
     if below + above > 0 {
-        doubts.push(format!(
-            "{} beyond the limits: {below} below the lower, {above} above the upper.",
-            if below + above == 1 {
-                "1 reading lies".to_owned()
-            } else {
-                format!("{} readings lie", below + above)
-            }
-        ));
+        let n = number_of(below + above, "reading lies", "readings lie");
+        doubts.push(format!("{n} beyond the limits: {below} below the lower, {above} above the upper."));
     }
     if let (Data::Readings { resolution, .. }, Some(sd)) = (&study.data, analysis.sd) {
         doubts.extend(coarse(*resolution, sd));
     }
     if analysis.voided > 0 {
-        doubts.push(format!("{} taken back by the operator.", were(analysis.voided)));
+        let n = number_of(analysis.voided, "reading was", "readings were");
+        doubts.push(format!("{n} taken back by the operator."));
     }
-    if study.incidents.iter().any(|incident| incident.weight == Weight::Loss) {
-        doubts.push(
-            "Readings may be missing or wrong: records are missing or contradict each other.".to_owned(),
-        );
-    }
-    if !study.incidents.is_empty() {
-        doubts.push(format!(
-            "{} on the way; see the list below.",
-            if study.incidents.len() == 1 {
-                "1 incident".to_owned()
-            } else {
-                format!("{} incidents", study.incidents.len())
-            }
-        ));
+    match study.incidents.len() {
+        0 => {}
+        1 => doubts.push("1 incident on the way; see what did not go straight.".to_owned()),
+        n => doubts.push(format!("{n} incidents on the way; see what did not go straight.")),
     }
     doubts.push(match study.data {
         Data::Readings { .. } => {
@@ -242,12 +228,8 @@ fn coarse(resolution: Resolution, sd: f64) -> Option<String> {
     })
 }
 
-fn readings(n: u32) -> String {
-    if n == 1 { "1 reading".to_owned() } else { format!("{n} readings") }
-}
-
-fn were(n: u32) -> String {
-    if n == 1 { "1 reading was".to_owned() } else { format!("{n} readings were") }
+fn number_of(n: u32, one: &str, several: &str) -> String {
+    if n == 1 { format!("1 {one}") } else { format!("{n} {several}") }
 }
 
 #[cfg(test)]

@@ -4,4 +4,5 @@ mod assess;
 mod driver;
 mod output;
 mod plan;
+mod report;
 mod size;

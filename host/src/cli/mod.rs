@@ -1,17 +1,18 @@
 //! The command line: every command and option, with examples in `--help`.
 //!
-//! Values are read here, once, into types that carry their meaning; a value out of range is wrong use (exit code 2).
+//! A value out of range is wrong use (exit code 2).
+
+mod value;
 
 use std::path::PathBuf;
 
-use clap::builder::{PossibleValuesParser, TypedValueParser};
 use clap::{Args, Parser, Subcommand};
 use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::Kind;
-use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
+use donelight_core::quantity::{Confidence, Millionths, Precision};
 
-use crate::level;
+pub use value::{NormalProcess, Summary};
 
 /// Plan a capability study, load it to a station, pull its log, keep it and report it.
 #[derive(Debug, Parser)]
@@ -80,19 +81,19 @@ Examples:
 #[derive(Debug, Args)]
 pub struct SizePrecision {
     /// The index
-    #[arg(long, value_parser = index(), ignore_case = true, default_value = "cpk")]
+    #[arg(long, value_parser = value::index(), ignore_case = true, default_value = "cpk")]
     pub index: Index,
     /// The index assumed, such as 1.5
-    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value)]
     pub at: Millionths,
     /// How far the interval may reach from the estimate: 10% of it, or 0.15 of index
-    #[arg(long, value_name = "WIDTH", value_parser = precision)]
+    #[arg(long, value_name = "WIDTH", value_parser = value::precision)]
     pub within: Precision,
     /// The interval's confidence: 95% or 0.95
-    #[arg(long, value_name = "LEVEL", value_parser = confidence, default_value = "95%")]
+    #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%")]
     pub confidence: Confidence,
     /// Two limits, or only a lower or an upper one
-    #[arg(long, value_parser = kind(), ignore_case = true, default_value = "two-sided")]
+    #[arg(long, value_parser = value::kind(), ignore_case = true, default_value = "two-sided")]
     pub kind: Kind,
 }
 
@@ -100,19 +101,19 @@ pub struct SizePrecision {
 #[derive(Debug, Args)]
 pub struct SizePower {
     /// The index
-    #[arg(long, value_parser = index(), ignore_case = true, default_value = "cpk")]
+    #[arg(long, value_parser = value::index(), ignore_case = true, default_value = "cpk")]
     pub index: Index,
     /// The index claimed: what is rejected with a risk of alpha although it is true
-    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value)]
     pub claim: Millionths,
     /// The other index: what shall be noticed with the wanted power
-    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value)]
     pub against: Millionths,
     /// The risk of rejecting a true claim: 5% or 0.05
-    #[arg(long, value_name = "LEVEL", value_parser = alpha, default_value = "5%")]
+    #[arg(long, value_name = "LEVEL", value_parser = value::alpha, default_value = "5%")]
     pub alpha: Millionths,
     /// The chance of noticing the other index: 95% or 0.95
-    #[arg(long, value_name = "LEVEL", value_parser = confidence, default_value = "95%")]
+    #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%")]
     pub power: Confidence,
 }
 
@@ -213,7 +214,7 @@ pub struct Virtual {
     #[arg(long, value_name = "DIR")]
     pub store: PathBuf,
     /// A simulated process: normal:MEAN,SD in the plan's unit
-    #[arg(long, value_name = "normal:MEAN,SD", value_parser = normal_process, conflicts_with = "feed", allow_hyphen_values = true)]
+    #[arg(long, value_name = "normal:MEAN,SD", value_parser = value::normal_process, conflicts_with = "feed", allow_hyphen_values = true)]
     pub process: Option<NormalProcess>,
     /// A file of gauge lines, sent as they are; then the gauge is silent
     #[arg(long, value_name = "FILE")]
@@ -222,10 +223,10 @@ pub struct Virtual {
     #[arg(long, value_name = "N", default_value_t = 1)]
     pub seed: u64,
     /// Readings a second [default: 10 from a process; from a file as fast as the station takes them]
-    #[arg(long, value_name = "PER_SECOND", value_parser = rate)]
+    #[arg(long, value_name = "PER_SECOND", value_parser = value::rate)]
     pub rate: Option<f64>,
     /// The process's mean moves by so much from one reading to the next
-    #[arg(long, value_name = "STEP", value_parser = finite, requires = "process", allow_hyphen_values = true)]
+    #[arg(long, value_name = "STEP", value_parser = value::finite, requires = "process", allow_hyphen_values = true)]
     pub drift: Option<f64>,
     /// Every so many readings, one is an outlier, 8 standard deviations off to either side
     #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(1..), requires = "process")]
@@ -252,7 +253,7 @@ pub struct Assess {
     #[arg(value_name = "FILE.csv", group = "source")]
     pub file: Option<PathBuf>,
     /// Instead of readings: their number, mean and standard deviation (n − 1)
-    #[arg(long, value_name = "n=…,mean=…,sd=…", value_parser = summary, group = "source")]
+    #[arg(long, value_name = "n=…,mean=…,sd=…", value_parser = value::summary, group = "source")]
     pub summary: Option<Summary>,
     /// The column of the readings, by its title or number [default: the first with numbers]
     #[arg(long, value_name = "NAME|NUMBER", conflicts_with = "summary")]
@@ -273,16 +274,16 @@ pub struct Assess {
     #[arg(long, value_name = "VALUE", allow_hyphen_values = true)]
     pub target: Option<Decimal>,
     /// The index
-    #[arg(long, value_parser = index(), ignore_case = true, default_value = "cpk")]
+    #[arg(long, value_parser = value::index(), ignore_case = true, default_value = "cpk")]
     pub index: Index,
     /// The interval's confidence: 95% or 0.95
-    #[arg(long, value_name = "LEVEL", value_parser = confidence, default_value = "95%")]
+    #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%")]
     pub confidence: Confidence,
     /// Two limits, or only a lower or an upper one
-    #[arg(long, value_parser = kind(), ignore_case = true, default_value = "two-sided")]
+    #[arg(long, value_parser = value::kind(), ignore_case = true, default_value = "two-sided")]
     pub kind: Kind,
     /// The index to be shown: exit code 1 unless the lower limit reaches it
-    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value)]
     pub require: Option<Millionths>,
     /// Write the page, with pictures
     #[arg(long, value_name = "FILE.html")]
@@ -311,7 +312,7 @@ pub struct Report {
     #[arg(long, value_name = "FILE")]
     pub csv: Option<PathBuf>,
     /// The index to be shown: exit code 1 unless the study is finished and the lower limit reaches it
-    #[arg(long, value_name = "INDEX", value_parser = index_value)]
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value)]
     pub require: Option<Millionths>,
 }
 
@@ -322,125 +323,4 @@ pub struct Demo {
     /// Where plan.toml, ledger.sqlite and report.html go [default: a new folder]
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
-}
-
-/// `normal:MEAN,SD`
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub struct NormalProcess {
-    /// Finite.
-    pub mean: f64,
-    /// Finite and above 0.
-    pub sd: f64,
-}
-
-/// `n=…,mean=…,sd=…`
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub struct Summary {
-    /// Number of readings.
-    pub n: Count,
-    /// Their mean.
-    pub mean: f64,
-    /// Their standard deviation, with n − 1.
-    pub sd: f64,
-}
-
-fn index() -> impl TypedValueParser<Value = Index> {
-    PossibleValuesParser::new(["cp", "cpl", "cpu", "cpk", "cpm"]).try_map(|name| name.parse::<Index>())
-}
-
-fn kind() -> impl TypedValueParser<Value = Kind> {
-    PossibleValuesParser::new(["two-sided", "lower", "upper"]).try_map(|name| name.parse::<Kind>())
-}
-
-fn confidence(text: &str) -> Result<Confidence, String> {
-    let level = level::read(text).map_err(|error| error.to_string())?;
-    Confidence::from_millionths(level.millionths).ok_or_else(|| "not between 50% and 99.9999%".to_owned())
-}
-
-fn alpha(text: &str) -> Result<Millionths, String> {
-    let level = level::read(text).map_err(|error| error.to_string())?;
-    match level.millionths {
-        1..=500_000 => Ok(Millionths(level.millionths)),
-        _ => Err("not above 0% and up to 50%; write for example 5% or 0.05".to_owned()),
-    }
-}
-
-fn index_value(text: &str) -> Result<Millionths, String> {
-    let level = level::read(text).map_err(|error| match error {
-        level::LevelError::NotANumber => "not a positive number such as 1.33".to_owned(),
-        other => other.to_string(),
-    })?;
-    match level {
-        level::Level { percent: true, .. } => {
-            Err("an index has no percent sign; write for example 1.33".to_owned())
-        }
-        level::Level { millionths: 10_000..=100_000_000, .. } => Ok(Millionths(level.millionths)),
-        _ => Err("not between 0.01 and 100".to_owned()),
-    }
-}
-
-fn precision(text: &str) -> Result<Precision, String> {
-    let level = level::read(text).map_err(|error| error.to_string())?;
-    match level {
-        level::Level { millionths: 0, .. } => Err("a width must be above zero".to_owned()),
-        level::Level { percent: true, millionths } => Ok(Precision::Relative(Millionths(millionths))),
-        level::Level { percent: false, millionths } => Ok(Precision::Absolute(Millionths(millionths))),
-    }
-}
-
-fn finite(text: &str) -> Result<f64, String> {
-    match text.trim().parse::<f64>() {
-        Ok(value) if value.is_finite() => Ok(value),
-        _ => Err(format!("{text:?} is not a number with a decimal point, such as 2.001")),
-    }
-}
-
-fn count(text: &str) -> Result<Count, String> {
-    let n = text.parse().map_err(|_| format!("n={text} is not a whole number"))?;
-    Count::new(n).ok_or_else(|| format!("n={text} is above one million"))
-}
-
-fn rate(text: &str) -> Result<f64, String> {
-    finite(text).and_then(|rate| {
-        if rate > 0.0 && rate <= 100_000.0 {
-            Ok(rate)
-        } else {
-            Err("not above 0 and up to 100000".to_owned())
-        }
-    })
-}
-
-fn normal_process(text: &str) -> Result<NormalProcess, String> {
-    let numbers = text.strip_prefix("normal:").and_then(|rest| rest.split_once(','));
-    let Some((mean, sd)) = numbers else {
-        return Err("write normal:MEAN,SD, for example normal:2.000,0.012".to_owned());
-    };
-    let (mean, sd) = (finite(mean)?, finite(sd)?);
-    if sd > 0.0 {
-        Ok(NormalProcess { mean, sd })
-    } else {
-        Err("the standard deviation must be above zero".to_owned())
-    }
-}
-
-fn summary(text: &str) -> Result<Summary, String> {
-    let (mut n, mut mean, mut sd) = (None, None, None);
-    for item in text.split(',') {
-        let (name, value) =
-            item.split_once('=').ok_or("write n=…,mean=…,sd=…, for example n=50,mean=2.001,sd=0.01")?;
-        let (name, value) = (name.trim(), value.trim());
-        let twice = match name {
-            "n" => n.replace(count(value)?).is_some(),
-            "mean" => mean.replace(finite(value)?).is_some(),
-            "sd" => sd.replace(finite(value)?).is_some(),
-            _ => return Err(format!("{name:?} is not known; write n=…,mean=…,sd=…")),
-        };
-        if twice {
-            return Err(format!("{name} is given twice"));
-        }
-    }
-    match (n, mean, sd) {
-        (Some(n), Some(mean), Some(sd)) => Ok(Summary { n, mean, sd }),
-        _ => Err("n, mean and sd are all needed: n=…,mean=…,sd=…".to_owned()),
-    }
 }
