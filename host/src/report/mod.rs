@@ -6,6 +6,7 @@
 pub mod analysis;
 pub mod charts;
 pub mod export;
+pub mod number;
 pub mod page;
 pub mod words;
 

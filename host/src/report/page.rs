@@ -7,7 +7,7 @@ use maud::{DOCTYPE, Markup, PreEscaped, html};
 
 use super::analysis::{Analysis, value};
 use super::charts::{
-    Caption, axis, histogram,
+    Caption, histogram,
     histogram::{Bins, Curve, Histogram},
     mark::{Mark, Meaning},
     narrowing,
@@ -16,7 +16,7 @@ use super::charts::{
     sequence::Point,
 };
 use super::words::{self, Verdict};
-use super::{Belonging, Data, Fact, Study, Weight};
+use super::{Belonging, Data, Fact, Study, Weight, number};
 use crate::plan_file::describe;
 
 /// The page; `analysis` must be this study's.
@@ -69,7 +69,7 @@ fn verdict_panel(study: &Study, analysis: &Analysis, verdict: &Verdict) -> Marku
 fn indices(study: &Study, analysis: &Analysis) -> Markup {
     let kind = study.question.kind;
     let end =
-        |value: Option<f64>| value.map_or_else(|| "\u{2013}".to_owned(), |value| axis::number(value, 3));
+        |value: Option<f64>, shown: fn(f64) -> String| value.map_or_else(|| "\u{2013}".to_owned(), shown);
     html! {
         section {
             h2 { "Indices" }
@@ -87,9 +87,9 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                     tbody { @for row in &analysis.rows {
                         tr class=[(row.index == study.question.index).then_some("asked")] {
                             th scope="row" { (row.index.name()) }
-                            td class="number" { (axis::number(row.estimate, 3)) }
-                            @if kind != Kind::Upper { td class="number" { (end(row.interval.and_then(|i| i.low))) } }
-                            @if kind != Kind::Lower { td class="number" { (end(row.interval.and_then(|i| i.high))) } }
+                            td class="number" { (number::nearest(row.estimate, 3)) }
+                            @if kind != Kind::Upper { td class="number" { (end(row.interval.and_then(|i| i.low), number::lower_limit)) } }
+                            @if kind != Kind::Lower { td class="number" { (end(row.interval.and_then(|i| i.high), number::upper_limit)) } }
                             td class="remark" {
                                 @if row.interval.is_none() { "No interval method yet." }
                                 @else if row.index == study.question.index { "The study's question." }
@@ -110,7 +110,7 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
 /// `mean 2.00134 mm`: the mean with two decimals more than the gauge.
 fn measure(study: &Study, value: f64) -> String {
     let number = match &study.data {
-        Data::Readings { resolution, .. } => axis::number(value, usize::from(resolution.decimals()) + 2),
+        Data::Readings { resolution, .. } => number::nearest(value, usize::from(resolution.decimals()) + 2),
         Data::Summary { .. } => value.to_string().replace('-', "\u{2212}"),
     };
     with_unit(study, &number)

@@ -7,7 +7,7 @@ use donelight_core::quantity::Confidence;
 use donelight_core::stopping::Standing;
 
 use super::analysis::{Analysis, Row};
-use super::{Data, Question, Study, Weight};
+use super::{Data, Question, Study, Weight, number};
 use crate::level;
 
 /// Stands wherever a verdict stands.
@@ -84,7 +84,7 @@ pub fn verdict(study: &Study, analysis: &Analysis) -> Verdict {
 }
 
 fn claim(question: &Question, row: &Row) -> (Outcome, String) {
-    let estimate = format!("{} is estimated at {:.3}", row.index, row.estimate);
+    let estimate = format!("{} is estimated at {}", row.index, number::nearest(row.estimate, 3));
     let Some(interval) = row.interval else {
         let outcome = if question.required.is_some() { Outcome::NotShown } else { Outcome::Estimate };
         return (outcome, format!("{estimate}; there is no interval method for it yet."));
@@ -138,8 +138,9 @@ pub fn interval_name(confidence: Confidence, kind: Kind) -> String {
 #[must_use]
 pub fn interval_text(interval: &Interval) -> String {
     match (interval.low, interval.high) {
-        (Some(low), Some(high)) => format!("{low:.3} to {high:.3}"),
-        (Some(end), None) | (None, Some(end)) => format!("{end:.3}"),
+        (Some(low), Some(high)) => format!("{} to {}", number::lower_limit(low), number::upper_limit(high)),
+        (Some(low), None) => number::lower_limit(low),
+        (None, Some(high)) => number::upper_limit(high),
         (None, None) => "unknown".to_owned(),
     }
 }

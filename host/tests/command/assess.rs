@@ -241,3 +241,26 @@ fn a_full_disk_is_told_and_nothing_is_said_to_be_written() {
         answer.err
     );
 }
+
+#[test]
+fn the_words_of_an_assessment_are_these() {
+    let answer =
+        donelight("assess --summary n=212,mean=12,sd=0.01 --lsl 11.95 --usl 12.05 --unit mm --require 1.33");
+    assert_eq!(
+        answer.ends_with(0).out,
+        "Cpk is shown to be at least 1.33: Cpk is estimated at 1.667; its two-sided 95 % interval is 1.501 to 1.832.\n\
+         \n\
+         \x20 n     212\n\
+         \x20 mean  12 mm\n\
+         \x20 sd    0.01 mm  (n \u{2212} 1)\n\
+         \x20 Cpk   1.6667  1.501 to 1.832\n\
+         \x20 Cp    1.6667  1.507 to 1.826\n\
+         \x20 Cpl   1.6667  1.501 to 1.832\n\
+         \x20 Cpu   1.6667  1.501 to 1.832\n\
+         \n\
+         A summary does not tell whether the process was stable and the readings near to normal.\n\
+         \n\
+         This verdict does not replace the standards in force, the customer's rules or the judgement of a qualified \
+         person. It does not say that a part or a machine is safe.\n"
+    );
+}

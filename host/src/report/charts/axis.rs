@@ -3,6 +3,7 @@
 use maud::{Markup, html};
 
 use super::{Frame, label_width, line, text};
+use crate::report::number;
 
 /// Maps values on an axis to user units.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -98,19 +99,8 @@ fn ticks(low: f64, high: f64, wanted: u32) -> Vec<Tick> {
     (0..=count)
         .map(|i| (first + f64::from(i)) * step)
         .filter(|value| (low..=high).contains(value))
-        .map(|value| Tick { value, label: number(value, places) })
+        .map(|value| Tick { value, label: number::nearest(value, places) })
         .collect()
-}
-
-/// A number for people: fixed decimals, a true minus sign, no negative zero.
-#[must_use]
-pub fn number(value: f64, places: usize) -> String {
-    let text = format!("{value:.places$}");
-    match text.strip_prefix('-') {
-        Some(digits) if digits.bytes().all(|byte| matches!(byte, b'0' | b'.')) => digits.to_owned(),
-        Some(digits) => format!("\u{2212}{digits}"),
-        None => text,
-    }
 }
 
 /// How wide the labels of an upright axis need the left margin to be, its name included.
@@ -189,12 +179,5 @@ mod tests {
         let scale = Scale::new((0.0, 2.0), (0.0, 100.0));
         let labels: Vec<_> = scale.whole_ticks(8).into_iter().map(|tick| tick.label).collect();
         assert_eq!(labels, ["0", "1", "2"]);
-    }
-
-    #[test]
-    fn numbers_have_a_true_minus_and_no_negative_zero() {
-        assert_eq!(number(-0.0001, 2), "0.00");
-        assert_eq!(number(-1.5, 1), "\u{2212}1.5");
-        assert_eq!(number(1.25, 2), "1.25");
     }
 }

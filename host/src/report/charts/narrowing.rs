@@ -2,6 +2,8 @@
 
 use maud::{Markup, html};
 
+use crate::report::number;
+
 use super::{Caption, Frame, WIDTH, axis, axis::Scale, clip, mark, mark::Mark, mark::Meaning, path, picture};
 
 const HEIGHT: f64 = 380.0;
@@ -40,7 +42,7 @@ pub fn draw(caption: &Caption<'_>, narrowing: &Narrowing<'_>) -> Markup {
     let wanted: Vec<Mark> = required
         .map(|value| Mark {
             value,
-            label: format!("required {}", axis::number(value, 2)),
+            label: format!("required {}", number::nearest(value, 2)),
             meaning: Meaning::Wanted,
         })
         .into_iter()
@@ -85,16 +87,16 @@ pub fn draw(caption: &Caption<'_>, narrowing: &Narrowing<'_>) -> Markup {
 /// Where estimate and limits ended, named at the right; no line across.
 fn end_marks(steps: &[Step]) -> impl Iterator<Item = Mark> {
     let end = steps.last().copied();
-    let mark = |name: &str, value: f64| Mark {
+    let mark = |name: &str, value: f64, shown: String| Mark {
         value,
-        label: format!("{name} {}", axis::number(value, 3)),
+        label: format!("{name} {shown}"),
         meaning: Meaning::End,
     };
     end.into_iter().flat_map(move |end| {
         [
-            end.high.map(|high| mark("upper", high)),
-            Some(mark("estimate", end.estimate)),
-            end.low.map(|low| mark("lower", low)),
+            end.high.map(|high| mark("upper", high, number::upper_limit(high))),
+            Some(mark("estimate", end.estimate, number::nearest(end.estimate, 3))),
+            end.low.map(|low| mark("lower", low, number::lower_limit(low))),
         ]
         .into_iter()
         .flatten()

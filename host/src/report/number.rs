@@ -1,0 +1,50 @@
+//! Numbers for people: fixed decimals, a true minus sign, no negative zero.
+
+/// Rounded to the nearest.
+#[must_use]
+pub fn nearest(value: f64, places: usize) -> String {
+    let text = format!("{value:.places$}");
+    match text.strip_prefix('-') {
+        Some(digits) if digits.bytes().all(|byte| matches!(byte, b'0' | b'.')) => digits.to_owned(),
+        Some(digits) => format!("\u{2212}{digits}"),
+        None => text,
+    }
+}
+
+/// The decimals that limits of an interval are shown with.
+const PLACES: usize = 3;
+const SHIFT: f64 = 1000.0;
+
+/// A lower limit, rounded down: what is shown is never more than what holds, so 1.3299 does not read as 1.330.
+#[must_use]
+pub fn lower_limit(value: f64) -> String {
+    nearest((value * SHIFT).floor() / SHIFT, PLACES)
+}
+
+/// An upper limit, rounded up.
+#[must_use]
+pub fn upper_limit(value: f64) -> String {
+    nearest((value * SHIFT).ceil() / SHIFT, PLACES)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn numbers_have_a_true_minus_and_no_negative_zero() {
+        assert_eq!(nearest(-0.0001, 2), "0.00");
+        assert_eq!(nearest(-1.5, 1), "\u{2212}1.5");
+        assert_eq!(nearest(1.25, 2), "1.25");
+    }
+
+    #[test]
+    fn limits_are_rounded_outwards() {
+        assert_eq!((lower_limit(1.3299), upper_limit(1.8311)), ("1.329".to_owned(), "1.832".to_owned()));
+        assert_eq!(
+            (lower_limit(-0.0001), upper_limit(-0.0001)),
+            ("\u{2212}0.001".to_owned(), "0.000".to_owned())
+        );
+        assert_eq!((lower_limit(1.5), upper_limit(1.5)), ("1.500".to_owned(), "1.500".to_owned()));
+    }
+}
