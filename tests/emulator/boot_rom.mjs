@@ -3,8 +3,6 @@
 // The ROM's functions are found through a look-up function at a fixed place (RP2040 data sheet, section 2.8.3). Here each
 // entry is `bkpt #n; bx lr`, and the harness does the work when the core stops there.
 
-import { BasePeripheral } from 'rp2040js';
-
 const BKPT = 0xbe00;
 const BX_LR = 0x4770;
 const WFI = 0xbf30;
@@ -15,7 +13,6 @@ const LOOK_UP_POINTER = 0x18;
 const FIRST_ENTRY = 0x100;
 const LOOK_UP = 1;
 
-const XIP_CTRL = 0x14000;
 const SSI = 0x18000;
 const SSI_ENABLE = 0x08;
 const SSI_DATA = 0x60;
@@ -75,9 +72,8 @@ function romCalls(mcu, chip) {
   };
 }
 
-/** Gives `mcu` a flash controller that passes instructions to `chip`, and an idle XIP stream. */
+/** Gives `mcu` a flash controller that passes instructions to `chip`. */
 export function installFlashController(mcu, chip) {
-  mcu.peripherals[XIP_CTRL] = new IdleXipStream(mcu, 'XIP_CTRL');
   const ssi = mcu.peripherals[SSI];
   const read = ssi.readUint32.bind(ssi);
   const write = ssi.writeUint32.bind(ssi);
@@ -88,11 +84,4 @@ export function installFlashController(mcu, chip) {
     write(offset, value);
   };
   ssi.readUint32 = (offset) => (offset === SSI_DATA && waiting.length ? waiting.shift() : read(offset));
-}
-
-class IdleXipStream extends BasePeripheral {
-  readUint32() {
-    return 0;
-  }
-  writeUint32() {}
 }

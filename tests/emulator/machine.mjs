@@ -1,9 +1,10 @@
 // One power cycle of a Raspberry Pi Pico: an RP2040 with its flash chip, its USB cable and a gauge.
 
-import { GPIOPinState, LogLevel, RP2040 } from 'rp2040js';
+import { GPIOPinState, RP2040 } from 'rp2040js';
 
 import { HANG_ADDRESS, installBootRom, installFlashController } from './boot_rom.mjs';
 import { segments, symbol } from './elf.mjs';
+import { installMissingRegisters } from './registers.mjs';
 import { takeLog } from './rtt.mjs';
 import { Gauge, completeUart, lineSettings } from './uart.mjs';
 import { UsbHost } from './usb_host.mjs';
@@ -19,21 +20,23 @@ const CYCLE_NANOS = 8; // 125 MHz
 const LOG_EVERY_NANOS = 1_000_000;
 const PINS = 30;
 
-/** The emulator's messages: SEV is told here only, and the core must remember it; unknown accesses are kept. */
+/** The USB driver clears all registers at its start; a zero for one that the emulator lacks means nothing. */
+const CLEARING = /^Unimplemented peripheral write to 0x[0-9a-f]+: 0x0$/;
+
+/** The emulator's messages: SEV is told here only, and the core must remember it; unknown accesses are reported. */
 class Messages {
-  constructor(report) {
-    this.report = report;
-    this.threshold = LogLevel.Warn;
+  constructor(core, report) {
+    Object.assign(this, { core, report });
   }
   debug() {}
   info(_, message) {
     if (message === 'SEV') this.core.eventRegistered = true;
   }
   warn(component, message) {
-    this.report({ kind: 'emulator-warning', message: `${component}: ${message}` });
+    if (!CLEARING.test(message)) this.report({ kind: 'emulator-warning', message: `${component}: ${message}` });
   }
   error(component, message) {
-    this.report({ kind: 'emulator-warning', message: `${component}: ${message}` });
+    this.warn(component, message);
   }
 }
 
@@ -45,11 +48,12 @@ export class Machine {
     this.clock = this.mcu.clock;
     /** Why this power cycle is over: 'power-lost', 'reset' or null. */
     this.over = null;
-    this.mcu.logger = Object.assign(new Messages(report), { core: this.mcu.core });
+    this.mcu.logger = new Messages(this.mcu.core, report);
     if (ram) this.mcu.sram.set(ram);
     this.load(elf, chip);
     installBootRom(this.mcu, chip);
     installFlashController(this.mcu, chip);
+    installMissingRegisters(this.mcu);
     this.connect(elf);
   }
 
