@@ -320,7 +320,7 @@ pub struct Report {
 #[derive(Debug, Args)]
 #[command(after_help = "Example:\n  donelight demo --out demo")]
 pub struct Demo {
-    /// Where plan.toml, ledger.sqlite and report.html go [default: a new folder]
+    /// Where plan.toml, ledger.sqlite and report.html go [default: a new folder donelight-demo]
     #[arg(long, value_name = "DIR")]
     pub out: Option<PathBuf>,
 }

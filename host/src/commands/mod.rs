@@ -1,6 +1,7 @@
 //! One module a command. Each takes its options and gives an [`Answer`] or a [`Failure`].
 
 mod assess;
+mod demo;
 mod plan;
 mod report;
 mod size;
@@ -8,7 +9,7 @@ mod station;
 mod virtual_station;
 
 use crate::cli::Command;
-use crate::output::{Answer, Console, Exit, Failure};
+use crate::output::{Answer, Console, Failure};
 
 /// Does what the command line says.
 ///
@@ -22,17 +23,6 @@ pub fn run(command: Command, console: &mut Console) -> Result<Answer, Failure> {
         Command::Virtual(options) => virtual_station::run(&options, console),
         Command::Assess(options) => assess::run(&options),
         Command::Report(options) => report::run(&options),
-        Command::Demo(_) => Err(not_built_yet("demo")),
-    }
-}
-
-/// Holds a command's place until its module is there.
-fn not_built_yet(command: &str) -> Failure {
-    Failure {
-        kind: "not-built-yet",
-        message: format!("`donelight {command}` is not built yet"),
-        help: "Use a later version.".to_owned(),
-        exit: Exit::Refused,
-        details: None,
+        Command::Demo(options) => demo::run(&options, console),
     }
 }

@@ -60,7 +60,7 @@ impl Medium for Vec<u8> {
 
 /// A file of [`FLASH_SIZE`] bytes.
 #[derive(Debug)]
-pub struct FlashFile(File);
+pub struct FlashFile(pub(super) File);
 
 impl Medium for FlashFile {
     fn size(&self) -> usize {
@@ -122,17 +122,11 @@ impl RamFlash {
     /// An erased flash of so many sectors of 4096 bytes; a journal needs four at least.
     #[must_use]
     pub fn blank(sectors: usize) -> Self {
-        Self { medium: vec![ERASED; sectors * SECTOR], fault: None }
+        Self::over(vec![ERASED; sectors * SECTOR])
     }
 }
 
 impl FileFlash {
-    /// Takes an open file of exactly [`FLASH_SIZE`] bytes.
-    #[must_use]
-    pub(super) fn over(file: File) -> Self {
-        Self { medium: FlashFile(file), fault: None }
-    }
-
     /// Fills a fresh file with erased flash and hands it to the disk.
     pub(super) fn format(file: &mut File) -> io::Result<()> {
         file.write_all(&vec![ERASED; FLASH_SIZE])?;
@@ -141,6 +135,17 @@ impl FileFlash {
 }
 
 impl<M: Medium> Flash<M> {
+    /// Flash over what this medium holds.
+    #[must_use]
+    pub fn over(medium: M) -> Self {
+        Self { medium, fault: None }
+    }
+
+    /// Where the bytes are kept.
+    pub fn medium(&mut self) -> &mut M {
+        &mut self.medium
+    }
+
     /// What went wrong since this was last asked; the journal itself only learns that something did.
     pub fn take_fault(&mut self) -> Option<FlashError> {
         self.fault.take()

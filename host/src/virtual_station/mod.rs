@@ -21,6 +21,7 @@ use donelight_core::record::Millis;
 use donelight_core::recorder::{Button, Recorder};
 use donelight_core::text::Text;
 use donelight_core::wire::StationId;
+use embedded_storage::nor_flash::NorFlashErrorKind;
 
 use self::feed::FeedError;
 use self::flash::{Flash, FlashError, Medium};
@@ -35,6 +36,15 @@ pub const TICK_MS: u64 = 10;
 #[derive(Debug, thiserror::Error)]
 #[error("the station's journal cannot be read: {0}")]
 pub struct StartError(FlashError);
+
+impl From<OpenError<FlashError>> for StartError {
+    fn from(error: OpenError<FlashError>) -> Self {
+        match error {
+            OpenError::Flash(fault) => Self(fault),
+            OpenError::Geometry => Self(NorFlashErrorKind::OutOfBounds.into()),
+        }
+    }
+}
 
 impl Explain for StartError {
     fn kind(&self) -> &'static str {
@@ -73,12 +83,7 @@ impl<M: Medium> VirtualStation<M> {
         let firmware = concat!("donelight virtual ", env!("CARGO_PKG_VERSION"));
         // Far shorter than 32 bytes, and a test looks at it.
         let firmware = Text::new(firmware).unwrap_or_default();
-        let recorder = Recorder::open(flash, id, firmware, Millis(0)).map_err(|error| match error {
-            OpenError::Flash(fault) => StartError(fault),
-            OpenError::Geometry => {
-                StartError(embedded_storage::nor_flash::NorFlashErrorKind::OutOfBounds.into())
-            }
-        })?;
+        let recorder = Recorder::open(flash, id, firmware, Millis(0))?;
         Ok(Self { recorder, operator })
     }
 

@@ -116,7 +116,8 @@ impl Operator {
 }
 
 /// How many pieces of this study were measured: a station that starts again goes on behind them.
-fn pieces_before(study: &Study) -> u32 {
+#[must_use]
+pub fn pieces_before(study: &Study) -> u32 {
     let progress = study.progress();
     progress.n.get().saturating_add(progress.surplus).saturating_add(progress.taken_back)
 }

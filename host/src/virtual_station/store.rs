@@ -12,7 +12,7 @@ use std::path::{Path, PathBuf};
 
 use donelight_core::wire::StationId;
 
-use super::flash::{ERASED, FLASH_SIZE, FileFlash};
+use super::flash::{ERASED, FLASH_SIZE, FileFlash, FlashFile};
 use crate::output::Explain;
 
 const JOURNAL: &str = "journal.flash";
@@ -110,7 +110,7 @@ impl Store {
             None if is_blank(&mut file).map_err(access(&journal))? => make_id(&number)?,
             None => return Err(StoreError::NoId(number)),
         };
-        Ok((Self { folder: folder.to_owned(), id, _lock: lock }, FileFlash::over(file)))
+        Ok((Self { folder: folder.to_owned(), id, _lock: lock }, FileFlash::over(FlashFile(file))))
     }
 
     /// The station's number.
