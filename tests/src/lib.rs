@@ -3,5 +3,6 @@
 
 pub mod command;
 pub mod nist;
+pub mod study;
 #[cfg(unix)]
 pub mod virtual_bench;

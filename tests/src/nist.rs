@@ -58,13 +58,17 @@ impl Set {
         line.and_then(|line| line.split(' ').next()).expect("a certified value")
     }
 
-    /// `computed` shows the very digits that NIST certifies, written with as many decimals.
+    /// `computed` shows the very digits that NIST certifies, written with as many decimals. Of the sets that NIST made
+    /// up, whose certified values are exact, it is the nearest double.
     ///
     /// # Panics
     /// If it does not.
     #[track_caller]
     pub fn assert_certified(&self, what: &str, computed: f64) {
         let certified = self.certified(what);
+        if self.name.starts_with("NumAcc") {
+            assert_eq!(Ok(computed), certified.parse::<f64>(), "{what} of {}", self.name);
+        }
         let decimals = certified.split_once('.').map_or(0, |(_, fraction)| fraction.len());
         assert_eq!(format!("{computed:.decimals$}"), certified, "{what} of {}", self.name);
     }
