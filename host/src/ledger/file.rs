@@ -20,7 +20,7 @@ const MIGRATIONS: [&str; 1] = [include_str!("migrations/0001_records.sql")];
 const VERSION: u32 = MIGRATIONS.len() as u32;
 
 /// How long another program's transaction is waited for.
-const BUSY: Duration = Duration::from_secs(10);
+const BUSY: Duration = Duration::from_secs(5);
 
 /// `donelight/ledger.sqlite` in the user's data folder; the folder is made if need be.
 pub(super) fn default_path() -> Result<PathBuf, LedgerError> {

@@ -161,7 +161,8 @@ impl<T: Transport> Session<T> {
         let mut heard = 0;
         loop {
             let again = (self.transport.now() + self.patience.again_after).min(end);
-            if self.send(&request(), again)? && self.listen(again, &mut heard)? {
+            let request = request();
+            if self.send(&request, again)? && self.listen(&request, again, &mut heard)? {
                 return match wire::decode(&self.answer) {
                     Ok((_, Reply::Refused(reason))) => Err(LinkError::Refused(reason)),
                     Ok((_, reply)) => Ok(reply),
@@ -198,9 +199,9 @@ impl<T: Transport> Session<T> {
         Ok(true)
     }
 
-    /// Whether the answer came before `end`; it is in `self.answer` then. Rubbish and answers to earlier requests are
-    /// passed over.
-    fn listen(&mut self, end: Instant, heard: &mut u64) -> Result<bool, LinkError> {
+    /// Whether the answer came before `end`; it is in `self.answer` then. Rubbish, answers to earlier requests and the
+    /// request itself, from a port that echoes, are passed over.
+    fn listen(&mut self, request: &Request, end: Instant, heard: &mut u64) -> Result<bool, LinkError> {
         let mut bytes = [0; 512];
         let mut found = false;
         while !found {
@@ -213,7 +214,8 @@ impl<T: Transport> Session<T> {
             *heard += got as u64;
             for byte in bytes.iter().take(got) {
                 let Some(frame) = self.reader.push(*byte) else { continue };
-                if !found && answers(frame, self.number) {
+                let echo = wire::decode::<Request>(frame).is_ok_and(|(_, echo)| echo == *request);
+                if !found && !echo && answers(frame, self.number) {
                     found = true;
                     self.answer.clear();
                     self.answer.extend_from_slice(frame);
