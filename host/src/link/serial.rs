@@ -7,7 +7,7 @@
 use std::io::{self, ErrorKind, Read, Write};
 use std::path::Path;
 use std::sync::mpsc::{Receiver, RecvTimeoutError, Sender, channel};
-use std::time::Duration;
+use std::time::{Duration, Instant};
 
 use serialport::{ClearBuffer, SerialPort};
 
@@ -15,6 +15,9 @@ use super::{PortError, Transport};
 
 /// How long a read or a write waits.
 const WAIT: Duration = Duration::from_millis(50);
+
+/// How long a port that is closed waits for its writer.
+const PARTING: Duration = Duration::from_millis(500);
 
 /// USB and pseudo-terminals do not care; a converter does.
 const BAUD: u32 = 115_200;
@@ -54,7 +57,8 @@ fn open_socket(port: &str) -> Result<std::os::unix::net::UnixStream, PortError> 
 /// An open serial port.
 pub struct SerialLink {
     port: Box<dyn SerialPort>,
-    chunks: Sender<Vec<u8>>,
+    /// `None` only while it is dropped.
+    chunks: Option<Sender<Vec<u8>>>,
     written: Receiver<io::Result<usize>>,
     /// A chunk is with the writer.
     writing: bool,
@@ -74,7 +78,7 @@ impl SerialLink {
         let (chunks, to_write) = channel();
         let (tell, written) = channel();
         std::thread::spawn(move || write_all(writing, &to_write, &tell));
-        Ok(Self { port: reading, chunks, written, writing: false })
+        Ok(Self { port: reading, chunks: Some(chunks), written, writing: false })
     }
 }
 
@@ -97,7 +101,8 @@ impl Write for SerialLink {
     fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
         let chunk = bytes.get(..CHUNK).unwrap_or(bytes);
         if !self.writing {
-            self.chunks.send(chunk.to_vec()).map_err(|_| ErrorKind::BrokenPipe)?;
+            let chunks = self.chunks.as_ref().ok_or(ErrorKind::BrokenPipe)?;
+            chunks.send(chunk.to_vec()).map_err(|_| ErrorKind::BrokenPipe)?;
             self.writing = true;
         }
         match self.written.recv_timeout(WAIT) {
@@ -123,6 +128,11 @@ impl Drop for SerialLink {
             // Frees the writer, and spares the system from waiting for the other end when the port is closed.
             let _ = self.port.clear(ClearBuffer::Output);
         }
+        // The writer closes its handle of the port before its channel, so that the port is free when this returns; one
+        // that is stuck is left behind.
+        self.chunks = None;
+        let end = Instant::now() + PARTING;
+        while let Ok(_outcome) = self.written.recv_timeout(end.saturating_duration_since(Instant::now())) {}
     }
 }
 

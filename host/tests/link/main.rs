@@ -1,7 +1,14 @@
 //! Link and ledger: a station in memory, a faulty line to it, and ledgers in all states.
 
+#[cfg(unix)]
+mod command;
 mod faults;
 mod faulty;
 mod ledgers;
+mod peers;
+#[cfg(unix)]
+mod ports;
 mod pulling;
 mod support;
+#[cfg(unix)]
+mod terminal;
