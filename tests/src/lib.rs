@@ -2,6 +2,7 @@
 #![forbid(unsafe_code)]
 
 pub mod command;
+pub mod emulator;
 pub mod nist;
 pub mod study;
 #[cfg(unix)]
