@@ -6,12 +6,9 @@ use std::time::Duration;
 
 use donelight_tests::emulator::{Board, STATION, UsbIdentity};
 
-const NEEDS_IMAGE: &str = "needs the Pico image: run tests/run";
-
 #[test]
 #[ignore = "needs the Pico image: run tests/run"]
 fn the_board_is_found_by_its_name_and_shows_the_flash_chips_number() {
-    let _ = NEEDS_IMAGE;
     let mut board = Board::new();
     board.power_on();
     assert_eq!(

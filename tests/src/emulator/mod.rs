@@ -197,7 +197,10 @@ impl Board {
                 return event.clone();
             }
             let last: Vec<_> = self.events.iter().rev().take(8).collect();
-            assert!(self.powered && self.now < end, "{kinds:?} did not come within {within:?}; last: {last:#?}");
+            assert!(
+                self.powered && self.now < end,
+                "{kinds:?} did not come within {within:?}; last: {last:#?}"
+            );
         }
     }
 
@@ -316,14 +319,17 @@ impl Board {
     #[track_caller]
     pub fn set_flash_times(&mut self, sector_erase: Duration, page_program: Duration) {
         let (erase, program) = (sector_erase.as_micros() as u64, page_program.as_micros() as u64);
-        self.command(json!({ "command": "flashTimes", "sector_erase_us": erase, "page_program_us": program }));
+        self.command(
+            json!({ "command": "flashTimes", "sector_erase_us": erase, "page_program_us": program }),
+        );
     }
 
     /// What stands in the flash.
     #[track_caller]
     pub fn flash(&mut self, range: std::ops::Range<u32>) -> Vec<u8> {
         let length = range.end - range.start;
-        let result = self.command(json!({ "command": "readFlash", "address": range.start, "length": length }));
+        let result =
+            self.command(json!({ "command": "readFlash", "address": range.start, "length": length }));
         from_hex(result["hex"].as_str().expect("hexadecimal"))
     }
 
@@ -382,7 +388,9 @@ impl Board {
             What::Log { hex } => self.logs.last_mut().expect("power").extend(from_hex(hex)),
             What::PowerLost => self.went_dark(),
             What::Reset { .. } => self.logs.push(Vec::new()),
-            What::EmulatorWarning { message } => panic!("the image does what the emulator does not know: {message}"),
+            What::EmulatorWarning { message } => {
+                panic!("the image does what the emulator does not know: {message}")
+            }
             _ => {}
         }
     }

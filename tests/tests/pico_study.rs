@@ -1,0 +1,146 @@
+//! The main job on the real Pico image: NIST's univariate data sets as lines on its UART, the plan loaded over its USB
+//! port by the host's own code, the done lamp lit at the right reading and not one earlier, the log pulled into a ledger.
+//!
+//! Source of the sets: NIST Statistical Reference Datasets, <https://www.itl.nist.gov/div898/strd/univ/homepage.html>.
+//! These need the image: `tests/run` builds it and runs them.
+
+use std::path::Path;
+
+use donelight::ledger::Ledger;
+use donelight::link::pull::pull;
+use donelight::link::{LinkError, Session};
+use donelight::plan_file;
+use donelight_core::record::Seq;
+use donelight_core::wire::{Status, StudyStatus};
+use donelight_tests::emulator::{Board, Lamp, What};
+use donelight_tests::nist::Set;
+use donelight_tests::study::Study;
+
+fn load(board: &mut Board, study: &Study) -> Result<Seq, LinkError> {
+    let plan = plan_file::from_text(&study.toml()).unwrap();
+    Session::open(board).unwrap().0.load(&plan, false)
+}
+
+fn status(board: &mut Board) -> Status {
+    Session::open(board).unwrap().0.status().unwrap()
+}
+
+/// Measures pieces until the done lamp is lit, one after the other as an operator would; gives how many it took.
+#[track_caller]
+fn measure_until_done(board: &mut Board, readings: &[&str]) -> usize {
+    assert!(!board.is_lit(Lamp::Done), "lit before the first reading");
+    for (index, reading) in readings.iter().enumerate() {
+        board.measure(reading);
+        if board.is_lit(Lamp::Done) {
+            return index + 1;
+        }
+    }
+    panic!("the done lamp is dark after all {} readings", readings.len());
+}
+
+/// Pulls all, and compares the station's own figures with those that the host works out of the records, bit for bit.
+#[track_caller]
+fn pull_and_compare(board: &mut Board, ledger: &Path, readings: &[&str]) -> StudyStatus {
+    let mut ledger = Ledger::open(Some(ledger)).unwrap();
+    let (mut session, _) = Session::open(&mut *board).unwrap();
+    let pulled = pull(&mut session, &mut ledger, &mut |_| {}).unwrap();
+    assert_eq!((pulled.gaps, pulled.clock_refused), (Vec::new(), None));
+    let device = status(board).study.expect("a study");
+    let studies = ledger.studies().unwrap();
+    let kept = studies.iter().find(|kept| kept.study.began() == device.began).expect("the study is kept");
+
+    let host = &kept.study;
+    assert_eq!(device.progress, host.progress());
+    let resolution = host.plan().resolution;
+    let estimate = host.estimate().expect("an estimate");
+    let bits = |value: Option<f64>| value.expect("a figure").to_bits();
+    assert_eq!(bits(device.mean), bits(host.moments().mean(resolution)));
+    assert_eq!(bits(device.standard_deviation), bits(host.moments().standard_deviation(resolution)));
+    assert_eq!(bits(device.estimate), estimate.estimate.to_bits());
+    assert_eq!(bits(device.low), bits(estimate.interval.low));
+    assert_eq!(bits(device.high), bits(estimate.interval.high));
+
+    let values: Vec<f64> = readings.iter().map(|text| text.parse().unwrap()).collect();
+    let kept: Vec<f64> = kept.readings.iter().map(|r| r.counts.get() as f64 * resolution.to_f64()).collect();
+    assert_eq!(kept.len(), values.len());
+    let half_a_step = resolution.to_f64() / 2.0;
+    assert!(kept.iter().zip(&values).all(|(kept, value)| (kept - value).abs() < half_a_step));
+    device
+}
+
+/// Two studies on one board of the same readings: the first takes all of the set, the second stops on its precision.
+#[track_caller]
+fn main_job(name: &str, precision: u32) {
+    let set = Set::named(name);
+    let readings = set.readings();
+    let folder = tempfile::tempdir().unwrap();
+    let ledger = folder.path().join("ledger.sqlite");
+    let mut board = Board::start();
+
+    let whole = Study::of(&set, readings.len(), 150);
+    assert_eq!(whole.done_at(&readings), Some(readings.len()));
+    load(&mut board, &whole).unwrap();
+    assert_eq!(measure_until_done(&mut board, &readings), readings.len());
+    let device = pull_and_compare(&mut board, &ledger, &readings);
+    set.assert_certified("mean", device.mean.unwrap());
+    set.assert_certified("sd", device.standard_deviation.unwrap());
+
+    let precise = Study::of(&set, 2, precision);
+    let done_at = precise.done_at(&readings).expect("a precision that this set reaches");
+    load(&mut board, &precise).unwrap();
+    board.wait_for(Lamp::Done, false, std::time::Duration::from_secs(1));
+    assert_eq!(measure_until_done(&mut board, &readings), done_at);
+    pull_and_compare(&mut board, &ledger, &readings[..done_at]);
+
+    let lit = What::Pin { pin: Lamp::Done as u8, high: true };
+    assert_eq!(board.events().iter().filter(|event| event.what == lit).count(), 2, "lit once a study");
+    assert!(!board.events().iter().any(|event| event.what == What::Overrun));
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn lew_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("Lew", 12);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn lottery_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("Lottery", 12);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn mavro_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("Mavro", 25);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn michelso_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("Michelso", 18);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn numacc1_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("NumAcc1", 120);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn numacc2_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("NumAcc2", 6);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn numacc3_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("NumAcc3", 6);
+}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn numacc4_is_done_at_the_right_reading_and_keeps_the_certified_values() {
+    main_job("NumAcc4", 6);
+}
