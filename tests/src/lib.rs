@@ -1,6 +1,7 @@
 //! What the end-to-end tests share.
 #![forbid(unsafe_code)]
 
+pub mod budgets;
 pub mod command;
 pub mod emulator;
 pub mod nist;
