@@ -201,9 +201,9 @@ Examples:
 The first line is the port; any `station` command can use it. Then each event is a line, until Ctrl-C.
 Buttons, each a line on standard input: take back, seen
 
-The operator waits for a plan, and while the station calls for someone to look; he stops when the study is settled
-or spent. A simulated piece depends on the seed and its place in the study only: a station that was stopped goes on
-where it was. A file of lines starts at its beginning each time.
+The simulated operator waits for a plan, waits while the station calls for someone to look, and stops when the study
+is settled or spent. A simulated piece depends on the seed and on its place in the study only: a station that was
+stopped goes on where it was. A file of lines starts at its beginning each time.
 
 Examples:
   donelight virtual --store bench --process normal:2.000,0.012 --seed 7

@@ -127,7 +127,7 @@ impl fmt::Display for Attention {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
             Self::GaugeStuck => "the gauge repeats itself; look at it, then press seen",
-            Self::Journal => "nothing can be recorded; pull the log, or mend the store's disk",
+            Self::Journal => "nothing can be recorded; pull the log, or mend the disk and start again",
             Self::Spent => "the plan's limit is reached without the wanted precision",
             Self::Pull => "the journal will soon be full; pull the log",
         })

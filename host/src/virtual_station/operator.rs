@@ -26,7 +26,7 @@ pub enum Gauge {
     Feed(Feed),
 }
 
-/// What the operator did when it was his turn.
+/// What the operator did in one turn.
 #[derive(Debug)]
 pub enum Act {
     /// Nothing.

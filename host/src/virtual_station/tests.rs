@@ -1,6 +1,7 @@
 //! The station, its operator and its narrator together, asked over the wire but without a port.
 
 use std::fs;
+use std::io;
 
 use donelight_core::capability::Index;
 use donelight_core::interval::Kind;
@@ -250,4 +251,50 @@ fn every_event_is_told_in_words_and_as_json() {
         Reply::Hello(hello) => hello.firmware.as_str().starts_with("donelight virtual"),
         _ => false,
     }));
+}
+
+/// Memory that can become a full disk.
+#[derive(Debug)]
+struct Disk {
+    bytes: Vec<u8>,
+    full: bool,
+}
+
+impl Medium for Disk {
+    fn size(&self) -> usize {
+        self.bytes.size()
+    }
+
+    fn read_at(&mut self, offset: usize, bytes: &mut [u8]) -> io::Result<()> {
+        self.bytes.read_at(offset, bytes)
+    }
+
+    fn write_at(&mut self, offset: usize, bytes: &[u8]) -> io::Result<()> {
+        if self.full { Err(io::ErrorKind::StorageFull.into()) } else { self.bytes.write_at(offset, bytes) }
+    }
+}
+
+#[test]
+fn a_disk_that_takes_nothing_more_stops_the_operator_and_loses_nothing_that_was_taken() {
+    let mut taken = Bench::start(RamFlash::blank(256), Gauge::Process(process(3)), false);
+    taken.load(plan(20, 90));
+    taken.watch_until(&mut Vec::new(), 5);
+    let bytes = taken.station.recorder().journal().flash().medium().clone();
+
+    let operator = Operator::new(Gauge::Process(process(3)), Some(50.0), false);
+    let disk = Flash::over(Disk { bytes, full: false });
+    let mut station = VirtualStation::start(disk, StationId([7; 8]), operator).unwrap();
+    station.recorder().journal().flash().medium().full = true;
+    let incidents: Vec<Incident> = (1..5_000).filter_map(|ms| station.step(Millis(ms))).collect();
+    assert!(
+        matches!(incidents[..], [Incident::Flash(FlashError::Medium(io::ErrorKind::StorageFull))]),
+        "one try, then the operator waits: {incidents:?}"
+    );
+    assert_eq!(station.recorder().call(Millis(5_000)), Some(Call::Act));
+
+    let bytes = station.recorder().journal().flash().medium().bytes.clone();
+    let mut again = Bench::start(Flash::over(bytes), Gauge::Process(process(3)), false);
+    let mut news = Vec::new();
+    again.watch_until(&mut news, 1);
+    assert!(matches!(news[0], News::Reading { n: 6, .. }), "{news:?}");
 }
