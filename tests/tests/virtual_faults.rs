@@ -77,6 +77,17 @@ fn a_store_that_cannot_be_made_is_refused_by_name() {
     }
 }
 
+#[cfg(target_os = "linux")]
+#[test]
+fn a_store_whose_name_is_no_text_is_served_all_the_same() {
+    use std::os::unix::ffi::OsStrExt;
+
+    let folder = tempfile::tempdir().unwrap();
+    let bench = VirtualBench::start(&folder.path().join(OsStr::from_bytes(b"st\xffre")), NOTHING);
+    bench.interrupt();
+    assert!(bench.end().1.success());
+}
+
 #[test]
 fn a_damaged_store_is_refused_and_left_as_it_is() {
     let folder = tempfile::tempdir().unwrap();

@@ -172,10 +172,10 @@ fn answer(files: &Files, kept: &Kept, verdict: &str, (records, refused): (u32, u
     let estimate = kept.study.estimate();
     let interval = estimate.map(|estimate| estimate.interval);
     json!({
-        "out": files.folder,
-        "plan": files.plan,
-        "ledger": files.ledger,
-        "report": files.report,
+        "out": files.folder.to_string_lossy(),
+        "plan": files.plan.to_string_lossy(),
+        "ledger": files.ledger.to_string_lossy(),
+        "report": files.report.to_string_lossy(),
         "station": STATION.to_string(),
         "study": kept.key.to_string(),
         "standing": format!("{:?}", progress.standing).to_lowercase(),

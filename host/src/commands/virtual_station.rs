@@ -86,7 +86,7 @@ mod bench {
         let folder = store.folder().display();
         Ok(Answer::done(
             format!("stopped; its journal is kept in {folder}"),
-            json!({ "event": "stopped", "store": store.folder() }),
+            json!({ "event": "stopped", "store": store.folder().to_string_lossy() }),
         ))
     }
 
@@ -151,9 +151,9 @@ mod bench {
         console.say(
             &format!("{port}\nvirtual station {id}, start {boots}; {stands}"),
             &json!({
-                "port": terminal.path(),
+                "port": terminal.path().to_string_lossy(),
                 "station": id.to_string(),
-                "store": store.folder(),
+                "store": store.folder().to_string_lossy(),
                 "boots": boots,
                 "study": study.map(|_| json!({ "name": name, "n": n })),
             }),

@@ -59,3 +59,20 @@ fn a_folder_that_cannot_be_made_is_an_error_that_says_what_to_do() {
     let said = run(&["demo", "--out", "file/demo"], here.path()).ends_with(1);
     assert!(said.err.contains("file/demo") && said.err.contains("--out"), "{}", said.err);
 }
+
+#[cfg(target_os = "linux")]
+#[test]
+fn a_folder_whose_name_is_no_text_is_served_all_the_same() {
+    use std::os::unix::ffi::OsStrExt;
+
+    let here = tempfile::tempdir().unwrap();
+    let name = std::ffi::OsStr::from_bytes(b"d\xffmo");
+    let output = std::process::Command::new(env!("CARGO_BIN_EXE_donelight"))
+        .args(["demo", "--json", "--out"])
+        .arg(name)
+        .current_dir(here.path())
+        .output()
+        .unwrap();
+    assert!(output.status.success(), "{output:?}");
+    assert!(here.path().join(name).join("report.html").is_file());
+}
