@@ -116,6 +116,8 @@ impl<S: RingSource, C: Clock> RingReader<S, C> {
             return Err(LineFault::Lapped(waiting));
         }
         if let Some(fault) = self.source.fault() {
+            // Any byte that waits may be the one: better none of them than a wrong reading.
+            self.taken = self.taken.wrapping_add(self.waiting());
             return Err(fault);
         }
         let offset = self.taken as usize % RING_SIZE;
@@ -289,11 +291,12 @@ mod tests {
     }
 
     #[test]
-    fn a_fault_of_the_receiver_is_reported_once() {
+    fn a_fault_of_the_receiver_is_reported_once_and_takes_all_that_waits_with_it() {
         let mut reader = reader();
         reader.source().carry(4);
         reader.source().fault = Some(LineFault::Garbled);
         assert_eq!(reader.take(&mut [0; 64]), Err(LineFault::Garbled));
-        assert_eq!(drain(&mut reader), [0, 1, 2, 3]);
+        reader.source().carry(2);
+        assert_eq!(drain(&mut reader), [4, 5]);
     }
 }

@@ -10,6 +10,9 @@ import { createInterface } from 'node:readline';
 import { FLASH_SIZE, FlashChip } from './flash_chip.mjs';
 import { Machine } from './machine.mjs';
 
+/** An image in a circle of unknown accesses would otherwise fill the memory. */
+const EVENTS_MAX = 1_000_000;
+
 const fromHex = (hex) => Uint8Array.from(Buffer.from(hex, 'hex'));
 
 class Board {
@@ -39,6 +42,7 @@ class Board {
   }
 
   report(event) {
+    if (this.events.length === EVENTS_MAX) throw new Error(`too many events; the last: ${JSON.stringify(event)}`);
     this.events.push({ ...event, at: Math.round(this.now), cycles: this.cycles });
     if (this.waitingFor.has(event.kind)) this.seen = true;
   }

@@ -5,25 +5,13 @@
 //! These need the image: `tests/run` builds it and runs them.
 
 use std::path::Path;
+use std::time::Duration;
 
-use donelight::ledger::Ledger;
-use donelight::link::pull::pull;
-use donelight::link::{LinkError, Session};
-use donelight::plan_file;
-use donelight_core::record::Seq;
-use donelight_core::wire::{Status, StudyStatus};
+use donelight_core::wire::StudyStatus;
+use donelight_tests::emulator::study::{assert_readings, plan};
 use donelight_tests::emulator::{Board, Lamp, What};
 use donelight_tests::nist::Set;
 use donelight_tests::study::Study;
-
-fn load(board: &mut Board, study: &Study) -> Result<Seq, LinkError> {
-    let plan = plan_file::from_text(&study.toml()).unwrap();
-    Session::open(board).unwrap().0.load(&plan, false)
-}
-
-fn status(board: &mut Board) -> Status {
-    Session::open(board).unwrap().0.status().unwrap()
-}
 
 /// Measures pieces until the done lamp is lit, one after the other as an operator would; gives how many it took.
 #[track_caller]
@@ -41,14 +29,9 @@ fn measure_until_done(board: &mut Board, readings: &[&str]) -> usize {
 /// Pulls all, and compares the station's own figures with those that the host works out of the records, bit for bit.
 #[track_caller]
 fn pull_and_compare(board: &mut Board, ledger: &Path, readings: &[&str]) -> StudyStatus {
-    let mut ledger = Ledger::open(Some(ledger)).unwrap();
-    let (mut session, _) = Session::open(&mut *board).unwrap();
-    let pulled = pull(&mut session, &mut ledger, &mut |_| {}).unwrap();
-    assert_eq!((pulled.gaps, pulled.clock_refused), (Vec::new(), None));
-    let device = status(board).study.expect("a study");
-    let studies = ledger.studies().unwrap();
-    let kept = studies.iter().find(|kept| kept.study.began() == device.began).expect("the study is kept");
-
+    let kept = board.pull(ledger);
+    assert_readings(&kept, readings);
+    let device = board.status().study.expect("a study");
     let host = &kept.study;
     assert_eq!(device.progress, host.progress());
     let resolution = host.plan().resolution;
@@ -59,12 +42,6 @@ fn pull_and_compare(board: &mut Board, ledger: &Path, readings: &[&str]) -> Stud
     assert_eq!(bits(device.estimate), estimate.estimate.to_bits());
     assert_eq!(bits(device.low), bits(estimate.interval.low));
     assert_eq!(bits(device.high), bits(estimate.interval.high));
-
-    let values: Vec<f64> = readings.iter().map(|text| text.parse().unwrap()).collect();
-    let kept: Vec<f64> = kept.readings.iter().map(|r| r.counts.get() as f64 * resolution.to_f64()).collect();
-    assert_eq!(kept.len(), values.len());
-    let half_a_step = resolution.to_f64() / 2.0;
-    assert!(kept.iter().zip(&values).all(|(kept, value)| (kept - value).abs() < half_a_step));
     device
 }
 
@@ -79,7 +56,7 @@ fn main_job(name: &str, precision: u32) {
 
     let whole = Study::of(&set, readings.len(), 150);
     assert_eq!(whole.done_at(&readings), Some(readings.len()));
-    load(&mut board, &whole).unwrap();
+    board.load(&plan(&whole.toml())).unwrap();
     assert_eq!(measure_until_done(&mut board, &readings), readings.len());
     let device = pull_and_compare(&mut board, &ledger, &readings);
     set.assert_certified("mean", device.mean.unwrap());
@@ -87,8 +64,8 @@ fn main_job(name: &str, precision: u32) {
 
     let precise = Study::of(&set, 2, precision);
     let done_at = precise.done_at(&readings).expect("a precision that this set reaches");
-    load(&mut board, &precise).unwrap();
-    board.wait_for(Lamp::Done, false, std::time::Duration::from_secs(1));
+    board.load(&plan(&precise.toml())).unwrap();
+    board.wait_for(Lamp::Done, false, Duration::from_secs(1));
     assert_eq!(measure_until_done(&mut board, &readings), done_at);
     pull_and_compare(&mut board, &ledger, &readings[..done_at]);
 

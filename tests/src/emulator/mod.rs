@@ -7,6 +7,7 @@ pub mod event;
 pub mod image;
 pub mod log;
 mod node;
+pub mod study;
 #[cfg(unix)]
 pub mod terminal;
 mod usb;
@@ -239,10 +240,27 @@ impl Board {
     /// If it does not light within two seconds.
     #[track_caller]
     pub fn measure(&mut self, reading: &str) -> Event {
+        self.try_measure(reading).expect("power")
+    }
+
+    /// [`Board::measure`], or `None` if the power fails before the operator is told.
+    ///
+    /// # Panics
+    /// If the lamp does not light within two seconds, with power.
+    #[track_caller]
+    pub fn try_measure(&mut self, reading: &str) -> Option<Event> {
         self.gauge(format!("{reading}\r\n"));
-        let told = self.wait_for(Lamp::Taken, true, Duration::from_secs(2));
-        self.wait_for(Lamp::Taken, false, Duration::from_secs(1));
-        told
+        let lit = What::Pin { pin: Lamp::Taken as u8, high: true };
+        let lit_or_dark = |event: &Event| event.what == lit || event.what == What::PowerLost;
+        let told = self.run_until(&["pin"], Duration::from_secs(2), lit_or_dark);
+        if told.what == What::PowerLost {
+            return None;
+        }
+        let dark = What::Pin { pin: Lamp::Taken as u8, high: false };
+        self.run_until(&["pin"], Duration::from_secs(1), |event| {
+            event.what == dark || event.what == What::PowerLost
+        });
+        Some(told)
     }
 
     // ---- lamps and buttons ----
