@@ -81,7 +81,11 @@ export class Machine {
         if (state <= GPIOPinState.High) report({ kind: 'pin', pin, high: state === GPIOPinState.High });
       });
     }
-    mcu.peripherals[WATCHDOG].onWatchdogTrigger = () => this.end('reset', 'watchdog');
+    const watchdog = mcu.peripherals[WATCHDOG];
+    watchdog.onWatchdogTrigger = () => {
+      watchdog.alarm.enable = false; // it would go off again and again at this moment
+      this.end('reset', 'watchdog');
+    };
     const { ppb } = mcu;
     const write = ppb.writeUint32.bind(ppb);
     ppb.writeUint32 = (offset, value) => {

@@ -59,7 +59,6 @@ export class UsbHost {
     this.plugged = true;
     this.enabled = false;
     this.reading = true;
-    this.reset();
     keepAvailableUntilArrival(mcu);
     this.holdPacketsNobodyFetches();
     this.usb.onUSBEnabled = () => {
@@ -71,12 +70,16 @@ export class UsbHost {
     this.usb.onEndpointRead = (endpoint, size) => this.deviceListens(endpoint, size);
     this.next = mcu.clock.createAlarm(() => this.startControl());
     this.timeout = mcu.clock.createAlarm(() => this.controlDone('stalled'));
+    this.reset();
   }
 
   /** Forgets the session, as after a reset of the bus. */
   reset() {
+    this.next.cancel();
+    this.timeout.cancel();
     this.control = [];
     this.current = null;
+    this.stepping = false;
     this.inEndpoint = this.outEndpoint = -1;
     this.outQueue = [];
     this.armed = null;
@@ -150,10 +153,17 @@ export class UsbHost {
 
   ask(packet, then) {
     this.control.push({ packet, then, bytes: [] });
-    if (!this.current && !this.next.scheduled) this.next.schedule(STEP_NANOS);
+    if (!this.current && !this.stepping) this.step();
+  }
+
+  /** The next request follows a millisecond later, in the next frame. */
+  step() {
+    this.stepping = true;
+    this.next.schedule(STEP_NANOS);
   }
 
   startControl() {
+    this.stepping = false;
     if (this.current || !this.plugged) return;
     this.current = this.control.shift() ?? null;
     if (!this.current) return;
@@ -167,7 +177,7 @@ export class UsbHost {
     this.timeout.cancel();
     if (outcome === 'stalled') this.report({ kind: 'usb-request-stalled' });
     else then(bytes);
-    if (this.control.length) this.next.schedule(STEP_NANOS);
+    if (this.control.length) this.step();
   }
 
   fromDevice(endpoint, bytes) {
