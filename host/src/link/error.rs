@@ -11,9 +11,15 @@ use crate::output::{Exit, Explain};
 #[derive(Debug, thiserror::Error)]
 #[non_exhaustive]
 pub enum LinkError {
-    /// Not one byte came.
+    /// Not one byte came, ever.
     #[error("no answer within {} s", .waited.as_secs())]
     NoAnswer {
+        /// How long it was waited for.
+        waited: Duration,
+    },
+    /// A station that has answered before does so no more.
+    #[error("the station no longer answers: no whole answer came within {} s", .waited.as_secs())]
+    Silent {
         /// How long it was waited for.
         waited: Duration,
     },
@@ -49,6 +55,7 @@ impl Explain for LinkError {
     fn kind(&self) -> &'static str {
         match self {
             Self::NoAnswer { .. } => "no-answer",
+            Self::Silent { .. } => "station-silent",
             Self::Garbage { .. } => "garbage",
             Self::Gone(_) => "station-gone",
             Self::Refused(reason) => match reason {
@@ -70,6 +77,9 @@ impl Explain for LinkError {
             Self::NoAnswer { .. } => {
                 "Is this port a Donelight station's? `donelight station list` shows them. If it is, unplug it, plug it \
                  in again and try once more."
+            }
+            Self::Silent { .. } => {
+                "Unplug the station, plug it in again and run the same command again: nothing is lost or doubled by that."
             }
             Self::Garbage { .. } => {
                 "Something else sends on this port, or another program reads from it (ModemManager and terminal \

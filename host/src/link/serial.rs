@@ -72,7 +72,8 @@ impl SerialLink {
     pub fn open(port: &str) -> Result<Self, PortError> {
         look_at(port)?;
         let failed = |error: serialport::Error| from_serial(port, error);
-        let reading = serialport::new(port, BAUD).timeout(WAIT).dtr_on_open(true).open().map_err(failed)?;
+        let reading =
+            serialport::new(port, baud(port)).timeout(WAIT).dtr_on_open(true).open().map_err(failed)?;
         reading.clear(ClearBuffer::All).map_err(failed)?;
         let writing = reading.try_clone().map_err(failed)?;
         let (chunks, to_write) = channel();
@@ -134,6 +135,11 @@ impl Drop for SerialLink {
         let end = Instant::now() + PARTING;
         while let Ok(_outcome) = self.written.recv_timeout(end.saturating_duration_since(Instant::now())) {}
     }
+}
+
+/// A pseudo-terminal on macOS takes no other rate than 0, which stands for "as it is".
+fn baud(port: &str) -> u32 {
+    if cfg!(target_os = "macos") && port.starts_with("/dev/ttys") { 0 } else { BAUD }
 }
 
 /// Tells apart by name what the system's open would mix up.

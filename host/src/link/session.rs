@@ -34,6 +34,8 @@ impl Patience {
 pub struct Session<T> {
     transport: T,
     patience: Patience,
+    /// It has said hello.
+    met: bool,
     number: u16,
     reader: FrameReader,
     /// The frame to send.
@@ -61,6 +63,7 @@ impl<T: Transport> Session<T> {
         let mut session = Self {
             transport,
             patience: first,
+            met: false,
             number: u16::from_le_bytes([low, high]),
             reader: FrameReader::default(),
             frame: Box::new([0; FRAME_MAX]),
@@ -68,6 +71,7 @@ impl<T: Transport> Session<T> {
         };
         let hello = session.hello()?;
         session.patience = later;
+        session.met = true;
         Ok((session, hello))
     }
 
@@ -173,6 +177,7 @@ impl<T: Transport> Session<T> {
             if self.transport.now() >= end {
                 let waited = self.patience.give_up_after;
                 return Err(match heard {
+                    _ if self.met => LinkError::Silent { waited },
                     0 => LinkError::NoAnswer { waited },
                     bytes => LinkError::Garbage { bytes, waited },
                 });

@@ -249,6 +249,27 @@ fn a_killed_pull_is_completed_by_the_next() {
     assert_eq!(rows(&path), journal(&mut station.stop()), "after {grown:?}");
 }
 
+#[cfg(target_os = "linux")]
+#[test]
+fn without_a_ledger_named_it_is_the_one_in_the_users_data_folder() {
+    let folder = tempfile::tempdir().unwrap();
+    let station = OnTerminal::serve(station_with_readings(20));
+    let at_home = || {
+        let mut command = Command::new(COMMAND);
+        command.env("XDG_DATA_HOME", folder.path());
+        command
+    };
+    let (code, json, _) = run(at_home().arg("report"));
+    assert_eq!((code, kind(&json)), (1, "ledger-missing"));
+    let (code, json, err) = run(at_home().args(["station", "pull", "--port", station.port()]));
+    let ledger = folder.path().join("donelight").join("ledger.sqlite");
+    assert_eq!((code, json["ledger"].as_str()), (0, ledger.to_str()), "{json}");
+    assert_eq!(err, "", "no progress bar where nobody watches");
+    let (code, json, _) = run(at_home().arg("report"));
+    assert_eq!((code, json["title"].as_str()), (0, Some("Lids, lot 7")));
+    station.stop();
+}
+
 #[test]
 fn without_a_port_the_stations_attached_decide() {
     let (code, json, _) = donelight(&["station", "list"]);

@@ -2,6 +2,7 @@
 
 use donelight::link::Session;
 use donelight::link::pull::pull;
+use donelight_core::record::{Event, Record};
 use proptest::prelude::*;
 
 use crate::faulty::{At, Fault, Faulty, faults};
@@ -32,7 +33,7 @@ fn pull_through(there: Vec<At>, back: Vec<At>, readings: u32) {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig::with_cases(200))]
+    #![proptest_config(ProptestConfig::with_cases(120))]
 
     #[test]
     fn whatever_the_line_does_nothing_is_lost_or_doubled(
@@ -41,6 +42,26 @@ proptest! {
         readings in 0..220u32,
     ) {
         pull_through(there, back, readings);
+    }
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(300))]
+
+    #[test]
+    fn a_plan_loaded_over_a_bad_line_begins_one_study_at_most(there in faults(160), back in faults(120)) {
+        let mut station = station();
+        let line = Faulty::new(&mut station, there, back);
+        let outcome = Session::open(line).and_then(|(mut session, _)| session.load(&plan("Lids, lot 7"), false));
+        let plans: Vec<u32> = journal(&mut station)
+            .iter()
+            .filter(|(_, bytes)| matches!(Record::decode(bytes).unwrap().event, Event::Plan(_)))
+            .map(|(seq, _)| *seq)
+            .collect();
+        match outcome {
+            Ok(began) => prop_assert_eq!(plans, [began.0]),
+            Err(_) => prop_assert!(plans.len() <= 1, "{plans:?}"),
+        }
     }
 }
 

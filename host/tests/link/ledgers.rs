@@ -8,6 +8,7 @@ use donelight::ledger::{Fate, Gap, Happening, Ledger, LedgerError, SelectError, 
 use donelight::link::Session;
 use donelight::link::pull::{Cause, pull};
 use donelight_core::record::{Event, Millis, RECORD_MAX, Record, Refusal, Seq};
+use donelight_core::wire::StationId;
 use rusqlite::Connection;
 
 use crate::support::*;
@@ -133,6 +134,27 @@ fn two_programs_make_the_same_new_ledger_without_harm() {
         });
         pull_all(&mut station_with_readings(5), &mut open(&path));
     }
+}
+
+#[test]
+fn stations_pulled_at_once_into_one_ledger_do_not_disturb_each_other() {
+    let (_folder, path) = folder();
+    let ids: Vec<StationId> = (1..=3).map(|n| StationId([n; 8])).collect();
+    std::thread::scope(|scope| {
+        for id in &ids {
+            scope.spawn(|| {
+                let mut station = with_readings(station_called(*id), 300);
+                assert_eq!(pull_all(&mut station, &mut open(&path)).new, 303);
+            });
+        }
+    });
+    let ledger = open(&path);
+    let studies = ledger.studies().unwrap();
+    assert_eq!(studies.iter().map(|kept| kept.key.station).collect::<Vec<_>>(), ids);
+    assert!(studies.windows(2).all(|pair| pair[0].study == pair[1].study), "the same readings on each");
+    let error = ledger.study(Some("2")).unwrap_err();
+    assert!(matches!(error, SelectError::Ambiguous { .. }), "the number alone will not do: {error}");
+    assert_eq!(ledger.study(Some("0202020202020202:2")).unwrap().key.station, ids[1]);
 }
 
 #[test]

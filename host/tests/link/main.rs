@@ -12,3 +12,4 @@ mod pulling;
 mod support;
 #[cfg(unix)]
 mod terminal;
+mod worn;

@@ -9,6 +9,7 @@ use donelight::link::serial::{self, SerialLink};
 use donelight::link::{LinkError, Patience, PortError, Session};
 use donelight::virtual_station::pseudo_terminal::PseudoTerminal;
 
+use crate::faulty::{Fault, Faulty};
 use crate::support::*;
 use crate::terminal::OnTerminal;
 
@@ -94,6 +95,25 @@ fn a_station_unplugged_in_mid_pull_is_said_to_be_gone_and_the_next_pull_complete
         drop(session);
         assert_eq!(rows(&path), journal(&mut station.stop()));
     }
+}
+
+#[test]
+fn a_station_that_falls_silent_is_given_up() {
+    // Time is the station's own, so this takes none of ours.
+    let mut station = station_with_readings(100);
+    let silent = Faulty::new(
+        &mut station,
+        Vec::new(),
+        (90..20_000).step_by(200).map(|at| (at, Fault::Lose(255))).collect(),
+    );
+    let (mut session, _) = Session::open(silent).unwrap();
+    let error = loop {
+        if let Err(error) = session.status() {
+            break error;
+        }
+    };
+    assert!(matches!(error, LinkError::Silent { .. }), "{error}");
+    assert!(error.to_string().contains("no longer answers"), "{error}");
 }
 
 #[test]

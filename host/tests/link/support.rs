@@ -46,12 +46,20 @@ pub(crate) fn plan(name: &str) -> Plan {
 
 /// A fresh station.
 pub(crate) fn station() -> MemoryLink {
-    MemoryLink::start(RamFlash::blank(32), STATION).unwrap()
+    station_called(STATION)
+}
+
+pub(crate) fn station_called(id: StationId) -> MemoryLink {
+    MemoryLink::start(RamFlash::blank(32), id).unwrap()
 }
 
 /// A station with a study of so many readings, loaded over the link.
 pub(crate) fn station_with_readings(readings: u32) -> MemoryLink {
-    let mut station = station();
+    with_readings(station(), readings)
+}
+
+/// The same on this station.
+pub(crate) fn with_readings(mut station: MemoryLink, readings: u32) -> MemoryLink {
     station.pass(1_000);
     load(&mut station, &plan("Lids, lot 7"), false).unwrap();
     measure(&mut station, readings);
