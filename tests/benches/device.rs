@@ -1,0 +1,53 @@
+//! What the station's image takes of the board, and how long a reading takes from its line to the lamp, against
+//! `budgets.toml`. Counted by the emulator, so the figures do not depend on the machine.
+
+use std::process::ExitCode;
+use std::time::Duration;
+
+use donelight_tests::budgets::at_most;
+use donelight_tests::emulator::study::plan;
+use donelight_tests::emulator::{Board, Event, What, image};
+use donelight_tests::nist::Set;
+use donelight_tests::study::Study;
+
+fn main() -> ExitCode {
+    if std::env::var_os(image::IMAGE_VARIABLE).is_none() {
+        println!("LEFT OUT: the device's budgets need the Pico image: run tests/run");
+        return ExitCode::SUCCESS;
+    }
+    let size = image::size();
+    let readings = measure();
+    let mut cycles: Vec<u64> = readings.iter().map(|reading| reading.cycles).collect();
+    cycles.sort_unstable();
+    let longest = readings.iter().map(|reading| reading.time).max().unwrap_or_default();
+    let verdicts = [
+        at_most("device.image_bytes_max", size.flash as f64),
+        at_most("device.variables_bytes_max", size.ram as f64),
+        at_most("device.cycles_a_reading_median_max", cycles[cycles.len() / 2] as f64),
+        at_most("device.cycles_a_reading_max", cycles[cycles.len() - 1] as f64),
+        at_most("device.microseconds_a_reading_max", longest.as_secs_f64() * 1e6),
+    ];
+    if verdicts.iter().all(|verdict| *verdict == ExitCode::SUCCESS) { ExitCode::SUCCESS } else { ExitCode::FAILURE }
+}
+
+/// From a line feed to the taken lamp.
+struct Cost {
+    cycles: u64,
+    time: Duration,
+}
+
+/// Measures a study whose interval is computed at every reading from the second on.
+fn measure() -> Vec<Cost> {
+    let set = Set::named("Lottery");
+    let mut board = Board::start();
+    board.load(&plan(&Study::of(&set, 2, 10).toml())).expect("the plan is taken");
+    board.run(Duration::from_millis(300));
+    let cost = |reading: &&str| {
+        let from = board.events().len();
+        let told = board.measure(reading);
+        let is_line_end = |event: &&Event| event.what == What::LineEnd;
+        let line = board.events()[from..].iter().find(is_line_end).expect("a line feed");
+        Cost { cycles: told.cycles - line.cycles, time: Duration::from_nanos(told.at - line.at) }
+    };
+    set.readings().iter().map(cost).collect()
+}
