@@ -27,7 +27,11 @@ fn main() -> ExitCode {
         at_most("device.cycles_a_reading_max", cycles[cycles.len() - 1] as f64),
         at_most("device.microseconds_a_reading_max", longest.as_secs_f64() * 1e6),
     ];
-    if verdicts.iter().all(|verdict| *verdict == ExitCode::SUCCESS) { ExitCode::SUCCESS } else { ExitCode::FAILURE }
+    if verdicts.iter().all(|verdict| *verdict == ExitCode::SUCCESS) {
+        ExitCode::SUCCESS
+    } else {
+        ExitCode::FAILURE
+    }
 }
 
 /// From a line feed to the taken lamp.
