@@ -3,12 +3,19 @@
 //!
 //! These need the image: `tests/run` builds it and runs them.
 
+use std::cell::RefCell;
+use std::rc::Rc;
 use std::time::Duration;
 
+use donelight::link::Session;
+use donelight::link::memory::MemoryLink;
+use donelight_core::lamps::Call;
+use donelight_core::wire::JournalHealth;
 use donelight_tests::emulator::study::{assert_readings, plan};
-use donelight_tests::emulator::{Board, Lamp, Moment, Operation, What};
+use donelight_tests::emulator::{Board, JOURNAL, Lamp, Moment, Operation, STATION, What};
 use donelight_tests::nist::Set;
 use donelight_tests::study::Study;
+use embedded_storage::nor_flash::{ErrorType, MultiwriteNorFlash, NorFlash, NorFlashErrorKind, ReadNorFlash};
 
 /// A board with a study of all of this set loaded.
 fn board_with_study(set: &Set) -> Board {
@@ -155,4 +162,79 @@ fn a_power_cut_while_the_station_starts_costs_nothing_but_another_start() {
     assert!(board.is_lit(Lamp::Done));
     let folder = tempfile::tempdir().unwrap();
     assert_readings(&board.pull(&folder.path().join("ledger.sqlite")), &readings);
+}
+
+/// A flash that the test can look into.
+#[derive(Clone)]
+struct SharedFlash(Rc<RefCell<Vec<u8>>>);
+
+impl ErrorType for SharedFlash {
+    type Error = NorFlashErrorKind;
+}
+
+impl ReadNorFlash for SharedFlash {
+    const READ_SIZE: usize = 1;
+    fn read(&mut self, offset: u32, bytes: &mut [u8]) -> Result<(), NorFlashErrorKind> {
+        bytes.copy_from_slice(&self.0.borrow()[offset as usize..][..bytes.len()]);
+        Ok(())
+    }
+    fn capacity(&self) -> usize {
+        self.0.borrow().len()
+    }
+}
+
+impl NorFlash for SharedFlash {
+    const WRITE_SIZE: usize = 1;
+    const ERASE_SIZE: usize = 4096;
+    fn erase(&mut self, from: u32, to: u32) -> Result<(), NorFlashErrorKind> {
+        self.0.borrow_mut()[from as usize..to as usize].fill(0xff);
+        Ok(())
+    }
+    fn write(&mut self, offset: u32, bytes: &[u8]) -> Result<(), NorFlashErrorKind> {
+        for (cell, byte) in self.0.borrow_mut()[offset as usize..].iter_mut().zip(bytes) {
+            *cell &= byte;
+        }
+        Ok(())
+    }
+}
+
+impl MultiwriteNorFlash for SharedFlash {}
+
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn a_station_with_a_full_journal_starts_in_good_time_and_says_that_it_is_full() {
+    // The very code of the station fills the flash; the board then starts on it.
+    let flash = SharedFlash(Rc::new(RefCell::new(vec![0xff; JOURNAL.len()])));
+    let mut station = MemoryLink::start(flash.clone(), STATION).unwrap();
+    station.pass(1_000);
+    let toml = "name = \"Bell rims\"\nresolution = \"0.001\"\n\
+                [specification]\nlower = \"0\"\nupper = \"100\"\n[capability]\nindex = \"cpk\"\n\
+                [stop]\nplanned = 90000\nprecision = \"5%\"\nlimit = 100000\n";
+    Session::open(&mut station).unwrap().0.load(&plan(toml), false).unwrap();
+    let mut sent = 0;
+    let is_full = |station: &mut MemoryLink<_>| {
+        let now = station.station_time();
+        station.recorder().call(now) == Some(Call::Act)
+    };
+    while !is_full(&mut station) {
+        station.pass(1);
+        station.gauge(format!("{}.{:03}\r\n", 40 + sent % 20, sent % 1_000).as_bytes());
+        sent += 1;
+    }
+    let pieces = station.recorder().station().study().unwrap().moments().n().get();
+    assert!(pieces > 50_000, "{pieces}");
+
+    let mut board = Board::new();
+    for (index, part) in flash.0.borrow().chunks(0x1_0000).enumerate() {
+        board.damage_flash(JOURNAL.start + index as u32 * 0x1_0000, part);
+    }
+    board.power_on();
+    let started = board
+        .run_until(&["connected"], Duration::from_secs(4), |event| matches!(event.what, What::Connected(_)));
+    println!("started on {pieces} readings in {:?}", Duration::from_nanos(started.at));
+    assert!(!board.events().iter().any(|event| matches!(event.what, What::Reset { .. })));
+    let status = board.status();
+    assert_eq!(status.journal, JournalHealth::Full);
+    assert_eq!(status.study.unwrap().progress.n.get(), pieces);
+    board.wait_for(Lamp::Attention, true, Duration::from_secs(1));
 }

@@ -57,7 +57,8 @@ const FLASH_SIZE: usize = 2 * 1024 * 1024;
 const JOURNAL_START: u32 = 0x10_0000;
 const JOURNAL_END: u32 = 0x20_0000;
 
-/// The station restarts when it has not come round for this long; ten times the longest erase.
+/// The station restarts when it has not come round for this long: near the most that the chip can count, and many times
+/// the longest erase.
 const WATCHDOG: Duration = Duration::from_secs(8);
 
 /// pid.codes' pair for tests (from memory). A product that is sold needs its own; the host knows a station by the name
@@ -75,9 +76,6 @@ type Chip = Flash<'static, FLASH, Blocking, FLASH_SIZE>;
 #[embassy_executor::main]
 async fn main(spawner: Spawner) {
     let board = embassy_rp::init(Default::default());
-    let mut watchdog = Watchdog::new(board.WATCHDOG);
-    watchdog.start(WATCHDOG);
-
     let mut chip = Chip::new_blocking(board.FLASH);
     let mut id = StationId([0; 8]);
     if let Err(error) = chip.blocking_unique_id(&mut id.0) {
@@ -97,7 +95,10 @@ async fn main(spawner: Spawner) {
 
     let journal = Region::<Chip, JOURNAL_START, JOURNAL_END>::new(chip);
     let recorder = Recorder::open(journal, id, firmware_name(), BoardClock.now());
-    // Only now, since replaying a journal takes its time and a host gives a port that does not answer up.
+    // Only now, since replaying a full journal takes seconds: a host gives up a port that does not answer, and the
+    // watchdog allows no more than 8 s.
+    let mut watchdog = Watchdog::new(board.WATCHDOG);
+    watchdog.start(WATCHDOG);
     let host = connect_usb(spawner, usb::Driver::new(board.USB, Irqs), id);
     match recorder {
         Ok(recorder) => run::run(recorder, gauge, host, panel, BoardClock, Feeder(watchdog)).await,
