@@ -81,6 +81,8 @@ pub enum Refusal {
     NothingToTakeBack,
     /// The study already holds as many pieces as can be counted.
     StudyFull,
+    /// A byte came without its stop bit or with the wrong parity; the line it belongs to is lost.
+    GaugeGarbled,
 }
 
 impl core::fmt::Display for Refusal {
@@ -102,6 +104,9 @@ impl core::fmt::Display for Refusal {
             }
             Self::NothingToTakeBack => f.write_str("no reading to take back"),
             Self::StudyFull => f.write_str("the study is full: load a new plan"),
+            Self::GaugeGarbled => f.write_str(
+                "garbled bytes: check the baud rate, data bits, parity and stop bits of gauge and plan, and the cable",
+            ),
         }
     }
 }

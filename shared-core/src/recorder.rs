@@ -151,6 +151,12 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         self.refuse(now, Refusal::GaugeOverrun);
     }
 
+    /// Bytes of the gauge arrived garbled, as the receiver noticed; it keeps them to itself.
+    pub fn gauge_garbled(&mut self, now: Millis) {
+        self.gauge.spoil(now);
+        self.refuse(now, Refusal::GaugeGarbled);
+    }
+
     /// Takes a byte from the host. If it completes a request, gives the reply's frame: send it whole before the next
     /// byte is fed.
     pub fn host_byte(&mut self, now: Millis, byte: u8) -> Option<&[u8]> {

@@ -161,7 +161,7 @@ fn origin(kept: &Kept, ledger: &Path) -> Vec<Fact> {
 
 fn incident(incident: &ledger::Incident) -> Incident {
     let (weight, what) = match incident.what {
-        Happening::Refused { reason: reason @ Refusal::GaugeOverrun, times } => {
+        Happening::Refused { reason: reason @ (Refusal::GaugeOverrun | Refusal::GaugeGarbled), times } => {
             (Weight::Loss, refused(reason, times))
         }
         Happening::Refused { reason, times } => (Weight::Note, refused(reason, times)),
