@@ -19,7 +19,7 @@ use embedded_hal::digital::{InputPin, OutputPin};
 use embedded_io_async::{Read, Write};
 use embedded_storage::nor_flash::MultiwriteNorFlash;
 
-use crate::{clock::Clock, panel::PushButton};
+use crate::{clock::Clock, panel::PushButton, ring::LineFault};
 
 /// How often the recorder, the buttons and the lamps are looked after at least, in milliseconds.
 const TICK_MS: u64 = 5;
@@ -31,7 +31,7 @@ const REPLY_WITHIN_MS: u64 = 500;
 const CHUNK: usize = 64;
 
 /// The gauge's line. A pending `read` must lose nothing when it is dropped.
-pub trait GaugePort: Read {
+pub trait GaugePort: Read<Error = LineFault> {
     /// From now on bytes arrive by these settings.
     fn configure(&mut self, settings: LineSettings);
 }
@@ -116,7 +116,8 @@ async fn measure<F: MultiwriteNorFlash>(
         let mut recorder = recorder.borrow_mut();
         match heard {
             Either::First(Ok(length)) => recorder.gauge_bytes(now, &chunk[..length]),
-            Either::First(Err(_)) => recorder.gauge_overrun(now),
+            Either::First(Err(LineFault::Garbled)) => recorder.gauge_garbled(now),
+            Either::First(Err(LineFault::Lapped(_) | LineFault::Overrun)) => recorder.gauge_overrun(now),
             Either::Second(()) => {}
         }
         for button in panel.pressed(now).into_iter().flatten() {

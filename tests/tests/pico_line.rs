@@ -111,7 +111,7 @@ fn the_line_is_set_as_the_plan_says_and_stays_so_over_a_restart() {
 fn a_gauge_of_other_settings_gives_no_reading() {
     let mut board = board_with("");
     board.set_gauge(LineSettings { baud: 19_200, ..LineSettings::default() });
-    let _ = refused(&mut board, b"1.001\r\n1.002\r\n");
+    assert_eq!(refused(&mut board, b"1.001\r\n1.002\r\n"), Refusal::GaugeGarbled);
     board.set_gauge(LineSettings::default());
     board.run(Duration::from_secs(1));
     board.measure("1.003");
@@ -124,7 +124,7 @@ fn a_parity_error_spoils_its_line() {
     let mut board = board_with("[gauge]\nparity = \"even\"\n");
     // The emulated gauge sends the right bits, and the receiver finds the parity wrong.
     board.set_gauge(LineSettings { parity: Parity::Odd, ..LineSettings::default() });
-    assert_eq!(refused(&mut board, b"1.001\r\n"), Refusal::GaugeOverrun);
+    assert_eq!(refused(&mut board, b"1.001\r\n"), Refusal::GaugeGarbled);
 }
 
 #[test]

@@ -62,7 +62,16 @@ fn each_reading_is_told_and_the_done_lamp_lights_at_the_last_one() {
 }
 
 #[test]
-fn a_fault_on_the_line_spoils_the_line_under_way_and_calls_the_operator() {
+fn a_garbled_byte_spoils_its_line_and_is_told_as_such() {
+    let mut bench = bench_with_plan();
+    bench.fault(LineFault::Garbled);
+    assert!(!bench.measure("5.00"));
+    assert_eq!(bench.status().last_refusal, Some(Refusal::GaugeGarbled));
+    assert!(bench.measure("5.01"));
+}
+
+#[test]
+fn lost_bytes_spoil_the_line_under_way_and_are_told_as_such() {
     let mut bench = bench_with_plan();
     bench.fault(LineFault::Overrun);
     assert!(!bench.measure("5.00"), "the rest of a line is no reading");

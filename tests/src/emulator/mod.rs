@@ -3,6 +3,7 @@
 //!
 //! The emulator is the npm package rp2040js (MIT); `tests/emulator/` adds what it lacks and what a station is tied to.
 
+mod controls;
 pub mod event;
 pub mod image;
 pub mod log;
@@ -19,6 +20,7 @@ use donelight_core::plan::{LineSettings, Parity};
 use donelight_core::wire::StationId;
 use serde_json::{Value, json};
 
+pub use controls::{Button, Lamp, Moment};
 pub use event::{Event, Operation, UsbIdentity, What};
 use node::Node;
 
@@ -27,42 +29,6 @@ pub const STATION: StationId = StationId([0xe6, 0x61, 0x38, 0x52, 0x83, 0x50, 0x
 
 /// Where the journal begins and ends in the chip.
 pub const JOURNAL: std::ops::Range<u32> = 0x10_0000..0x20_0000;
-
-/// An output of the board.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Lamp {
-    /// Enough and precise enough.
-    Done = 16,
-    /// The operator is wanted.
-    Attention = 17,
-    /// A reading was taken.
-    Taken = 25,
-}
-
-/// An input of the board.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Button {
-    /// Take the last reading back.
-    TakeBack = 14,
-    /// Seen.
-    Seen = 15,
-}
-
-/// When a planned power cut happens.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub enum Moment {
-    /// Before the operation has changed anything.
-    Before,
-    /// After so many of its bytes; with a seed, about half of the other bits that should change have changed too.
-    Inside {
-        /// Whole bytes done.
-        bytes: u32,
-        /// Chooses the bits.
-        seed: Option<u32>,
-    },
-    /// When it is complete, before the image knows.
-    After,
-}
 
 /// The board, and what is tied to it.
 #[derive(Debug)]
