@@ -16,13 +16,14 @@ fn main() -> ExitCode {
         return ExitCode::SUCCESS;
     }
     let size = image::size();
-    let readings = measure();
+    let (readings, stack) = measure();
     let mut cycles: Vec<u64> = readings.iter().map(|reading| reading.cycles).collect();
     cycles.sort_unstable();
     let longest = readings.iter().map(|reading| reading.time).max().unwrap_or_default();
     let verdicts = [
         at_most("device.image_bytes_max", size.flash as f64),
         at_most("device.variables_bytes_max", size.ram as f64),
+        at_most("device.stack_bytes_max", stack as f64),
         at_most("device.cycles_a_reading_median_max", cycles[cycles.len() / 2] as f64),
         at_most("device.cycles_a_reading_max", cycles[cycles.len() - 1] as f64),
         at_most("device.microseconds_a_reading_max", longest.as_secs_f64() * 1e6),
@@ -40,8 +41,9 @@ struct Cost {
     time: Duration,
 }
 
-/// Measures a study whose interval is computed at every reading from the second on.
-fn measure() -> Vec<Cost> {
+/// Measures a study whose interval is computed at every reading from the second on, pulls it, and gives the most stack
+/// in use as well.
+fn measure() -> (Vec<Cost>, usize) {
     let set = Set::named("Lottery");
     let mut board = Board::start();
     board.load(&plan(&Study::of(&set, 2, 10).toml())).expect("the plan is taken");
@@ -53,5 +55,9 @@ fn measure() -> Vec<Cost> {
         let line = board.events()[from..].iter().find(is_line_end).expect("a line feed");
         Cost { cycles: told.cycles - line.cycles, time: Duration::from_nanos(told.at - line.at) }
     };
-    set.readings().iter().map(cost).collect()
+    let costs = set.readings().iter().map(cost).collect();
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let kept = board.pull(&folder.path().join("ledger.sqlite"));
+    assert_eq!(kept.readings.len(), set.readings().len());
+    (costs, board.stack_used())
 }

@@ -10,6 +10,8 @@ import { createInterface } from 'node:readline';
 import { FLASH_SIZE, FlashChip } from './flash_chip.mjs';
 import { Machine } from './machine.mjs';
 
+const RAM = 0x20000000;
+
 /** An image in a circle of unknown accesses would otherwise fill the memory. */
 const EVENTS_MAX = 1_000_000;
 
@@ -134,6 +136,12 @@ class Board {
     return { hex: Buffer.from(this.chip.contents.subarray(address, address + length)).toString('hex') };
   }
 
+  /** Reads the RAM; what was never written since power came is 0. */
+  readRam({ address, length }) {
+    const at = address - RAM;
+    return { hex: Buffer.from(this.running().mcu.sram.subarray(at, at + length)).toString('hex') };
+  }
+
   /** Writes the flash as it never happens on a board: damage. */
   writeFlash({ address, hex }) {
     this.chip.contents.set(fromHex(hex), address);
@@ -158,7 +166,7 @@ class Board {
 const board = new Board(readFileSync(process.argv[2]));
 const COMMANDS = [
   ...['powerOn', 'powerOff', 'run', 'gauge', 'usb', 'cable', 'input', 'cut', 'flashTimes', 'readFlash', 'writeFlash'],
-  ...['hang', 'ageTransfer', 'state'],
+  ...['readRam', 'hang', 'ageTransfer', 'state'],
 ];
 
 for await (const line of createInterface({ input: process.stdin })) {

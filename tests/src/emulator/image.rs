@@ -26,7 +26,12 @@ pub struct Size {
     pub flash: u64,
     /// Bytes of RAM for variables; the stack has the rest.
     pub ram: u64,
+    /// The address behind the last variable.
+    pub variables_end: u32,
 }
+
+/// The address behind the board's RAM, from where the stack grows downwards.
+pub const RAM_END: u32 = 0x2004_2000;
 
 /// Adds up the image's sections.
 ///
@@ -36,7 +41,7 @@ pub struct Size {
 pub fn size() -> Size {
     let bytes = std::fs::read(path()).expect("the image can be read");
     let file = object::File::parse(bytes.as_slice()).expect("an ELF file");
-    let mut size = Size { flash: 0, ram: 0 };
+    let mut size = Size { flash: 0, ram: 0, variables_end: 0 };
     for section in file.sections() {
         let SectionFlags::Elf { sh_flags } = section.flags() else { continue };
         if sh_flags & u64::from(elf::SHF_ALLOC) == 0 {
@@ -44,7 +49,11 @@ pub fn size() -> Size {
         }
         let in_ram = section.address() >= 0x2000_0000;
         let stored = section.file_range().is_some();
-        size.ram += if in_ram { section.size() } else { 0 };
+        if in_ram {
+            size.ram += section.size();
+            let end = u32::try_from(section.address() + section.size()).expect("an address of the board");
+            size.variables_end = size.variables_end.max(end);
+        }
         size.flash += if stored { section.size() } else { 0 };
     }
     size

@@ -337,6 +337,16 @@ impl Board {
         self.command(json!({ "command": "ageTransfer", "channel": 0, "left": left }));
     }
 
+    /// Bytes of stack that were ever written since the power came.
+    #[track_caller]
+    pub fn stack_used(&mut self) -> usize {
+        let begin = image::size().variables_end;
+        let length = image::RAM_END - begin;
+        let result = self.command(json!({ "command": "readRam", "address": begin, "length": length }));
+        let ram = from_hex(result["hex"].as_str().expect("hexadecimal"));
+        ram.len() - ram.iter().position(|byte| *byte != 0).unwrap_or(ram.len())
+    }
+
     /// The settings that the image has given its UART.
     #[track_caller]
     pub fn line(&mut self) -> Value {
