@@ -209,6 +209,8 @@ impl GaugeWires {
         // The format register may be written only while the UART is off.
         pac::UART0.uartcr().write(|w| w.set_uarten(false));
         Uart::new_blocking(self.uart.reborrow(), self.transmit.reborrow(), self.receive.reborrow(), config);
+        // The driver takes the pull away; an open line must rest, not pick up noise.
+        pac::PADS_BANK0.gpio(1).modify(|w| w.set_pue(true));
         pac::UART0.uartdmacr().write(|w| w.set_rxdmae(true));
     }
 }
