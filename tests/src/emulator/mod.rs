@@ -43,6 +43,8 @@ pub struct Board {
     /// The log's bytes, one entry a power cycle.
     logs: Vec<Vec<u8>>,
     began: Instant,
+    /// A reset by the image itself is looked for.
+    may_reset: bool,
 }
 
 impl Board {
@@ -76,6 +78,7 @@ impl Board {
             levels: [false; 32],
             logs: Vec::new(),
             began: Instant::now(),
+            may_reset: false,
         }
     }
 
@@ -328,6 +331,7 @@ impl Board {
     /// The image goes no further from now on, as after a fault in it; interrupts are served.
     #[track_caller]
     pub fn hang(&mut self) {
+        self.may_reset = true;
         self.command(json!({ "command": "hang" }));
     }
 
@@ -381,7 +385,10 @@ impl Board {
             What::Usb { hex } => self.from_usb.extend(from_hex(hex)),
             What::Log { hex } => self.logs.last_mut().expect("power").extend(from_hex(hex)),
             What::PowerLost => self.went_dark(),
-            What::Reset { .. } => self.logs.push(Vec::new()),
+            What::Reset { cause } => {
+                assert!(self.may_reset, "the station was reset by its {cause}; its log: {:?}", self.logs());
+                self.logs.push(Vec::new());
+            }
             What::EmulatorWarning { message } => {
                 panic!("the image does what the emulator does not know: {message}")
             }
