@@ -15,6 +15,7 @@ pub mod output;
 pub mod plan_file;
 pub mod readings;
 pub mod report;
+pub mod simulation;
 pub mod virtual_station;
 
 use std::ffi::OsString;

@@ -129,11 +129,20 @@ pub enum Plan {
         #[arg(long)]
         force: bool,
     },
-    /// Say all that is wrong with a plan, or what it asks for in words
-    #[command(after_help = "Example:\n  donelight plan check plan.toml")]
+    /// Say all that is wrong with a plan, or what it asks for and what it gives, by simulation
+    #[command(after_help = "\
+Examples:
+  donelight plan check plan.toml
+  donelight plan check plan.toml --studies 1000000 --json")]
     Check {
         /// The plan
         file: PathBuf,
+        /// Simulated studies of each process [default: as many as two seconds allow, up to 10000]
+        #[arg(long, value_name = "N", value_parser = clap::value_parser!(u32).range(1..=10_000_000))]
+        studies: Option<u32>,
+        /// Where the random numbers begin: the same seed gives the same figures
+        #[arg(long, value_name = "N", default_value_t = 1)]
+        seed: u64,
     },
 }
 

@@ -18,7 +18,7 @@ use crate::output::{Answer, Console, Failure};
 pub fn run(command: Command, console: &mut Console) -> Result<Answer, Failure> {
     match command {
         Command::Size(size) => size::run(&size),
-        Command::Plan(plan) => plan::run(&plan),
+        Command::Plan(plan) => plan::run(&plan, console),
         Command::Station(station) => station::run(&station, console),
         Command::Virtual(options) => virtual_station::run(&options, console),
         Command::Assess(options) => assess::run(&options),

@@ -1,22 +1,25 @@
-//! `donelight plan`: write a plan to start from, or say what is wrong with one.
+//! `donelight plan`: write a plan to start from, or say what is wrong with one, what it asks for and what it gives.
 
 use std::path::Path;
 
+use donelight_core::plan;
+use indicatif::{ProgressBar, ProgressStyle};
 use serde_json::json;
 
 use crate::cli::Plan;
 use crate::files;
-use crate::output::{Answer, Failure};
+use crate::output::{Answer, Console, Failure};
 use crate::plan_file::{self, describe};
+use crate::simulation::{self, Extent, Outcome, Process, ProcessError, words};
 
 /// Answers `donelight plan …`.
 ///
 /// # Errors
 /// The file exists already or cannot be written; the plan cannot be read or is invalid.
-pub(super) fn run(plan: &Plan) -> Result<Answer, Failure> {
+pub(super) fn run(plan: &Plan, console: &Console) -> Result<Answer, Failure> {
     match plan {
         Plan::New { file, force } => new(file, *force),
-        Plan::Check { file } => check(file),
+        Plan::Check { file, studies, seed } => check(file, *studies, *seed, console),
     }
 }
 
@@ -34,12 +37,42 @@ fn new(file: &Path, force: bool) -> Result<Answer, Failure> {
     ))
 }
 
-fn check(file: &Path) -> Result<Answer, Failure> {
+fn check(file: &Path, studies: Option<u32>, seed: u64, console: &Console) -> Result<Answer, Failure> {
     let plan = plan_file::read(file)?;
+    let processes = simulation::usual_processes(&plan);
+    let studies = studies.unwrap_or_else(|| simulation::usual_studies(&plan, &processes));
+    let extent = Extent { seed, studies };
+    let (words, simulated) = match simulate(&plan, &processes, extent, console) {
+        Ok(outcomes) => (words::text(&plan, extent, &outcomes), words::json(extent, &outcomes)),
+        Err(error) => (format!("Not simulated: {error}."), json!({ "refused": error.to_string() })),
+    };
     let mut json = describe::json(&plan);
     if let Some(object) = json.as_object_mut() {
         object.insert("file".to_owned(), json!(file.to_string_lossy()));
         object.insert("valid".to_owned(), json!(true));
+        object.insert("simulation".to_owned(), simulated);
     }
-    Ok(Answer::done(format!("{} is a valid plan.\n\n{}", file.display(), describe::summary(&plan)), json))
+    let text = format!("{} is a valid plan.\n\n{}\n\n{words}", file.display(), describe::summary(&plan));
+    Ok(Answer::done(text, json))
+}
+
+fn simulate(
+    plan: &plan::Plan,
+    processes: &[Process],
+    extent: Extent,
+    console: &Console,
+) -> Result<Vec<Outcome>, ProcessError> {
+    let bar = if console.json() { ProgressBar::hidden() } else { progress_bar() };
+    bar.set_length(u64::from(extent.studies) * processes.len() as u64);
+    let done = |studies: u32| bar.inc(studies.into());
+    let outcomes =
+        processes.iter().map(|&process| simulation::simulate(plan, process, extent, &done)).collect();
+    bar.finish_and_clear();
+    outcomes
+}
+
+/// On a terminal only.
+fn progress_bar() -> ProgressBar {
+    let style = ProgressStyle::with_template("{bar:40} {pos} of {len} studies  {eta}");
+    ProgressBar::new(0).with_style(style.unwrap_or_else(|_| ProgressStyle::default_bar()))
 }

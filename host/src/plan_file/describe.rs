@@ -131,11 +131,6 @@ fn remarks(plan: &Plan) -> Vec<String> {
             ));
         }
     }
-    remarks.push(
-        "Sized for the very index it finds, a study reaches its precision at the planned count in about half of all \
-         cases (own simulation: 41 % to 65 %); else a few pieces more are needed. Leave room below the limit."
-            .to_owned(),
-    );
     remarks.push(format!(
         "{} All of it supposes a stable process and readings near to normal.",
         words::coverage(plan.kind)

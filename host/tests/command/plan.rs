@@ -34,7 +34,8 @@ fn a_new_plan_is_valid_and_is_not_written_over_a_file_that_is_there() {
 fn a_valid_plan_is_answered_in_json_with_what_it_takes() {
     let folder = tempfile::tempdir().unwrap();
     run(&["plan", "new", "plan.toml"], folder.path()).ends_with(0);
-    let json = run(&["plan", "check", "plan.toml", "--json"], folder.path()).ends_with(0).json();
+    let check = ["plan", "check", "plan.toml", "--studies", "100", "--json"];
+    let json = run(&check, folder.path()).ends_with(0).json();
     assert_eq!(json["valid"], true);
     assert_eq!(json["planned"], 212);
     assert_eq!(json["resolution"], "0.001");
@@ -101,4 +102,68 @@ fn a_plan_that_cannot_be_read_or_written_is_refused_with_advice() {
     let answer = run(&["plan", "new", ".", "--force"], folder.path()).ends_with(1);
     assert!(answer.err.contains("cannot write ."), "{}", answer.err);
     assert!(Path::new(folder.path()).is_dir());
+}
+
+#[test]
+fn a_valid_plan_is_simulated_with_the_seed_and_the_extent_that_are_asked_for() {
+    let folder = tempfile::tempdir().unwrap();
+    run(&["plan", "new", "plan.toml"], folder.path()).ends_with(0);
+    let check = ["plan", "check", "plan.toml", "--studies", "300", "--seed", "5"];
+    let simulation = |seed| {
+        let arguments = [&check[..6], &[seed, "--json"]].concat();
+        run(&arguments, folder.path()).ends_with(0).json()["simulation"].clone()
+    };
+    let simulated = simulation("5");
+    assert_eq!((&simulated["seed"], &simulated["studies"]), (&5.into(), &300.into()));
+    let cases = simulated["cases"].as_array().unwrap();
+    let told: Vec<(f64, f64)> = cases
+        .iter()
+        .map(|case| (case["true_index"].as_f64().unwrap(), case["offset"].as_f64().unwrap()))
+        .collect();
+    assert_eq!(told, [(1.0, 0.0), (1.0, 1.0), (1.33, 0.0), (1.33, 1.0), (1.67, 0.0), (1.67, 1.0)]);
+    for case in cases {
+        let figure = |key: &str| case[key].as_f64().unwrap_or_else(|| panic!("{key} of {case}"));
+        // Within five standard errors of the promise of 95 %.
+        let (coverage, error) = (figure("coverage"), figure("coverage_se"));
+        assert!((coverage - 0.95).abs() < 5.0 * error && error < 0.03, "{case}");
+        assert!(figure("bias").abs() < 0.05, "{case}");
+        let [median, p95, most] = ["n_median", "n_p95", "n_max"].map(figure);
+        assert!(212.0 <= median && median <= p95 && p95 <= most && most <= 240.0, "{case}");
+        assert!((0.0..=1.0).contains(&figure("spent")) && figure("n_mean") <= most, "{case}");
+    }
+    assert_eq!(simulation("5"), simulated);
+    assert_ne!(simulation("6"), simulated);
+
+    let words = run(&check, folder.path()).ends_with(0).out;
+    assert!(words.contains("300 studies of each process") && words.contains("seed 5"), "{words}");
+    assert!(words.contains("If Cpk is 1.33, expect 218 pieces; 222 are enough"), "{words}");
+    for studies in ["0", "10000001", "many"] {
+        run(&["plan", "check", "plan.toml", "--studies", studies], folder.path()).ends_with(2);
+    }
+}
+
+#[test]
+fn a_plan_whose_readings_no_gauge_can_count_is_checked_without_a_simulation() {
+    let folder = tempfile::tempdir().unwrap();
+    let text = "\
+name = \"Wide\"
+resolution = \"1\"
+
+[specification]
+lower = \"-999999999999\"
+upper = \"999999999999\"
+
+[capability]
+index = \"cpk\"
+
+[stop]
+planned = 212
+precision = \"10%\"
+limit = 240
+";
+    fs::write(folder.path().join("plan.toml"), text).unwrap();
+    let answer = run(&["plan", "check", "plan.toml"], folder.path()).ends_with(0);
+    assert!(answer.out.contains("Not simulated: readings would go beyond 10^12 steps"), "{}", answer.out);
+    let json = run(&["plan", "check", "plan.toml", "--json"], folder.path()).ends_with(0).json();
+    assert!(json["simulation"]["refused"].as_str().unwrap().contains("10^12"), "{json}");
 }

@@ -1,0 +1,86 @@
+//! One simulated study, from the first reading to the end that the plan's rule gives it, through the core's own code.
+
+use donelight_core::capability::Sample;
+use donelight_core::counts::Counts;
+use donelight_core::interval::{self, Estimate};
+use donelight_core::moments::Moments;
+use donelight_core::plan::Plan;
+use donelight_core::quantity::Count;
+use donelight_core::stopping::Standing;
+
+use super::bar::Bar;
+use super::process::{Gauged, Process, ProcessError};
+use super::random::Deviates;
+
+/// How a study ended.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct End {
+    /// Readings at the end.
+    pub(super) n: Count,
+    /// Settled or spent.
+    pub(super) standing: Standing,
+    /// The interval at the end; `None` if all readings were alike.
+    pub(super) estimate: Option<Estimate>,
+}
+
+/// What the studies of one process have in common.
+pub(super) struct Studies<'a> {
+    plan: &'a Plan,
+    gauged: Gauged,
+    deviates: Deviates,
+    bar: Bar<'a>,
+}
+
+impl<'a> Studies<'a> {
+    pub(super) fn new(plan: &'a Plan, process: &Process, seed: u64) -> Result<Self, ProcessError> {
+        let gauged = process.before(plan)?;
+        Ok(Self { plan, gauged, deviates: Deviates::new(seed), bar: Bar::new(plan) })
+    }
+
+    /// The study of this number.
+    pub(super) fn run(&self, study: u32) -> End {
+        self.run_judged(study, |moments| !self.bar.rules_out(moments, &self.gauged))
+    }
+
+    /// The same, and at how many readings the interval was computed.
+    #[cfg(test)]
+    pub(super) fn run_counted(&self, study: u32) -> (End, u32) {
+        let looks = std::cell::Cell::new(0);
+        let end = self.run_judged(study, |moments| {
+            let open = !self.bar.rules_out(moments, &self.gauged);
+            looks.set(looks.get() + u32::from(open));
+            open
+        });
+        (end, looks.get())
+    }
+
+    /// The same; the interval is computed only where `can_settle` says so.
+    pub(super) fn run_judged(&self, study: u32, can_settle: impl Fn(&Moments) -> bool) -> End {
+        let rule = &self.plan.rule;
+        let mut moments = Moments::default();
+        for pair in 0.. {
+            for z in self.deviates.pair(study, pair) {
+                // `Process::before` keeps every reading within range, and the rule ends at its limit, a `Count`.
+                let counts = Counts::new(self.gauged.centre.get() + self.gauged.reading(z));
+                moments.add(counts.expect("in range")).expect("below the limit");
+                let n = moments.n();
+                let mut estimate = None;
+                let standing = rule.judge(n, || {
+                    estimate = if can_settle(&moments) { self.estimate(&moments) } else { None };
+                    estimate
+                });
+                if standing != Standing::Gathering {
+                    return End { n, standing, estimate: estimate.or_else(|| self.estimate(&moments)) };
+                }
+            }
+        }
+        unreachable!("every study ends at its limit, far before the pairs do")
+    }
+
+    /// As a station gets it: see `donelight_core::station::Study::estimate`.
+    fn estimate(&self, moments: &Moments) -> Option<Estimate> {
+        let plan = self.plan;
+        let sample = Sample::from_moments(moments, plan.resolution, plan.specification()).ok()?;
+        interval::with_quantile(&sample, plan.index, plan.quantile()).ok()
+    }
+}
