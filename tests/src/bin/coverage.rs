@@ -84,7 +84,7 @@ fn page(extent: Extent) -> String {
 }
 
 fn questions() -> impl Iterator<Item = (&'static str, &'static str)> {
-    ["cpk", "cpu", "cp"].into_iter().flat_map(|index| KINDS.map(|kind| (index, kind)))
+    ["Cpk", "Cpu", "Cp"].into_iter().flat_map(|index| KINDS.map(|kind| (index, kind)))
 }
 
 /// The plan, measured on each process.
@@ -92,13 +92,13 @@ fn tried(index: &str, kind: &str, planned: u32, precision: &str, limit: u32, ext
     eprintln!("{index}, {kind}, from {planned} pieces on, {precision}");
     let text = plan_file::EXAMPLE
         .replace("\"0.001\"", "\"0.000001\"")
-        .replace("index = \"cpk\"", &format!("index = \"{index}\""))
+        .replace("index = \"cpk\"", &format!("index = \"{}\"", index.to_lowercase()))
         .replace("kind = \"two-sided\"", &format!("kind = \"{kind}\""))
         .replace("planned = 212", &format!("planned = {planned}"))
         .replace("precision = \"10%\"", &format!("precision = \"{precision}\""))
         .replace("limit = 240", &format!("limit = {limit}"));
     let plan = plan_file::from_text(&text).expect("the plan is valid");
-    let offsets = if index == "cpk" { &OFFSETS[..] } else { &OFFSETS[..1] };
+    let offsets = if index == "Cpk" { &OFFSETS[..] } else { &OFFSETS[..1] };
     INDICES
         .iter()
         .flat_map(|&true_index| offsets.iter().map(move |&offset| Process { true_index, offset }))
