@@ -11,7 +11,7 @@ fn every_command_helps_with_what_it_takes() {
         ("size precision", "--index --at --within --confidence --kind Examples:"),
         ("size power", "--claim --against --alpha --power Examples:"),
         ("plan new", "--force Example:"),
-        ("plan check", "Example:"),
+        ("plan check", "--studies --seed Examples:"),
         ("station", "list status load pull clock blink"),
         ("station pull", "--ledger --port"),
         ("virtual", "--store --process --feed --seed --rate"),
