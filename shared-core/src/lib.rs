@@ -24,6 +24,7 @@ extern crate std;
 
 pub mod capability;
 pub mod counts;
+pub mod estimator;
 #[cfg(test)]
 mod flash_model;
 pub mod gauge;

@@ -22,6 +22,8 @@ pub struct Sample {
     width: Option<f64>,
     /// τ̂ = √((1/n) Σ(x − T)²).
     deviation_from_target: Option<f64>,
+    /// Mean − T.
+    above_target: Option<f64>,
 }
 
 /// Why readings or a summary give no capability yet.
@@ -112,6 +114,7 @@ impl Sample {
                 .target()
                 .and_then(|target| moments.mean_square_about(target, resolution))
                 .map(libm::sqrt),
+            above_target: specification.target().and_then(to).map(|distance| -distance),
         })
     }
 
@@ -152,6 +155,7 @@ impl Sample {
             below_upper: specification.upper().map(|upper| upper.to_f64() - mean),
             width: width(specification),
             deviation_from_target,
+            above_target: specification.target().map(|target| mean - target.to_f64()),
         })
     }
 
@@ -177,6 +181,16 @@ impl Sample {
     #[must_use]
     pub const fn sigma(&self) -> f64 {
         self.sigma
+    }
+
+    /// δ̂² = (x̄ − T)²/σ̂ₙ², with σ̂ₙ² = τ̂² − (x̄ − T)² the mean square about the mean; infinite if all spread is distance
+    /// from the target. `None` without a target.
+    #[must_use]
+    pub fn squared_offset_from_target(&self) -> Option<f64> {
+        let (deviation, offset) = self.deviation_from_target.zip(self.above_target)?;
+        // As a ratio, so that nothing overflows; rounding must not make it exceed 1.
+        let share = (offset / deviation) * (offset / deviation);
+        Some(if share < 1.0 { share / (1.0 - share) } else { f64::INFINITY })
     }
 
     /// The estimate of an index. Cpk and its one-sided parts are negative when the mean lies outside the limits.

@@ -1,11 +1,18 @@
 //! Confidence intervals of capability indices: what they are, and the one way to compute them. One file a method.
 
 pub mod bissell;
+pub mod boyles;
+pub mod chi_square;
+pub mod exact;
+mod method;
+pub mod noncentral_t;
 
 use core::fmt;
 use core::str::FromStr;
 
 use serde::{Deserialize, Serialize};
+
+pub use method::{Evidence, Method, MethodError, Promise, UnknownMethod, interval as by_method, limit};
 
 use crate::capability::{Index, IndexError, Sample};
 use crate::quantity::{Confidence, Count, DegreesOfFreedom};
@@ -26,6 +33,15 @@ pub enum Kind {
 
 impl Kind {
     const ALL: [Self; 3] = [Self::TwoSided, Self::Lower, Self::Upper];
+
+    /// The risk that each end of the interval carries: half of it if there are two.
+    #[must_use]
+    pub fn risk_on_a_side(self, confidence: Confidence) -> f64 {
+        match self {
+            Self::TwoSided => confidence.risk() / 2.0,
+            Self::Lower | Self::Upper => confidence.risk(),
+        }
+    }
 
     /// The name as it is written: two-sided, lower, upper.
     #[must_use]
@@ -99,11 +115,7 @@ impl Quantile {
     /// z of half the risk for a two-sided interval, of the whole risk for a bound.
     #[must_use]
     pub fn new(confidence: Confidence, kind: Kind) -> Self {
-        let risk = match kind {
-            Kind::TwoSided => confidence.risk() / 2.0,
-            Kind::Lower | Kind::Upper => confidence.risk(),
-        };
-        Self { z: normal::upper_quantile(risk), kind }
+        Self { z: normal::upper_quantile(kind.risk_on_a_side(confidence)), kind }
     }
 
     /// The plain number, 0 or more.

@@ -8,6 +8,7 @@ pub(crate) mod gamma;
 pub mod noncentral_chi_square;
 pub mod noncentral_t;
 pub mod normal;
+pub(crate) mod quadrature;
 pub mod student_t;
 
 /// The two tails of a distribution at a point. The smaller one is computed as such, the larger is what it leaves.

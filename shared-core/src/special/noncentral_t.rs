@@ -82,11 +82,11 @@ pub fn noncentrality(side: Side, tail: f64, t: f64, nu: f64) -> (f64, u32) {
         let sign = side.sign();
         let at = NormalScale::new(sums.tail, sign * sums.density, sign * sums.density_x);
         let miss = at.z - goal;
-        let root_above = (miss > 0.0) == (side == Side::Upper);
-        delta = bracket.step(delta, root_above, at.halley(miss, centre - delta));
+        let step = at.halley(miss, centre - delta);
         if miss.abs() < SETTLED {
-            break;
+            return (delta + step, integrals);
         }
+        delta = bracket.step(delta, (miss > 0.0) == (side == Side::Upper), step);
     }
     (delta, integrals)
 }
@@ -135,11 +135,12 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
         let (reached, slope, bend) = tail_along_t(side, t, nu, delta);
         let at = NormalScale::new(reached, slope, bend).along(libm::sqrt(1.0 + t * t / nu), t / nu);
         let miss = at.z - goal;
-        let root_above = (miss < 0.0) == (side == Side::Upper);
-        y = bracket.step(y, root_above, at.halley(miss, centre - y));
+        let step = at.halley(miss, centre - y);
         if miss.abs() < SETTLED {
+            y += step;
             break;
         }
+        y = bracket.step(y, (miss < 0.0) == (side == Side::Upper), step);
     }
     root * libm::sinh(y / root)
 }

@@ -1,0 +1,245 @@
+//! The methods by which an interval can be computed, which index each suits, and the one way to call them.
+
+use core::fmt;
+use core::str::FromStr;
+
+use serde::{Deserialize, Serialize};
+
+use super::{Estimate, Interval, Kind, bissell, boyles, chi_square, exact, noncentral_t};
+use crate::capability::{Index, IndexError, Sample};
+use crate::quantity::{Confidence, Count, DegreesOfFreedom};
+use crate::special::{Side, normal};
+
+/// How an interval is computed. Variants are only ever added at the end.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+#[serde(rename_all = "kebab-case")]
+pub enum Method {
+    /// [`chi_square`]: Cp and Cpm.
+    ChiSquare,
+    /// [`noncentral_t`]: Cpl and Cpu; for Cpk each end as if one limit mattered.
+    NoncentralT,
+    /// [`bissell`]: Cpk, Cpl and Cpu, approximate; Cp without the term of the mean.
+    Bissell,
+    /// [`exact`]: Cpk.
+    Exact,
+    /// [`boyles`]: Cpm, approximate.
+    Boyles,
+}
+
+/// What a method promises of an index.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Promise {
+    /// The interval covers with exactly the confidence.
+    Exact,
+    /// It covers with the confidence or more.
+    Conservative,
+    /// It covers with about the confidence, more or less.
+    Approximate,
+}
+
+impl Method {
+    /// All methods, in the order in which they are listed.
+    pub const ALL: [Self; 5] = [Self::ChiSquare, Self::NoncentralT, Self::Bissell, Self::Exact, Self::Boyles];
+
+    /// The name as it is written.
+    #[must_use]
+    pub const fn name(self) -> &'static str {
+        match self {
+            Self::ChiSquare => "chi-square",
+            Self::NoncentralT => "noncentral-t",
+            Self::Bissell => "bissell",
+            Self::Exact => "exact",
+            Self::Boyles => "boyles",
+        }
+    }
+
+    /// The method that an index gets if none is named: what is exact where there is such, the guaranteed lower limit for a
+    /// claim "Cpk is at least", the guaranteed upper limit, and Bissell's interval for a two-sided picture of Cpk.
+    #[must_use]
+    pub const fn default_for(index: Index, kind: Kind) -> Self {
+        match (index, kind) {
+            (Index::Cp | Index::Cpm, _) => Self::ChiSquare,
+            (Index::Cpl | Index::Cpu, _) | (Index::Cpk, Kind::Lower) => Self::NoncentralT,
+            (Index::Cpk, Kind::Upper) => Self::Exact,
+            (Index::Cpk, Kind::TwoSided) => Self::Bissell,
+        }
+    }
+
+    /// What the method promises of an index and a kind of interval; `None` if it does not suit the index.
+    #[must_use]
+    pub const fn promise(self, index: Index, kind: Kind) -> Option<Promise> {
+        Some(match (self, index, kind) {
+            (Self::ChiSquare, Index::Cp, _) | (Self::NoncentralT, Index::Cpl | Index::Cpu, _) => {
+                Promise::Exact
+            }
+            (Self::NoncentralT, Index::Cpk, Kind::Lower)
+            | (Self::Exact, Index::Cpk, _)
+            | (Self::ChiSquare, Index::Cpm, _) => Promise::Conservative,
+            (Self::Bissell, Index::Cp | Index::Cpk | Index::Cpl | Index::Cpu, _)
+            | (Self::NoncentralT, Index::Cpk, _)
+            | (Self::Boyles, Index::Cpm, _) => Promise::Approximate,
+            _ => return None,
+        })
+    }
+}
+
+impl fmt::Display for Method {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.pad(self.name())
+    }
+}
+
+/// A word that names no method.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub struct UnknownMethod;
+
+impl fmt::Display for UnknownMethod {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str("unknown method; write chi-square, noncentral-t, bissell, exact or boyles")
+    }
+}
+
+impl core::error::Error for UnknownMethod {}
+
+impl FromStr for Method {
+    type Err = UnknownMethod;
+
+    fn from_str(text: &str) -> Result<Self, UnknownMethod> {
+        Self::ALL.into_iter().find(|method| method.name().eq_ignore_ascii_case(text)).ok_or(UnknownMethod)
+    }
+}
+
+/// Why a method gives no interval.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub enum MethodError {
+    /// There is no estimate either.
+    Index(IndexError),
+    /// The method does not suit the index.
+    Unsuited {
+        /// The method asked for.
+        method: Method,
+        /// The index asked for.
+        index: Index,
+    },
+    /// The degrees of freedom behind sigma lie outside 1 to 10⁶.
+    DegreesOfFreedom,
+}
+
+impl fmt::Display for MethodError {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::Index(error) => error.fmt(f),
+            Self::Unsuited { method, index } => {
+                let choose = match index {
+                    Index::Cp => "chi-square or bissell",
+                    Index::Cpl | Index::Cpu => "noncentral-t or bissell",
+                    Index::Cpk => "exact, noncentral-t or bissell",
+                    Index::Cpm => "chi-square or boyles",
+                };
+                write!(f, "the method {method} does not suit {index}; choose {choose}")
+            }
+            Self::DegreesOfFreedom => {
+                f.write_str("sigma rests on fewer than 1 or more than a million degrees of freedom; measure more or fewer pieces")
+            }
+        }
+    }
+}
+
+impl core::error::Error for MethodError {}
+
+impl From<IndexError> for MethodError {
+    fn from(error: IndexError) -> Self {
+        Self::Index(error)
+    }
+}
+
+/// An estimate and what it rests on.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Evidence {
+    /// The index that was estimated.
+    pub index: Index,
+    /// Its estimate.
+    pub estimate: f64,
+    /// Pieces behind the mean, and behind τ̂ of Cpm.
+    pub n: Count,
+    /// Degrees of freedom behind sigma.
+    pub nu: DegreesOfFreedom,
+    /// δ̂², the squared distance of the mean from the target in standard deviations (with n); of Cpm only.
+    pub squared_offset: f64,
+}
+
+impl Evidence {
+    /// What a sample says of an index.
+    ///
+    /// # Errors
+    /// As for [`Sample::estimate`].
+    pub fn of(sample: &Sample, index: Index) -> Result<Self, IndexError> {
+        Ok(Self {
+            index,
+            estimate: sample.estimate(index)?,
+            n: sample.n(),
+            nu: sample.nu(),
+            squared_offset: sample.squared_offset_from_target().unwrap_or(0.0),
+        })
+    }
+}
+
+/// One end of an interval: a fraction `risk` lies beyond it.
+///
+/// # Errors
+/// The method does not suit the index, ν lies outside 1 to 10⁶, or the limit exceeds the range of doubles.
+pub fn limit(method: Method, evidence: &Evidence, side: Side, risk: f64) -> Result<f64, MethodError> {
+    let Evidence { index, estimate, n, nu, squared_offset } = *evidence;
+    if !(1.0..=1e6).contains(&nu.get()) {
+        return Err(MethodError::DegreesOfFreedom);
+    }
+    let away = match side {
+        Side::Lower => -1.0,
+        Side::Upper => 1.0,
+    };
+    let limit = match (method, index) {
+        (Method::ChiSquare, Index::Cp) => chi_square::limit(estimate, nu.get(), side, risk),
+        (Method::ChiSquare, Index::Cpm) => chi_square::limit(estimate, f64::from(n.get()), side, risk),
+        (Method::NoncentralT, Index::Cpk | Index::Cpl | Index::Cpu) => {
+            noncentral_t::limit(estimate, n, nu, side, risk)
+        }
+        (Method::Bissell, Index::Cpk | Index::Cpl | Index::Cpu) => {
+            estimate + away * normal::upper_quantile(risk) * bissell::standard_error(estimate, n, nu)
+        }
+        (Method::Bissell, Index::Cp) => {
+            estimate + away * normal::upper_quantile(risk) * bissell::standard_error_of_spread(estimate, nu)
+        }
+        (Method::Exact, Index::Cpk) => exact::limit(estimate, n, nu, side, risk),
+        (Method::Boyles, Index::Cpm) => boyles::limit(estimate, n, squared_offset, side, risk),
+        _ => return Err(MethodError::Unsuited { method, index }),
+    };
+    if limit.is_finite() { Ok(limit) } else { Err(IndexError::NotFinite.into()) }
+}
+
+/// The interval of an index by a method.
+///
+/// # Errors
+/// As for [`limit`].
+pub fn interval(
+    method: Method,
+    evidence: &Evidence,
+    confidence: Confidence,
+    kind: Kind,
+) -> Result<Estimate, MethodError> {
+    let risk = kind.risk_on_a_side(confidence);
+    let end = |side, wanted: bool| {
+        if wanted { limit(method, evidence, side, risk).map(Some) } else { Ok(None) }
+    };
+    let interval = Interval {
+        low: end(Side::Lower, kind != Kind::Upper)?,
+        high: end(Side::Upper, kind != Kind::Lower)?,
+    };
+    let estimate = evidence.estimate;
+    Ok(Estimate { estimate, interval, half_width: interval.half_width(estimate) })
+}
+
+#[cfg(test)]
+mod tests;
