@@ -68,6 +68,60 @@ impl Study {
     }
 }
 
+impl Study {
+    /// The y with P(Ĉpk ≤ y) = `p`, for `p` from 10^-12 to 1 − 10^-12.
+    #[must_use]
+    pub fn quantile(&self, p: f64) -> f64 {
+        self.point(normal::quantile(p), |delta| noncentral_t::quantile(p, self.nu.get(), delta))
+    }
+
+    /// The y with P(Ĉpk > y) = `risk`.
+    #[must_use]
+    pub fn upper_quantile(&self, risk: f64) -> f64 {
+        self.point(normal::upper_quantile(risk), |delta| {
+            noncentral_t::upper_quantile(risk, self.nu.get(), delta)
+        })
+    }
+
+    /// The y whose lower tail is that of z: by secants on the normal scale, from above, where the single limit has it.
+    fn point(&self, goal: f64, one_limit: impl Fn(f64) -> f64) -> f64 {
+        let n = f64::from(self.n.get());
+        let root = 3.0 * libm::sqrt(n);
+        let start = one_limit(root * self.cpk) / root;
+        if self.position == Position::OneLimit || !start.is_finite() {
+            return start;
+        }
+        let miss_at = |y| {
+            let Tails { lower, upper } = self.tails(y);
+            (if lower < 0.5 { normal::quantile(lower) } else { normal::upper_quantile(upper) }) - goal
+        };
+        let mut scale = libm::sqrt(1.0 / (9.0 * n) + start * start / (2.0 * self.nu.get()));
+        let (mut low, mut high) = (f64::NEG_INFINITY, f64::INFINITY);
+        let (mut y, mut miss) = (start, miss_at(start));
+        for _ in 0..100 {
+            let next = y - miss * scale;
+            if !(miss.abs() > 1e-9) {
+                return next;
+            }
+            if miss > 0.0 {
+                high = y;
+            } else {
+                low = y;
+            }
+            let inside = next > low && next < high;
+            let next =
+                if inside { next } else { 0.5 * (low.max(y - 8.0 * scale) + high.min(y + 8.0 * scale)) };
+            let next_miss = miss_at(next);
+            let secant = (next - y) / (next_miss - miss);
+            if secant > 0.0 && secant.is_finite() {
+                scale = secant;
+            }
+            (y, miss) = (next, next_miss);
+        }
+        y
+    }
+}
+
 /// P(Ĉpk ≤ y) of a centred process, and its derivative by the true Cpk. For y above zero.
 pub(crate) fn centred_lower_tail(y: f64, n: Count, nu: DegreesOfFreedom, cpk: f64) -> (f64, f64) {
     let root = 3.0 * libm::sqrt(f64::from(n.get()));

@@ -1,12 +1,17 @@
 //! How many pieces a study needs: by the precision of the interval, or by the power of a test.
 
+mod decision;
+mod design;
 pub mod power;
 pub mod precision;
 
 use core::fmt;
 
+pub use decision::{Span, Truth, truth};
+pub use design::Design;
+
 use crate::capability::Index;
-use crate::interval::IntervalError;
+use crate::interval::{IntervalError, MethodError};
 use crate::quantity::{Count, DegreesOfFreedom};
 
 /// Why there is no sample size.
@@ -27,6 +32,12 @@ pub enum SizingError {
     AboveLimit,
     /// No method for this index yet.
     NoMethodYet(Index),
+    /// The method does not suit the index, or gives no limit.
+    Method(MethodError),
+    /// A subgroup of one piece, or of more than 1000.
+    SubgroupOutOfRange,
+    /// A distance from the target below zero or above 100 sigmas.
+    OffsetOutOfRange,
 }
 
 impl fmt::Display for SizingError {
@@ -44,6 +55,11 @@ impl fmt::Display for SizingError {
             Self::NoMethodYet(index) => {
                 return write!(f, "no sample size for {index} yet; choose cpk, cpl, cpu or cp");
             }
+            Self::Method(error) => return error.fmt(f),
+            Self::SubgroupOutOfRange => "a subgroup has 2 to 1000 pieces; give one such as 5, or none",
+            Self::OffsetOutOfRange => {
+                "the distance of the mean from the target must be 0 to 100 sigmas; give one such as 0.5"
+            }
         })
     }
 }
@@ -55,6 +71,15 @@ impl From<IntervalError> for SizingError {
         match error {
             IntervalError::NoMethodYet(index) => Self::NoMethodYet(index),
             IntervalError::Index(_) => Self::IndexOutOfRange,
+        }
+    }
+}
+
+impl From<MethodError> for SizingError {
+    fn from(error: MethodError) -> Self {
+        match error {
+            MethodError::Index(_) => Self::IndexOutOfRange,
+            error => Self::Method(error),
         }
     }
 }
@@ -73,23 +98,35 @@ fn overall(n: Count) -> Result<DegreesOfFreedom, SizingError> {
 }
 
 /// The smallest n from 2 to [`Count::MAX`] that meets a demand which, once met, stays met as n grows.
-///
-/// Doubles n until the demand is met, then halves the gap: about 2 log2 n evaluations.
 fn smallest(meets: impl Fn(Count) -> Result<bool, SizingError>) -> Result<Count, SizingError> {
-    let mut unmet = Count::ONE;
-    let mut met = Count::ONE;
+    let count = |n| Count::new(n).ok_or(SizingError::AboveLimit);
+    count(search(2, Count::MAX.get(), |n| meets(count(n)?))?)
+}
+
+/// The smallest whole number from `first` to `most` that meets a demand which, once met, stays met.
+///
+/// Doubles the number until the demand is met, then halves the gap: about 2 log2 of the answer evaluations.
+fn search(
+    first: u32,
+    most: u32,
+    meets: impl Fn(u32) -> Result<bool, SizingError>,
+) -> Result<u32, SizingError> {
+    if meets(first)? {
+        return Ok(first);
+    }
+    let (mut unmet, mut met) = (first, first);
     loop {
-        met = match Count::new(met.get() * 2) {
-            Some(doubled) => doubled,
-            None if met < Count::MAX => Count::MAX,
-            None => return Err(SizingError::AboveLimit),
-        };
+        if unmet >= most {
+            return Err(SizingError::AboveLimit);
+        }
+        met = met.saturating_mul(2).min(most);
         if meets(met)? {
             break;
         }
         unmet = met;
     }
-    while let Some(middle) = between(unmet, met) {
+    while met - unmet > 1 {
+        let middle = unmet + (met - unmet) / 2;
         if meets(middle)? {
             met = middle;
         } else {
@@ -97,12 +134,6 @@ fn smallest(meets: impl Fn(Count) -> Result<bool, SizingError>) -> Result<Count,
         }
     }
     Ok(met)
-}
-
-/// A count halfway between two, if one lies strictly between.
-fn between(low: Count, high: Count) -> Option<Count> {
-    let middle = Count::new((low.get() + high.get()) / 2)?;
-    (middle > low).then_some(middle)
 }
 
 #[cfg(test)]

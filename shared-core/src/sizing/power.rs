@@ -4,11 +4,11 @@
 //! on the side of c1, the value that the test must detect. By the normal approximation of [`crate::interval::bissell`],
 //! for c1 below c0: critical value c0 − z(α) se(c0), power Φ((critical − c1) / se(c1)); mirrored for c1 above c0.
 
-use super::{SizingError, in_range, overall, smallest as search};
+use super::decision::{Decision, Outcome};
+use super::{Design, SizingError, in_range};
 use crate::capability::Index;
-use crate::interval::standard_error;
+use crate::interval::Method;
 use crate::quantity::{Confidence, Count, Millionths};
-use crate::special::normal;
 
 /// A sample size by power.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -40,11 +40,7 @@ pub fn smallest(
     alpha: Millionths,
     power: Confidence,
 ) -> Result<PowerSize, SizingError> {
-    let test = Test::new(index, claim, against, alpha)?;
-    let n = search(|n| Ok(test.at(n)?.power >= power.to_f64()))?;
-    let Outcome { power, critical } = test.at(n)?;
-    let before = n.previous().and_then(|before| test.at(before).ok());
-    Ok(PowerSize { n, achieved: power, achieved_before: before.map(|outcome| outcome.power), critical })
+    smallest_by(&by_bissell(index)?, claim, against, alpha, power)
 }
 
 /// The probability that n pieces reject the claim if the index is `against`.
@@ -58,42 +54,57 @@ pub fn power_at(
     against: f64,
     alpha: Millionths,
 ) -> Result<f64, SizingError> {
-    Ok(Test::new(index, claim, against, alpha)?.at(n)?.power)
+    power_by(n, &by_bissell(index)?, claim, against, alpha)
 }
 
-/// A test of a claim, checked, with its quantile.
-struct Test {
-    index: Index,
+/// The design of the functions that name no method.
+fn by_bissell(index: Index) -> Result<Design, SizingError> {
+    Design::new(index, Method::Bissell).map_err(|_| SizingError::NoMethodYet(index))
+}
+
+/// The smallest n at which a test by the design's method rejects the claim `claim` with probability `power` or more if the
+/// index is `against`, and with probability `alpha` (by that method) if the claim holds.
+///
+/// What the test really does, [`super::truth`] tells.
+///
+/// # Errors
+/// As for [`smallest`]; a method without a test.
+pub fn smallest_by(
+    design: &Design,
     claim: f64,
     against: f64,
-    z: f64,
+    alpha: Millionths,
+    power: Confidence,
+) -> Result<PowerSize, SizingError> {
+    let decision = checked(claim, against, alpha)?;
+    let n = design.smallest(|n| Ok(decision.at(n, design)?.power >= power.to_f64()))?;
+    let Outcome { power, critical } = decision.at(n, design)?;
+    let before = design.before(n).and_then(|before| decision.at(before, design).ok());
+    Ok(PowerSize { n, achieved: power, achieved_before: before.map(|outcome| outcome.power), critical })
 }
 
-struct Outcome {
-    power: f64,
-    critical: f64,
+/// The probability that n pieces reject the claim by the design's method if the index is `against`.
+///
+/// # Errors
+/// As for [`smallest_by`]; too few pieces.
+pub fn power_by(
+    n: Count,
+    design: &Design,
+    claim: f64,
+    against: f64,
+    alpha: Millionths,
+) -> Result<f64, SizingError> {
+    Ok(checked(claim, against, alpha)?.at(n, design)?.power)
 }
 
-impl Test {
-    fn new(index: Index, claim: f64, against: f64, alpha: Millionths) -> Result<Self, SizingError> {
-        let (claim, against) = (in_range(claim)?, in_range(against)?);
-        if claim == against {
-            return Err(SizingError::Indistinguishable);
-        }
-        if !(1..=500_000).contains(&alpha.0) {
-            return Err(SizingError::AlphaOutOfRange);
-        }
-        Ok(Self { index, claim, against, z: normal::upper_quantile(alpha.to_f64()) })
+/// A test of a claim whose numbers make sense.
+fn checked(claim: f64, against: f64, alpha: Millionths) -> Result<Decision, SizingError> {
+    let (claim, against) = (in_range(claim)?, in_range(against)?);
+    if claim == against {
+        return Err(SizingError::Indistinguishable);
     }
-
-    fn at(&self, n: Count) -> Result<Outcome, SizingError> {
-        let nu = overall(n)?;
-        let towards = if self.against < self.claim { -1.0 } else { 1.0 };
-        let critical = self.claim + towards * self.z * standard_error(self.index, self.claim, n, nu)?;
-        let margin = towards * (self.against - critical);
-        Ok(Outcome {
-            power: normal::cdf(margin / standard_error(self.index, self.against, n, nu)?),
-            critical,
-        })
+    if !(1..=500_000).contains(&alpha.0) {
+        return Err(SizingError::AlphaOutOfRange);
     }
+    Ok(Decision { claim, against, alpha: alpha.to_f64() })
 }
