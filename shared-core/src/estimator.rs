@@ -53,6 +53,10 @@ impl Study {
     pub fn tails(&self, y: f64) -> Tails {
         let root = 3.0 * libm::sqrt(f64::from(self.n.get()));
         let (nu, t, near) = (self.nu.get(), root * y, root * self.cpk);
+        if y.is_infinite() {
+            let upper = if y < 0.0 { 1.0 } else { 0.0 };
+            return Tails { lower: 1.0 - upper, upper };
+        }
         let offset = match self.position {
             Position::OneLimit => return noncentral_t::tails(t, nu, near),
             Position::Offset(offset) => offset,
@@ -100,7 +104,7 @@ impl Study {
         let (mut y, mut miss) = (start, miss_at(start));
         for _ in 0..100 {
             let next = y - miss * scale;
-            if !(miss.abs() > 1e-9) {
+            if miss.abs() <= 1e-9 || miss.is_nan() {
                 return next;
             }
             if miss > 0.0 {

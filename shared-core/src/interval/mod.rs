@@ -3,6 +3,7 @@
 pub mod bissell;
 pub mod boyles;
 pub mod chi_square;
+pub mod coverage;
 pub mod exact;
 mod method;
 pub mod noncentral_t;

@@ -1,0 +1,95 @@
+use super::*;
+use crate::capability::Index;
+use crate::interval::{Evidence, limit};
+use proptest::prelude::*;
+
+const LEVELS: [u32; 4] = [900_000, 950_000, 990_000, 999_000];
+
+fn level(millionths: u32) -> Confidence {
+    Confidence::from_millionths(millionths).unwrap()
+}
+
+fn overall(n: u32) -> (Count, DegreesOfFreedom) {
+    let n = Count::new(n).unwrap();
+    (n, DegreesOfFreedom::overall(n).unwrap())
+}
+
+/// What [`Promise::Conservative`](crate::interval::Promise) says of Cpm by chi-square: computed, not proven.
+#[test]
+fn the_conservative_interval_of_cpm_keeps_its_promise_wherever_the_mean_lies() {
+    for n in [2, 3, 4, 5, 7, 10, 15, 30, 100, 300, 1000] {
+        let n = Count::new(n).unwrap();
+        for confidence in LEVELS {
+            for kind in [Kind::TwoSided, Kind::Lower, Kind::Upper] {
+                for step in 0..=50 {
+                    let offset = 0.1 * f64::from(step);
+                    let coverage = of_cpm(level(confidence), kind, n, offset);
+                    let promise = level(confidence).to_f64();
+                    assert!(coverage >= promise - 1e-12, "{n:?} {confidence} {kind} {offset}: {coverage}");
+                    assert!(step > 0 || (coverage - promise).abs() < 1e-12);
+                }
+            }
+        }
+    }
+}
+
+/// The promises of the defaults that guarantee, for n from 5 and an index from 0.5 to 3 ("not more than 0.3 points
+/// below" would do; they are nowhere below).
+#[test]
+fn the_guaranteed_limits_of_cpk_keep_their_promise_at_every_position_of_the_mean() {
+    for n in [5, 8, 12, 30, 100, 1000] {
+        let (n, nu) = overall(n);
+        for cpk in [0.5, 1.0, 1.67, 3.0] {
+            for confidence in LEVELS {
+                for (method, kind) in [
+                    (Method::NoncentralT, Kind::Lower),
+                    (Method::Exact, Kind::Lower),
+                    (Method::Exact, Kind::Upper),
+                    (Method::Exact, Kind::TwoSided),
+                ] {
+                    let span = range_of_cpk(method, level(confidence), kind, n, nu, cpk).unwrap();
+                    assert!(span.from >= level(confidence).to_f64() - 1e-9, "{n:?} {cpk} {method} {span:?}");
+                }
+            }
+        }
+    }
+}
+
+#[test]
+fn a_coverage_is_not_told_where_it_is_not_known() {
+    let (n, nu) = overall(30);
+    let study = Study { n, nu, cpk: 1.0, position: Position::CENTRED };
+    for method in [Method::ChiSquare, Method::Boyles] {
+        assert_eq!(of_cpk(method, level(950_000), Kind::TwoSided, &study), None);
+    }
+    let (n, nu) = overall(2);
+    let study = Study { n, nu, cpk: 1.0, position: Position::CENTRED };
+    assert_eq!(of_cpk(Method::Bissell, level(950_000), Kind::Upper, &study), None);
+    assert_eq!(of_cpk(Method::Bissell, level(950_000), Kind::Lower, &study), Some(1.0));
+    let nu = DegreesOfFreedom::new(0.5).unwrap();
+    assert_eq!(of_cpk(Method::Exact, level(950_000), Kind::Upper, &Study { nu, ..study }), None);
+}
+
+proptest! {
+    /// The thresholds are where the limits themselves, computed another way, meet the true index.
+    #[test]
+    fn at_the_thresholds_the_limits_are_the_true_index(
+        n in 5_u32..1000, cpk in 0.3..3.0, confidence in 900_000_u32..999_000, pick in 0_usize..3,
+    ) {
+        let method = [Method::Bissell, Method::NoncentralT, Method::Exact][pick];
+        let (n, nu) = overall(n);
+        let confidence = level(confidence);
+        let Some(thresholds) = Thresholds::new(method, confidence, Kind::TwoSided, n, nu, cpk) else {
+            return Ok(());
+        };
+        let risk = confidence.risk() / 2.0;
+        for (estimate, side) in [(thresholds.low, Side::Upper), (thresholds.high, Side::Lower)] {
+            let evidence = Evidence { index: Index::Cpk, estimate: estimate.unwrap(), n, nu, squared_offset: 0.0 };
+            // An exact upper limit of an estimate below zero is a little higher than need be.
+            if evidence.estimate.is_finite() && (method != Method::Exact || evidence.estimate > 0.0) {
+                let met = limit(method, &evidence, side, risk).unwrap();
+                prop_assert!((met - cpk).abs() < 1e-9 * cpk, "{method} {side:?} {evidence:?}: {met}");
+            }
+        }
+    }
+}
