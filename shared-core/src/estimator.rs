@@ -36,7 +36,7 @@ pub struct Study {
     pub n: Count,
     /// Degrees of freedom behind sigma, from 1 to 10⁶.
     pub nu: DegreesOfFreedom,
-    /// The true Cpk, above zero.
+    /// The true Cpk, c. Below zero the mean lies beyond a limit, and the offset is −3c at least.
     pub cpk: f64,
     /// Where the mean lies.
     pub position: Position,
@@ -66,6 +66,10 @@ impl Study {
         if y <= 0.0 {
             let (near, far) = (noncentral_t::tails(t, nu, near).lower, noncentral_t::tails(t, nu, far).lower);
             return Tails { lower: near + far, upper: 1.0 - (near + far) };
+        }
+        if near + far <= 0.0 {
+            // Limits without a distance: no estimate is above zero.
+            return Tails { lower: 1.0, upper: 0.0 };
         }
         let lower = Both { nu, t, near, far }.lower_tail().tail;
         Tails { lower, upper: 1.0 - lower }
@@ -190,8 +194,10 @@ impl Both {
             let reached = self.t * libm::exp(u);
             let log_density = self.log_density(u);
             let density = weight * libm::exp(log_density);
-            sums.tail += density * (normal::cdf(reached - self.near) + normal::cdf(reached - self.far));
             let x = reached - self.near;
+            let near = normal::cdf(x);
+            let far = if self.far == self.near { near } else { normal::cdf(reached - self.far) };
+            sums.tail += density * (near + far);
             sums.density += weight * libm::exp(log_density - 0.5 * x * x);
         });
         let scale = libm::sqrt(self.nu / PI) * libm::exp(-gamma::stirling_error(0.5 * self.nu));

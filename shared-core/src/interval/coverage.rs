@@ -4,7 +4,7 @@
 //! values: the one whose upper limit is the true index, and the one whose lower limit is. The coverage is the probability
 //! between them.
 
-use super::{Kind, Method};
+use super::{Kind, Method, balanced};
 use crate::estimator::{Position, Study};
 use crate::quantity::{Confidence, Count, DegreesOfFreedom};
 use crate::special::{Side, Tails, chi_square, noncentral_chi_square, normal};
@@ -92,6 +92,10 @@ impl Thresholds {
         if !(1.0..=1e6).contains(&nu.get()) {
             return None;
         }
+        if (method, kind) == (Method::Balanced, Kind::TwoSided) {
+            let (low, high) = balanced::thresholds(n, nu, cpk, confidence.risk());
+            return Some(Self { low: Some(low), high: Some(high) });
+        }
         let risk = kind.risk_on_a_side(confidence);
         let one_limit = Study { n, nu, cpk, position: Position::OneLimit };
         let of = |side| match (method, side) {
@@ -101,7 +105,7 @@ impl Thresholds {
             (Method::Exact, Side::Upper) => {
                 Some(Study { position: Position::CENTRED, ..one_limit }.quantile(risk))
             }
-            (Method::ChiSquare | Method::Boyles, _) => None,
+            (Method::ChiSquare | Method::Boyles | Method::Balanced, _) => None,
         };
         // The lower limit is the true index at the highest estimate that is covered.
         let high = if kind == Kind::Upper { None } else { Some(of(Side::Lower)?) };

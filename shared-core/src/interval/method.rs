@@ -5,7 +5,7 @@ use core::str::FromStr;
 
 use serde::{Deserialize, Serialize};
 
-use super::{Estimate, Interval, Kind, bissell, boyles, chi_square, exact, noncentral_t};
+use super::{Estimate, Interval, Kind, balanced, bissell, boyles, chi_square, exact, noncentral_t};
 use crate::capability::{Index, IndexError, Sample};
 use crate::quantity::{Confidence, Count, DegreesOfFreedom};
 use crate::special::{Side, normal};
@@ -25,6 +25,8 @@ pub enum Method {
     Exact,
     /// [`boyles`]: Cpm, approximate.
     Boyles,
+    /// [`balanced`]: Cpk, two-sided.
+    Balanced,
 }
 
 /// What a method promises of an index.
@@ -51,18 +53,19 @@ impl Method {
             Self::Bissell => "bissell",
             Self::Exact => "exact",
             Self::Boyles => "boyles",
+            Self::Balanced => "balanced",
         }
     }
 
     /// The method that an index gets if none is named: what is exact where there is such, the guaranteed lower limit for a
-    /// claim "Cpk is at least", the guaranteed upper limit, and Bissell's interval for a two-sided picture of Cpk.
+    /// claim "Cpk is at least", the guaranteed upper limit, and the balanced interval for a two-sided picture of Cpk.
     #[must_use]
     pub const fn default_for(index: Index, kind: Kind) -> Self {
         match (index, kind) {
             (Index::Cp | Index::Cpm, _) => Self::ChiSquare,
             (Index::Cpl | Index::Cpu, _) | (Index::Cpk, Kind::Lower) => Self::NoncentralT,
             (Index::Cpk, Kind::Upper) => Self::Exact,
-            (Index::Cpk, Kind::TwoSided) => Self::Bissell,
+            (Index::Cpk, Kind::TwoSided) => Self::Balanced,
         }
     }
 
@@ -75,6 +78,7 @@ impl Method {
             }
             (Self::NoncentralT, Index::Cpk, Kind::Lower)
             | (Self::Exact, Index::Cpk, _)
+            | (Self::Balanced, Index::Cpk, Kind::TwoSided)
             | (Self::ChiSquare, Index::Cpm, _) => Promise::Conservative,
             (Self::Bissell, Index::Cp | Index::Cpk | Index::Cpl | Index::Cpu, _)
             | (Self::NoncentralT, Index::Cpk, _)
@@ -97,7 +101,7 @@ pub struct UnknownMethod;
 
 impl fmt::Display for UnknownMethod {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.write_str("unknown method; write chi-square, noncentral-t, bissell, exact or boyles")
+        f.write_str("unknown method; write chi-square, noncentral-t, bissell, exact, boyles or balanced")
     }
 }
 
@@ -126,6 +130,8 @@ pub enum MethodError {
     },
     /// The degrees of freedom behind sigma lie outside 1 to 10⁶.
     DegreesOfFreedom,
+    /// The method has no one-sided limits.
+    TwoSidedOnly,
 }
 
 impl fmt::Display for MethodError {
@@ -136,10 +142,13 @@ impl fmt::Display for MethodError {
                 let choose = match index {
                     Index::Cp => "chi-square or bissell",
                     Index::Cpl | Index::Cpu => "noncentral-t or bissell",
-                    Index::Cpk => "exact, noncentral-t or bissell",
+                    Index::Cpk => "balanced, exact, noncentral-t or bissell",
                     Index::Cpm => "chi-square or boyles",
                 };
                 write!(f, "the method {method} does not suit {index}; choose {choose}")
+            }
+            Self::TwoSidedOnly => {
+                f.write_str("the method balanced has two-sided intervals only; for a bound choose exact or noncentral-t")
             }
             Self::DegreesOfFreedom => {
                 f.write_str("sigma rests on fewer than 1 or more than a million degrees of freedom; measure more or fewer pieces")
@@ -214,6 +223,7 @@ pub fn limit(method: Method, evidence: &Evidence, side: Side, risk: f64) -> Resu
         }
         (Method::Exact, Index::Cpk) => exact::limit(estimate, n, nu, side, risk),
         (Method::Boyles, Index::Cpm) => boyles::limit(estimate, n, squared_offset, side, risk),
+        (Method::Balanced, Index::Cpk) => return Err(MethodError::TwoSidedOnly),
         _ => return Err(MethodError::Unsuited { method, index }),
     };
     if limit.is_finite() { Ok(limit) } else { Err(IndexError::NotFinite.into()) }
@@ -233,12 +243,28 @@ pub fn interval(
     let end = |side, wanted: bool| {
         if wanted { limit(method, evidence, side, risk).map(Some) } else { Ok(None) }
     };
-    let interval = Interval {
-        low: end(Side::Lower, kind != Kind::Upper)?,
-        high: end(Side::Upper, kind != Kind::Lower)?,
+    let interval = if (method, evidence.index, kind) == (Method::Balanced, Index::Cpk, Kind::TwoSided) {
+        both_ends(evidence, confidence.risk())?
+    } else {
+        Interval { low: end(Side::Lower, kind != Kind::Upper)?, high: end(Side::Upper, kind != Kind::Lower)? }
     };
     let estimate = evidence.estimate;
     Ok(Estimate { estimate, interval, half_width: interval.half_width(estimate) })
+}
+
+/// The balanced interval, whose ends depend on each other.
+fn both_ends(evidence: &Evidence, risk: f64) -> Result<Interval, MethodError> {
+    let Evidence { estimate, n, nu, .. } = *evidence;
+    if !(1.0..=1e6).contains(&nu.get()) {
+        return Err(MethodError::DegreesOfFreedom);
+    }
+    let interval = balanced::interval(estimate, n, nu, risk);
+    let finite = |end: Option<f64>| end.is_some_and(f64::is_finite);
+    if finite(interval.low) && finite(interval.high) {
+        Ok(interval)
+    } else {
+        Err(IndexError::NotFinite.into())
+    }
 }
 
 #[cfg(test)]

@@ -1,5 +1,6 @@
 //! Confidence intervals of capability indices: what they are, and the one way to compute them. One file a method.
 
+pub mod balanced;
 pub mod bissell;
 pub mod boyles;
 pub mod chi_square;

@@ -42,7 +42,9 @@ impl Decision {
             (Method::ChiSquare, _) => Ok(self.by_chi_square(nu.get())),
             (Method::NoncentralT, _) => Ok(self.by_noncentral_t(n, nu.get())),
             (Method::Exact, _) => Ok(self.exactly(n, nu)),
-            (method @ Method::Boyles, index) => Err(MethodError::Unsuited { method, index }.into()),
+            (method @ (Method::Boyles | Method::Balanced), index) => {
+                Err(MethodError::Unsuited { method, index }.into())
+            }
         }
     }
 

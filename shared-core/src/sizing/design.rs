@@ -20,7 +20,7 @@ impl Design {
     /// # Errors
     /// [`MethodError::Unsuited`] if the method does not suit the index.
     pub fn new(index: Index, method: Method) -> Result<Self, SizingError> {
-        match method.promise(index, Kind::Lower) {
+        match method.promise(index, Kind::TwoSided) {
             Some(_) => Ok(Self { index, method, subgroup: 1, squared_offset: 0.0 }),
             None => Err(MethodError::Unsuited { method, index }.into()),
         }

@@ -113,6 +113,12 @@ pub(super) fn tail(side: Side, t: f64, nu: f64, delta: f64) -> f64 {
     Integrand::new(side, t, nu, delta).sums::<false>().tail
 }
 
+/// How many nodes an integral takes.
+#[cfg(test)]
+pub(super) fn nodes(side: Side, t: f64, nu: f64, delta: f64) -> u32 {
+    Integrand::new(side, t, nu, delta).sums::<true>().nodes
+}
+
 /// The point that leaves `tail`, at most 1/2, on its side: Halley's method for the normal quantile of the tail as a
 /// function of √ν arsinh(t/√ν), in which it is nearly straight.
 fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {

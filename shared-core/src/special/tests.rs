@@ -71,6 +71,23 @@ fn no_noncentrality_leaves_the_central_chi_square() {
     }
 }
 
+/// What a limit costs on the device: at n = 300 at most two integrals of at most this many nodes, from a standing start.
+#[test]
+fn a_limit_at_300_pieces_takes_few_integrals_of_few_nodes() {
+    let (mut most_nodes, mut most_integrals) = (0, 0);
+    for index in [0.5, 1.0, 1.33, 1.67, 2.0, 3.0] {
+        for risk in [0.1, 0.05, 0.025, 0.005] {
+            for side in [Side::Lower, Side::Upper] {
+                let t = 3.0 * 300_f64.sqrt() * index;
+                let (delta, integrals) = noncentral_t::noncentrality(side, risk, t, 299.0);
+                most_integrals = integrals.max(most_integrals);
+                most_nodes = noncentral_t::nodes(side, t, 299.0, delta).max(most_nodes);
+            }
+        }
+    }
+    assert!(most_integrals <= 2 && most_nodes <= 90, "{most_integrals} integrals of {most_nodes} nodes");
+}
+
 proptest! {
     /// One degree of freedom: a squared normal. Two: an exponential.
     #[test]

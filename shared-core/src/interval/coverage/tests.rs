@@ -1,6 +1,6 @@
 use super::*;
 use crate::capability::Index;
-use crate::interval::{Evidence, limit};
+use crate::interval::{Evidence, by_method, limit};
 use proptest::prelude::*;
 
 const LEVELS: [u32; 4] = [900_000, 950_000, 990_000, 999_000];
@@ -46,11 +46,62 @@ fn the_guaranteed_limits_of_cpk_keep_their_promise_at_every_position_of_the_mean
                     (Method::Exact, Kind::Lower),
                     (Method::Exact, Kind::Upper),
                     (Method::Exact, Kind::TwoSided),
+                    (Method::Balanced, Kind::TwoSided),
                 ] {
                     let span = range_of_cpk(method, level(confidence), kind, n, nu, cpk).unwrap();
                     assert!(span.from >= level(confidence).to_f64() - 1e-9, "{n:?} {cpk} {method} {span:?}");
                 }
             }
+        }
+    }
+}
+
+/// What the module of the balanced interval proves and claims.
+#[test]
+fn the_balanced_interval_covers_exactly_at_both_ends_and_is_narrower_than_the_conservative_one() {
+    for n in [3, 5, 10, 30, 300] {
+        let (n, nu) = overall(n);
+        for cpk in [0.2, 0.5, 1.0, 1.5, 3.0] {
+            for confidence in LEVELS {
+                let at = |position| {
+                    let study = Study { n, nu, cpk, position };
+                    of_cpk(Method::Balanced, level(confidence), Kind::TwoSided, &study).unwrap()
+                };
+                for position in [Position::CENTRED, Position::OneLimit] {
+                    assert!(
+                        (at(position) - level(confidence).to_f64()).abs() < 1e-9,
+                        "{n:?} {cpk} {confidence}"
+                    );
+                }
+            }
+            let evidence = Evidence { index: Index::Cpk, estimate: cpk, n, nu, squared_offset: 0.0 };
+            let width = |method| {
+                let given = by_method(method, &evidence, level(950_000), Kind::TwoSided).unwrap();
+                given.interval.high.unwrap() - given.interval.low.unwrap()
+            };
+            let (balanced, exact) = (width(Method::Balanced), width(Method::Exact));
+            assert!(n.get() < 10 || balanced < exact, "{n:?} {cpk}");
+            assert!(n.get() < 10 || balanced < 1.02 * width(Method::Bissell), "{n:?} {cpk}");
+        }
+    }
+}
+
+/// ν and n apart, and a mean beyond its limits: a Cpk below zero has an interval by halves.
+#[test]
+fn the_balanced_interval_holds_with_few_degrees_of_freedom_and_below_zero() {
+    for (n, nu) in [(50, 40.0), (50, 12.5), (12, 3.0), (300, 240.0)] {
+        let (n, nu) = (Count::new(n).unwrap(), DegreesOfFreedom::new(nu).unwrap());
+        for cpk in [0.3, 1.0, 2.0] {
+            let span = range_of_cpk(Method::Balanced, level(950_000), Kind::TwoSided, n, nu, cpk).unwrap();
+            assert!(span.from >= 0.95 - 1e-9, "{n:?} {nu:?} {cpk} {span:?}");
+        }
+        // The mean lies −3c standard deviations beyond a limit at least: then ξ = −3c.
+        for cpk in [-0.05, -0.3, -1.0] {
+            let one_limit = Study { n, nu, cpk, position: Position::OneLimit };
+            let (low, high) = (one_limit.quantile(0.025), one_limit.upper_quantile(0.025));
+            let study = Study { position: Position::Offset(-3.0 * cpk), ..one_limit };
+            let missed = study.tails(low).lower + study.tails(high).upper;
+            assert!(missed <= 0.05 + 1e-9, "{n:?} {nu:?} {cpk} {missed}");
         }
     }
 }
@@ -74,9 +125,9 @@ proptest! {
     /// The thresholds are where the limits themselves, computed another way, meet the true index.
     #[test]
     fn at_the_thresholds_the_limits_are_the_true_index(
-        n in 5_u32..1000, cpk in 0.3..3.0, confidence in 900_000_u32..999_000, pick in 0_usize..3,
+        n in 5_u32..1000, cpk in 0.3..3.0, confidence in 900_000_u32..999_000, pick in 0_usize..4,
     ) {
-        let method = [Method::Bissell, Method::NoncentralT, Method::Exact][pick];
+        let method = [Method::Bissell, Method::NoncentralT, Method::Exact, Method::Balanced][pick];
         let (n, nu) = overall(n);
         let confidence = level(confidence);
         let Some(thresholds) = Thresholds::new(method, confidence, Kind::TwoSided, n, nu, cpk) else {
@@ -87,7 +138,12 @@ proptest! {
             let evidence = Evidence { index: Index::Cpk, estimate: estimate.unwrap(), n, nu, squared_offset: 0.0 };
             // An exact upper limit of an estimate below zero is a little higher than need be.
             if evidence.estimate.is_finite() && (method != Method::Exact || evidence.estimate > 0.0) {
-                let met = limit(method, &evidence, side, risk).unwrap();
+                let met = if method == Method::Balanced {
+                    let interval = by_method(method, &evidence, confidence, Kind::TwoSided).unwrap().interval;
+                    (if side == Side::Lower { interval.low } else { interval.high }).unwrap()
+                } else {
+                    limit(method, &evidence, side, risk).unwrap()
+                };
                 prop_assert!((met - cpk).abs() < 1e-9 * cpk, "{method} {side:?} {evidence:?}: {met}");
             }
         }

@@ -26,6 +26,8 @@ pub(super) struct Sums {
     pub(super) density_s: f64,
     /// E S² x φ(x).
     pub(super) density_ssx: f64,
+    /// How many nodes it took, each an expm1, an erfc and one exp, or two with slopes.
+    pub(super) nodes: u32,
 }
 
 /// −ln of the rule's relative error: 10^-15, with a factor 20 for what the bound of the growth leaves out.
@@ -104,6 +106,7 @@ impl Integrand {
             }
         }
         Sums {
+            nodes: sums.nodes,
             tail: scale * 0.5 * sums.tail,
             density: scale * INVERSE_ROOT * sums.density,
             density_x: scale * INVERSE_ROOT * sums.density_x,
@@ -118,6 +121,7 @@ impl Integrand {
         let log_density = self.nu * fall;
         let term = libm::exp(log_density) * libm::erfc(self.side.sign() * x / SQRT_2);
         sums.tail += term;
+        sums.nodes += 1;
         if SLOPES {
             let density = libm::exp(log_density - 0.5 * x * x);
             sums.density += density;
