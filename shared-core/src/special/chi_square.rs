@@ -4,7 +4,7 @@
 //! of Mathematical Functions, 8.7.1 and 8.9.2; from memory), each times a prefactor in the saddle-point form of Loader
 //! (2000). About 7 √ν terms near the mode, fewer in the tails.
 //!
-//! Measured against values of 52 digits (ν from 1 to 10⁵, tails to 10⁻¹²): ACCURACY.md.
+//! Measured against values of 52 digits (ν from 1 to 10⁶, tails to 10⁻¹²): ACCURACY.md.
 
 use super::{Side, Tails, gamma, halley_step, normal};
 

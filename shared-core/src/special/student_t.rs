@@ -1,7 +1,7 @@
 //! Student's t distribution: tails and quantiles, for ν from 1 to 10⁶, fractions allowed.
 //!
 //! It is the noncentral t distribution without noncentrality, and is computed as such ([`super::noncentral_t`]).
-//! Measured against values of 52 digits (ν from 1 to 10⁵, quantiles to 10⁻¹²): ACCURACY.md.
+//! Measured against values of 52 digits (ν from 1 to 10⁶, quantiles to 10⁻¹²): ACCURACY.md.
 
 use super::{Tails, noncentral_t};
 
