@@ -13,6 +13,7 @@ use serde::{Deserialize, Serialize};
 pub use sample::{IndexError, Sample, SampleError};
 
 use crate::counts::Decimal;
+use crate::sigma::Sigma;
 
 /// The specification: a lower limit, an upper limit or both, and perhaps a target within them.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
@@ -141,6 +142,24 @@ impl Index {
             Self::Cpu => "Cpu",
             Self::Cpk => "Cpk",
             Self::Cpm => "Cpm",
+        }
+    }
+}
+
+impl Index {
+    /// The name that the trade gives it with this sigma: Cp, Cpk (capability) for what lies within subgroups, Pp, Ppk
+    /// (performance) for all that varies. Cpm has no other.
+    ///
+    /// ISO 22514-1 and -2 and AIAG's Statistical Process Control name them so (from memory).
+    #[must_use]
+    pub const fn trade_name(self, sigma: Sigma) -> &'static str {
+        match self {
+            Self::Cpm => self.name(),
+            _ if sigma.is_within() => self.name(),
+            Self::Cp => "Pp",
+            Self::Cpl => "Ppl",
+            Self::Cpu => "Ppu",
+            Self::Cpk => "Ppk",
         }
     }
 }

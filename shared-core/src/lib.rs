@@ -37,6 +37,7 @@ pub mod quantity;
 mod ratio;
 pub mod record;
 pub mod recorder;
+pub mod sigma;
 pub mod sizing;
 pub mod special;
 pub mod station;

@@ -42,6 +42,9 @@ impl core::fmt::Display for MomentsError {
 impl core::error::Error for MomentsError {}
 
 impl Moments {
+    /// The sums of no reading.
+    pub(crate) const ZERO: Self = Self { n: Count::ZERO, sum: 0, sum_of_squares: 0 };
+
     /// How many readings.
     #[must_use]
     pub const fn n(&self) -> Count {
@@ -61,13 +64,7 @@ impl Moments {
     /// # Errors
     /// [`MomentsError::Impossible`] if what would remain cannot come from readings; nothing has changed then.
     pub fn take_back(&mut self, counts: Counts) -> Result<(), MomentsError> {
-        let one = Self::of(counts);
-        let n = self.n.previous().ok_or(MomentsError::Impossible)?;
-        // No overflow: |sum| ≤ 10^18 and |counts| ≤ 10^12.
-        let sum = self.sum - one.sum;
-        let sum_of_squares =
-            self.sum_of_squares.checked_sub(one.sum_of_squares).ok_or(MomentsError::Impossible)?;
-        *self = Self::checked(n, sum, sum_of_squares)?;
+        *self = self.without(&Self::of(counts))?;
         Ok(())
     }
 
@@ -143,8 +140,28 @@ impl Moments {
         limit.in_units_of(decimals) * i128::from(self.n.get()) - sum
     }
 
+    /// Σc.
+    pub(crate) const fn sum(&self) -> i64 {
+        self.sum
+    }
+
+    /// Σc².
+    pub(crate) const fn sum_of_squares(&self) -> u128 {
+        self.sum_of_squares
+    }
+
+    /// All readings but the `part`, or an error if they cannot be among them.
+    pub(crate) fn without(&self, part: &Self) -> Result<Self, MomentsError> {
+        let n =
+            self.n.get().checked_sub(part.n.get()).and_then(Count::new).ok_or(MomentsError::Impossible)?;
+        // No overflow: both are at most 10^18 in magnitude.
+        let sum = self.sum - part.sum;
+        let squares = self.sum_of_squares.checked_sub(part.sum_of_squares).ok_or(MomentsError::Impossible)?;
+        Self::checked(n, sum, squares)
+    }
+
     /// n Σc² − (Σc)², which is not negative (Cauchy–Schwarz; [`Moments::checked`] holds stored sums to it).
-    fn scatter(&self) -> u128 {
+    pub(crate) fn scatter(&self) -> u128 {
         u128::from(self.n.get()) * self.sum_of_squares - square(self.sum)
     }
 

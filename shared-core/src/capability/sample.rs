@@ -6,6 +6,7 @@ use super::{Index, Specification};
 use crate::counts::Resolution;
 use crate::moments::Moments;
 use crate::quantity::{Count, DegreesOfFreedom};
+use crate::sigma::Sigma;
 
 /// A sample seen against a specification. The mean rests on n pieces, sigma on ν degrees of freedom.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -14,6 +15,7 @@ pub struct Sample {
     nu: DegreesOfFreedom,
     mean: f64,
     sigma: f64,
+    source: Sigma,
     /// Mean − L.
     above_lower: Option<f64>,
     /// U − mean.
@@ -38,6 +40,8 @@ pub enum SampleError {
     NegativeSpread,
     /// A mean or standard deviation that is infinite or no number, or too far from the limits to compute with.
     NotFinite,
+    /// No whole subgroup yet; for total sigma fewer than two.
+    TooFewSubgroups,
 }
 
 impl fmt::Display for SampleError {
@@ -49,6 +53,9 @@ impl fmt::Display for SampleError {
             }
             Self::NegativeSpread => "the standard deviation is below zero; correct it",
             Self::NotFinite => "mean or standard deviation is not a usable number; correct it",
+            Self::TooFewSubgroups => {
+                "too few whole subgroups: sigma within them needs one, total sigma two; measure more"
+            }
         })
     }
 }
@@ -67,6 +74,8 @@ pub enum IndexError {
     MissingTarget,
     /// The estimate exceeds the range of doubles.
     NotFinite,
+    /// Cpm is made of the distances from the target, all of them: it has no other sigma than the overall one.
+    OverallOnly,
 }
 
 impl fmt::Display for IndexError {
@@ -78,6 +87,7 @@ impl fmt::Display for IndexError {
             Self::NotFinite => {
                 "the index is too large for a number; check the units of limits and standard deviation"
             }
+            Self::OverallOnly => "Cpm has the overall sigma only; choose that, or another index",
         })
     }
 }
@@ -107,6 +117,7 @@ impl Sample {
             nu,
             mean,
             sigma,
+            source: Sigma::Overall,
             above_lower: specification.lower().and_then(to).map(|distance| -distance),
             below_upper: specification.upper().and_then(to),
             width: width(specification),
@@ -151,12 +162,33 @@ impl Sample {
             nu,
             mean,
             sigma: standard_deviation,
+            source: Sigma::Overall,
             above_lower: specification.lower().map(|lower| mean - lower.to_f64()),
             below_upper: specification.upper().map(|upper| upper.to_f64() - mean),
             width: width(specification),
             deviation_from_target,
             above_target: specification.target().map(|target| mean - target.to_f64()),
         })
+    }
+
+    /// The same sample with another estimate of sigma, its ν, and the pieces that the mean is worth beside it.
+    ///
+    /// # Errors
+    /// A sigma that is not finite and above zero.
+    pub fn with_sigma(
+        self,
+        source: Sigma,
+        sigma: f64,
+        nu: DegreesOfFreedom,
+        behind_mean: Count,
+    ) -> Result<Self, SampleError> {
+        if !sigma.is_finite() {
+            return Err(SampleError::NotFinite);
+        }
+        if sigma <= 0.0 {
+            return Err(SampleError::NoSpread);
+        }
+        Ok(Self { n: behind_mean, nu, sigma, source, ..self })
     }
 
     /// Pieces behind the mean.
@@ -193,6 +225,12 @@ impl Sample {
         Some(if share < 1.0 { share / (1.0 - share) } else { f64::INFINITY })
     }
 
+    /// Which sigma it is.
+    #[must_use]
+    pub const fn source(&self) -> Sigma {
+        self.source
+    }
+
     /// The estimate of an index. Cpk and its one-sided parts are negative when the mean lies outside the limits.
     ///
     /// Cpm takes τ̂² = (1/n) Σ(x − T)² (Boyles 1991); Chan, Cheng & Spiring (1988) divide by n − 1. Both from memory.
@@ -213,6 +251,7 @@ impl Sample {
                 (Ok(cpl), Err(_)) => cpl,
                 (Err(_), cpu) => cpu?,
             },
+            Index::Cpm if self.source != Sigma::Overall => return Err(IndexError::OverallOnly),
             Index::Cpm => {
                 self.width()? / (6.0 * self.deviation_from_target.ok_or(IndexError::MissingTarget)?)
             }
