@@ -9,7 +9,8 @@ use crate::{
     capability::{Index, Specification},
     counts::{Decimal, Resolution},
     interval::{Kind, Quantile},
-    quantity::{Confidence, Precision},
+    quantity::{Confidence, DegreesOfFreedom, Precision},
+    sigma::{self, Sigma},
     stopping::StoppingRule,
     text::Text,
 };
@@ -77,6 +78,9 @@ pub struct Draft {
     pub gauge: LineSettings,
     /// So many equal readings one after the other hold the study until someone has looked (gauge stuck?); 0: never.
     pub same_in_a_row: u8,
+    /// Which standard deviation the index takes. Plans from before there was a choice end above this: overall.
+    #[serde(deserialize_with = "sigma::overall_if_left_out")]
+    pub sigma: Sigma,
 }
 
 /// One thing wrong with a draft. [`Fault::field`] names the field that has to change.
@@ -122,6 +126,14 @@ pub enum Fault {
     StopBits,
     /// One or two equal readings in a row are no sign of a stuck gauge.
     SameInARow,
+    /// The planned count ends within a subgroup.
+    PlannedNotWhole,
+    /// The limit ends within a subgroup.
+    LimitNotWhole,
+    /// Cpm has the overall sigma only.
+    IndexNeedsOverall,
+    /// A study that stops by its precision cannot have total sigma.
+    SigmaTotal,
 }
 
 /// The field of a plan that a fault points at.
@@ -142,6 +154,7 @@ pub enum Field {
     DataBits,
     StopBits,
     SameInARow,
+    Sigma,
 }
 
 impl Fault {
@@ -156,13 +169,14 @@ impl Fault {
             Self::TargetOutside => Field::Target,
             Self::ResolutionTooCoarse => Field::Resolution,
             Self::IndexWithoutInterval => Field::Index,
-            Self::PlannedTooFew | Self::PlannedAboveLimit => Field::Planned,
+            Self::PlannedTooFew | Self::PlannedAboveLimit | Self::PlannedNotWhole => Field::Planned,
             Self::PrecisionAbsolute | Self::PrecisionZero => Field::Precision,
-            Self::PrecisionBeyondLimit => Field::Limit,
+            Self::PrecisionBeyondLimit | Self::LimitNotWhole => Field::Limit,
             Self::Baud => Field::Baud,
             Self::DataBits => Field::DataBits,
             Self::StopBits => Field::StopBits,
             Self::SameInARow => Field::SameInARow,
+            Self::IndexNeedsOverall | Self::SigmaTotal => Field::Sigma,
         }
     }
 }
@@ -201,6 +215,18 @@ impl core::fmt::Display for Fault {
             Self::DataBits => "the data bits must be 7 or 8",
             Self::StopBits => "the stop bits must be 1 or 2",
             Self::SameInARow => "equal readings in a row: 0 for never, or 3 and more",
+            Self::PlannedNotWhole => {
+                "the planned pieces are no whole number of subgroups: plan a multiple of their size"
+            }
+            Self::LimitNotWhole => {
+                "the limit is no whole number of subgroups: give a multiple of their size"
+            }
+            Self::IndexNeedsOverall => "Cpm has the overall sigma only: choose that, or another index",
+            Self::SigmaTotal => {
+                "a station does not stop by total sigma: it would stop early whenever the subgroups happen to lie near \
+                 together, and the interval would cover less than it promises; choose overall, pooled or ranges here \
+                 and let `donelight assess` take total sigma of the readings"
+            }
         })
     }
 }
@@ -208,7 +234,7 @@ impl core::fmt::Display for Fault {
 impl core::error::Error for Fault {}
 
 /// At most so many faults can a draft have at once.
-const FAULTS_MAX: usize = 20;
+const FAULTS_MAX: usize = 24;
 
 /// All the faults of a draft.
 pub type Faults = heapless::Vec<Fault, FAULTS_MAX>;
@@ -261,6 +287,7 @@ impl Draft {
         check(some_limit && needs_lower && self.lower.is_none(), Fault::IndexNeedsLower);
         check(some_limit && needs_upper && self.upper.is_none(), Fault::IndexNeedsUpper);
         check(self.index == Index::Cpm, Fault::IndexWithoutInterval);
+        check(self.index == Index::Cpm && self.sigma != Sigma::Overall, Fault::IndexNeedsOverall);
     }
 
     /// Whether a reading could come near `value`.
@@ -273,13 +300,16 @@ impl Draft {
         let rule = self.rule;
         check(rule.planned.get() < 2, Fault::PlannedTooFew);
         check(rule.planned > rule.limit, Fault::PlannedAboveLimit);
+        check(!self.sigma.ends_at(rule.planned), Fault::PlannedNotWhole);
+        check(!self.sigma.ends_at(rule.limit), Fault::LimitNotWhole);
+        check(matches!(self.sigma, Sigma::Total(_)), Fault::SigmaTotal);
         match rule.precision {
             Precision::Absolute(_) => check(true, Fault::PrecisionAbsolute),
             Precision::Relative(goal) => {
                 check(goal.0 == 0, Fault::PrecisionZero);
                 // The half-width is above z/√(2ν) whatever the estimate (Bissell 1990, the location term left out).
                 let z = Quantile::new(self.confidence, self.kind).z();
-                let nu = f64::from(rule.limit.get()) - 1.0;
+                let nu = self.sigma.degrees_of_freedom(rule.limit).map_or(0.0, DegreesOfFreedom::get);
                 let goal = goal.to_f64();
                 check(goal > 0.0 && 2.0 * nu * goal * goal < z * z, Fault::PrecisionBeyondLimit);
             }

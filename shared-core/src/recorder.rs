@@ -77,10 +77,8 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         let mut state = [0; STATE_MAX];
         let (mut journal, length) = Journal::open(flash, &mut state)?;
         // A state of another version does not decode: the replay then begins at the first record that is kept.
-        let mut station: Station = length
-            .and_then(|length| state.get(..length))
-            .and_then(|bytes| postcard::from_bytes(bytes).ok())
-            .unwrap_or_default();
+        let mut station: Station =
+            length.and_then(|length| state.get(..length)).and_then(Station::restore).unwrap_or_default();
         let from = station.through().map_or(Seq::FIRST, Seq::next);
         journal.visit(from, |seq, sealed| {
             if let Ok(record) = sealed.record() {
@@ -286,8 +284,7 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
 
     fn prepare(&mut self) -> Result<Prepared, Refusal> {
         let station = &self.station;
-        let state = |space: &mut [u8]| postcard::to_slice(station, space).ok().map(|used| used.len());
-        let prepared = self.journal.prepare(state);
+        let prepared = self.journal.prepare(|space| station.store(space));
         if matches!(prepared, Ok(Prepared::Erased)) {
             self.gauge.was_deaf();
         }
@@ -403,7 +400,9 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
                     name: study.plan().name.clone(),
                     progress: study.progress(),
                     mean: study.moments().mean(study.plan().resolution),
-                    standard_deviation: sample.map(|sample| sample.sigma()),
+                    // That of all readings, whichever sigma the index takes.
+                    standard_deviation: sample
+                        .and_then(|_| study.moments().standard_deviation(study.plan().resolution)),
                     estimate: estimate.map(|e| e.estimate),
                     low: estimate.and_then(|e| e.interval.low),
                     high: estimate.and_then(|e| e.interval.high),

@@ -13,6 +13,7 @@ use crate::{
     plan::Plan,
     quantity::Count,
     record::{Event, Seq},
+    sigma::Tally,
     stopping::Standing,
 };
 
@@ -55,7 +56,7 @@ struct Latest {
 pub struct Study {
     began: Seq,
     plan: Plan,
-    moments: Moments,
+    tally: Tally,
     standing: Standing,
     surplus: u32,
     taken_back: u32,
@@ -68,8 +69,8 @@ impl Study {
     fn new(began: Seq, plan: Plan) -> Self {
         Self {
             began,
+            tally: Tally::new(plan.sigma),
             plan,
-            moments: Moments::default(),
             standing: Standing::Gathering,
             surplus: 0,
             taken_back: 0,
@@ -94,7 +95,7 @@ impl Study {
     /// The sums of the pieces that count.
     #[must_use]
     pub fn moments(&self) -> &Moments {
-        &self.moments
+        self.tally.moments()
     }
 
     /// Where it stands.
@@ -114,7 +115,7 @@ impl Study {
     pub fn progress(&self) -> Progress {
         Progress {
             standing: self.standing,
-            n: self.moments.n(),
+            n: self.moments().n(),
             planned: self.plan.rule.planned,
             limit: self.plan.rule.limit,
             surplus: self.surplus,
@@ -122,10 +123,10 @@ impl Study {
         }
     }
 
-    /// The sample so far; `None` below two pieces or without spread.
+    /// The sample so far; `None` below two pieces or one whole subgroup, or without spread.
     #[must_use]
     pub fn sample(&self) -> Option<Sample> {
-        Sample::from_moments(&self.moments, self.plan.resolution, self.plan.specification()).ok()
+        self.tally.sample(self.plan.resolution, self.plan.specification()).ok()
     }
 
     /// The plan's index with its interval, as of now; `None` where there is no sample yet.
@@ -143,7 +144,7 @@ impl Study {
             return;
         }
         // The recorder lets no reading through that a full study could not count.
-        let _ = self.moments.add(counts);
+        let _ = self.tally.add(counts);
         self.same_in_a_row = if same { self.same_in_a_row.saturating_add(1) } else { 1 };
         if self.plan.same_in_a_row != 0 && self.same_in_a_row >= self.plan.same_in_a_row {
             self.held = Some(Held::GaugeStuck);
@@ -158,7 +159,7 @@ impl Study {
         if latest.surplus {
             self.surplus = self.surplus.saturating_sub(1);
         } else {
-            let _ = self.moments.take_back(latest.counts);
+            let _ = self.tally.take_back(latest.counts);
             self.judge();
         }
     }
@@ -174,7 +175,9 @@ impl Study {
     fn judge(&mut self) {
         self.standing = match self.held {
             Some(_) => Standing::Gathering,
-            None => self.plan.rule.judge(self.moments.n(), || self.estimate()),
+            // Subgroups are taken whole.
+            None if !self.plan.sigma.ends_at(self.moments().n()) => Standing::Gathering,
+            None => self.plan.rule.judge(self.moments().n(), || self.estimate()),
         };
     }
 }
@@ -189,6 +192,10 @@ pub struct Station {
 }
 
 impl Station {
+    /// The first byte of a stored state, another one whenever its form changes. The first form had none and began with a
+    /// 0 or a 1, which no form may take again.
+    const FORMAT: u8 = 2;
+
     /// Takes the next record. A number that is not above the last one changes nothing: repeating is harmless.
     pub fn apply(&mut self, seq: Seq, event: &Event) {
         if self.through.is_some_and(|through| seq <= through) {
@@ -216,6 +223,21 @@ impl Station {
                 }
             }
         }
+    }
+
+    /// Writes the state at the front of `space` and says how much it took; `None` if it does not fit.
+    #[must_use]
+    pub fn store(&self, space: &mut [u8]) -> Option<usize> {
+        let (format, rest) = space.split_first_mut()?;
+        *format = Self::FORMAT;
+        postcard::to_slice(self, rest).ok().map(|used| 1 + used.len())
+    }
+
+    /// The state that was stored; `None` if another version stored it.
+    #[must_use]
+    pub fn restore(stored: &[u8]) -> Option<Self> {
+        let (format, rest) = stored.split_first()?;
+        if *format == Self::FORMAT { postcard::from_bytes(rest).ok() } else { None }
     }
 
     /// The last record applied.

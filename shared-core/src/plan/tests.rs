@@ -2,6 +2,7 @@
 
 use super::*;
 use crate::quantity::{Count, Millionths};
+use crate::sigma::SubgroupSize;
 
 /// A valid draft: 212 pieces of a Cpk at ±10 %.
 pub(crate) fn draft() -> Draft {
@@ -25,6 +26,7 @@ pub(crate) fn draft() -> Draft {
         },
         gauge: LineSettings::default(),
         same_in_a_row: 8,
+        sigma: Sigma::Overall,
     }
 }
 
@@ -46,6 +48,7 @@ pub(crate) fn longest() -> Draft {
         },
         gauge: LineSettings { baud: 115_200, data_bits: 8, parity: Parity::Odd, stop_bits: 2 },
         same_in_a_row: 255,
+        sigma: Sigma::Pooled(SubgroupSize::MAX),
         ..draft()
     }
 }
@@ -94,6 +97,65 @@ fn each_contradiction_is_its_own_fault() {
     assert_eq!(faults(|d| d.gauge.data_bits = 9), [Fault::DataBits]);
     assert_eq!(faults(|d| d.gauge.stop_bits = 0), [Fault::StopBits]);
     assert_eq!(faults(|d| d.same_in_a_row = 1), [Fault::SameInARow]);
+}
+
+#[test]
+fn a_study_in_subgroups_is_planned_and_limited_in_whole_ones() {
+    let five = SubgroupSize::new(5).unwrap();
+    let within = |sigma: Sigma, planned: u32, limit: u32| {
+        faults(|d| {
+            d.sigma = sigma;
+            (d.rule.planned, d.rule.limit) = (Count::new(planned).unwrap(), Count::new(limit).unwrap());
+        })
+    };
+    for sigma in [Sigma::Pooled(five), Sigma::Ranges(five)] {
+        assert_eq!(within(sigma, 260, 300), []);
+        assert_eq!(within(sigma, 261, 300), [Fault::PlannedNotWhole]);
+        assert_eq!(within(sigma, 260, 301), [Fault::LimitNotWhole]);
+        assert_eq!(within(sigma, 1, 300), [Fault::PlannedTooFew, Fault::PlannedNotWhole]);
+    }
+    assert_eq!(within(Sigma::MovingRanges, 331, 401), []);
+    assert_eq!(within(Sigma::Total(five), 260, 300), [Fault::SigmaTotal]);
+    assert_eq!(
+        faults(|d| (d.index, d.sigma) = (Index::Cpm, Sigma::MovingRanges))[..2],
+        [Fault::IndexWithoutInterval, Fault::IndexNeedsOverall]
+    );
+}
+
+/// The floor is one of ν: ν ≥ z²/(2r²) = 192.07 at 10 % and 95 %. Pooled over subgroups of 5 that takes 49 of them, 245 pieces;
+/// by moving ranges 317 of them (0.605 ν each, Cryer & Ryan 1990), by ranges of 2 as many as their efficiency asks for.
+#[test]
+fn a_precision_beyond_the_limit_is_found_by_the_degrees_of_freedom_there() {
+    let two_or_five = |size| SubgroupSize::new(size).unwrap();
+    for (sigma, limit) in [
+        (Sigma::Pooled(two_or_five(5)), 245),
+        (Sigma::Pooled(two_or_five(2)), 386),
+        (Sigma::Ranges(two_or_five(5)), 265),
+        (Sigma::Ranges(two_or_five(2)), 438),
+        (Sigma::MovingRanges, 318),
+    ] {
+        let at_limit = |limit: u32| {
+            faults(|d| {
+                d.sigma = sigma;
+                d.rule.planned = Count::new(10).unwrap();
+                d.rule.limit = Count::new(limit).unwrap();
+            })
+        };
+        assert_eq!(at_limit(limit - sigma.step()), [Fault::PrecisionBeyondLimit], "{sigma:?}");
+        assert_eq!(at_limit(limit), [], "{sigma:?}");
+    }
+}
+
+/// Records of plans lie in journals and ledgers; those from before there was a choice of sigma end before it.
+#[test]
+fn a_plan_from_before_there_was_a_choice_of_sigma_has_the_overall_one() {
+    let mut bytes = [0; 300];
+    let used = postcard::to_slice(&draft(), &mut bytes).unwrap().len();
+    let before = bytes.get(..used - 2).unwrap();
+    assert_eq!(postcard::from_bytes::<Draft>(before).unwrap(), draft());
+    assert!(postcard::from_bytes::<Draft>(&bytes[..used - 1]).is_err());
+    bytes[used - 2] = 5;
+    assert!(postcard::from_bytes::<Draft>(&bytes[..used]).is_err(), "a sigma of a newer version");
 }
 
 /// The floor n = 1 + z²/(2r²) of Bissell's relative half-width: 193.07 at 10 % and 95 % (the reference tables'

@@ -4,13 +4,14 @@ use super::{SizingError, search};
 use crate::capability::Index;
 use crate::interval::{Evidence, Kind, Method, MethodError};
 use crate::quantity::{Count, DegreesOfFreedom};
+use crate::sigma::Sigma;
 
 /// The design of a study, before its size is known.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Design {
     index: Index,
     method: Method,
-    subgroup: u32,
+    sigma: Sigma,
     squared_offset: f64,
 }
 
@@ -21,20 +22,28 @@ impl Design {
     /// [`MethodError::Unsuited`] if the method does not suit the index.
     pub fn new(index: Index, method: Method) -> Result<Self, SizingError> {
         match method.promise(index, Kind::TwoSided) {
-            Some(_) => Ok(Self { index, method, subgroup: 1, squared_offset: 0.0 }),
+            Some(_) => Ok(Self { index, method, sigma: Sigma::Overall, squared_offset: 0.0 }),
             None => Err(MethodError::Unsuited { method, index }.into()),
         }
     }
 
-    /// The same with sigma pooled within subgroups of m pieces: n is a multiple of m, ν = n(m − 1)/m.
+    /// The design of the functions that name no method.
     ///
     /// # Errors
-    /// [`SizingError::SubgroupOutOfRange`] unless m lies from 2 to 1000.
-    pub fn with_subgroups_of(self, pieces: u32) -> Result<Self, SizingError> {
-        if (2..=1000).contains(&pieces) {
-            Ok(Self { subgroup: pieces, ..self })
-        } else {
-            Err(SizingError::SubgroupOutOfRange)
+    /// [`SizingError::NoMethodYet`] for Cpm.
+    pub fn by_bissell(index: Index) -> Result<Self, SizingError> {
+        Self::new(index, Method::Bissell).map_err(|_| SizingError::NoMethodYet(index))
+    }
+
+    /// The same with another sigma: n is of whole subgroups, ν is [`Sigma::degrees_of_freedom`].
+    ///
+    /// # Errors
+    /// [`SizingError::SigmaTotal`], and [`SizingError::OverallOnly`] for Cpm.
+    pub fn with_sigma(self, sigma: Sigma) -> Result<Self, SizingError> {
+        match sigma {
+            Sigma::Total(_) => Err(SizingError::SigmaTotal),
+            sigma if sigma != Sigma::Overall && self.index == Index::Cpm => Err(SizingError::OverallOnly),
+            sigma => Ok(Self { sigma, ..self }),
         }
     }
 
@@ -62,17 +71,18 @@ impl Design {
         self.method
     }
 
+    /// The sigma.
+    #[must_use]
+    pub const fn sigma(&self) -> Sigma {
+        self.sigma
+    }
+
     /// The degrees of freedom that n pieces give sigma.
     ///
     /// # Errors
     /// [`SizingError::TooFew`] if they give none.
     pub fn degrees_of_freedom(&self, n: Count) -> Result<DegreesOfFreedom, SizingError> {
-        let subgroups = n.get() / self.subgroup;
-        let nu = match self.subgroup {
-            1 => n.get().saturating_sub(1),
-            pieces => subgroups * (pieces - 1),
-        };
-        DegreesOfFreedom::new(f64::from(nu)).ok_or(SizingError::TooFew)
+        self.sigma.degrees_of_freedom(n).ok_or(SizingError::TooFew)
     }
 
     /// What n pieces would say if the estimate came out at `estimate`.
@@ -91,14 +101,15 @@ impl Design {
         &self,
         meets: impl Fn(Count) -> Result<bool, SizingError>,
     ) -> Result<Count, SizingError> {
-        let pieces = |subgroups: u32| Count::new(subgroups * self.subgroup).ok_or(SizingError::AboveLimit);
-        let first = if self.subgroup == 1 { 2 } else { 1 };
-        let most = Count::MAX.get() / self.subgroup;
+        let step = self.sigma.step();
+        let pieces = |subgroups: u32| Count::new(subgroups * step).ok_or(SizingError::AboveLimit);
+        let first = if step == 1 { 2 } else { 1 };
+        let most = Count::MAX.get() / step;
         pieces(search(first, most, |subgroups| meets(pieces(subgroups)?))?)
     }
 
     /// The next smaller n that this design can have.
     pub(super) fn before(&self, n: Count) -> Option<Count> {
-        Count::new(n.get().checked_sub(self.subgroup)?)
+        Count::new(n.get().checked_sub(self.sigma.step())?)
     }
 }

@@ -34,8 +34,10 @@ pub enum SizingError {
     NoMethodYet(Index),
     /// The method does not suit the index, or gives no limit.
     Method(MethodError),
-    /// A subgroup of one piece, or of more than 1000.
-    SubgroupOutOfRange,
+    /// The degrees of freedom of total sigma come out with the readings.
+    SigmaTotal,
+    /// Cpm has the overall sigma only.
+    OverallOnly,
     /// A distance from the target below zero or above 100 sigmas.
     OffsetOutOfRange,
 }
@@ -56,7 +58,11 @@ impl fmt::Display for SizingError {
                 return write!(f, "no sample size for {index} yet; choose cpk, cpl, cpu or cp");
             }
             Self::Method(error) => return error.fmt(f),
-            Self::SubgroupOutOfRange => "a subgroup has 2 to 1000 pieces; give one such as 5, or none",
+            Self::SigmaTotal => {
+                "the degrees of freedom of total sigma show only in the readings, so it has no size beforehand; size \
+                 the study with sigma overall, which is the least that total sigma takes"
+            }
+            Self::OverallOnly => "Cpm has the overall sigma only; choose that, or another index",
             Self::OffsetOutOfRange => {
                 "the distance of the mean from the target must be 0 to 100 sigmas; give one such as 0.5"
             }

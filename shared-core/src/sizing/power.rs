@@ -7,7 +7,6 @@
 use super::decision::{Decision, Outcome};
 use super::{Design, SizingError, in_range};
 use crate::capability::Index;
-use crate::interval::Method;
 use crate::quantity::{Confidence, Count, Millionths};
 
 /// A sample size by power.
@@ -40,7 +39,7 @@ pub fn smallest(
     alpha: Millionths,
     power: Confidence,
 ) -> Result<PowerSize, SizingError> {
-    smallest_by(&by_bissell(index)?, claim, against, alpha, power)
+    smallest_by(&Design::by_bissell(index)?, claim, against, alpha, power)
 }
 
 /// The probability that n pieces reject the claim if the index is `against`.
@@ -54,12 +53,7 @@ pub fn power_at(
     against: f64,
     alpha: Millionths,
 ) -> Result<f64, SizingError> {
-    power_by(n, &by_bissell(index)?, claim, against, alpha)
-}
-
-/// The design of the functions that name no method.
-fn by_bissell(index: Index) -> Result<Design, SizingError> {
-    Design::new(index, Method::Bissell).map_err(|_| SizingError::NoMethodYet(index))
+    power_by(n, &Design::by_bissell(index)?, claim, against, alpha)
 }
 
 /// The smallest n at which a test by the design's method rejects the claim `claim` with probability `power` or more if the

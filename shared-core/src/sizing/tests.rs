@@ -2,6 +2,7 @@ use super::{Design, SizingError, Truth, power, precision, truth};
 use crate::capability::Index;
 use crate::interval::{Kind, Method, MethodError};
 use crate::quantity::{Confidence, Count, Millionths, Precision};
+use crate::sigma::{Sigma, SubgroupSize};
 
 const NINETY_FIVE: Confidence = Confidence::NINETY_FIVE_PERCENT;
 const TEN_PERCENT: Precision = Precision::Relative(Millionths(100_000));
@@ -91,12 +92,54 @@ fn impossible_demands_are_named() {
     assert_eq!(one, Err(SizingError::TooFew));
 }
 
+/// ν = 4n/5: 1/(9n) + 1.5²/(2ν) must fall to (10 % · 1.5 / z)², as by hand: n ≥ (1/9 + 1.5²·5/8)/0.0765…² = 259.1, so 52
+/// subgroups of 5.
+#[test]
+fn a_size_in_subgroups_is_a_whole_number_of_them() {
+    let bissell = design(Index::Cpk, Method::Bissell);
+    let within = bissell.with_sigma(Sigma::Pooled(five())).unwrap();
+    let size = precision::smallest_by(&within, 1.5, TEN_PERCENT, NINETY_FIVE, Kind::TwoSided).unwrap();
+    assert_eq!(size.n.get(), 260);
+    let fewer = Count::new(255).unwrap();
+    let before = precision::precision_by(fewer, &within, 1.5, NINETY_FIVE, Kind::TwoSided).unwrap();
+    assert_eq!(size.achieved_before, Some(before.half_width / 1.5));
+    assert!(size.achieved <= 0.1 && before.half_width > 0.15);
+    let tested = power::smallest_by(&within, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE).unwrap();
+    assert!(tested.achieved >= 0.95 && tested.achieved_before.unwrap() < 0.95);
+    let overall = power::smallest(Index::Cpk, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE).unwrap();
+    assert!(tested.n.get().is_multiple_of(5) && tested.n > overall.n);
+}
+
+#[test]
+fn ranges_take_more_pieces_than_a_pooled_sigma_and_total_sigma_has_no_size() {
+    let bissell = design(Index::Cp, Method::Bissell);
+    // The floor of ν is 192.07; see the plan's test for where each sigma reaches it.
+    for (sigma, n) in [
+        (Sigma::Overall, 194),
+        (Sigma::Pooled(five()), 245),
+        (Sigma::Ranges(five()), 265),
+        (Sigma::MovingRanges, 318),
+    ] {
+        let within = bissell.with_sigma(sigma).unwrap();
+        let size = precision::smallest_by(&within, 1.5, TEN_PERCENT, NINETY_FIVE, Kind::TwoSided).unwrap();
+        assert_eq!(size.n.get(), n, "{sigma:?}");
+    }
+    assert_eq!(bissell.with_sigma(Sigma::Total(five())), Err(SizingError::SigmaTotal));
+    let cpm = design(Index::Cpm, Method::ChiSquare);
+    assert_eq!(cpm.with_sigma(Sigma::MovingRanges), Err(SizingError::OverallOnly));
+    assert_eq!(cpm.with_sigma(Sigma::Overall), Ok(cpm));
+}
+
 #[test]
 fn cpm_is_refused_by_name() {
     let size = precision::smallest(Index::Cpm, 1.5, TEN_PERCENT, NINETY_FIVE, Kind::TwoSided);
     assert_eq!(size, Err(SizingError::NoMethodYet(Index::Cpm)));
     let size = power::smallest(Index::Cpm, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE);
     assert_eq!(size, Err(SizingError::NoMethodYet(Index::Cpm)));
+}
+
+fn five() -> SubgroupSize {
+    SubgroupSize::new(5).unwrap()
 }
 
 fn design(index: Index, method: Method) -> Design {
@@ -130,7 +173,7 @@ fn an_exact_test_of_cpk_keeps_its_risk_and_its_power_at_every_position_of_the_me
 fn sigma_within_subgroups_takes_whole_subgroups_and_more_pieces() {
     for (index, method) in [(Index::Cp, Method::ChiSquare), (Index::Cpk, Method::Exact)] {
         let overall = design(index, method);
-        let within = overall.with_subgroups_of(5).unwrap();
+        let within = overall.with_sigma(Sigma::Pooled(five())).unwrap();
         let size = |design| {
             precision::smallest_by(&design, 1.33, TEN_PERCENT, NINETY_FIVE, Kind::Lower).unwrap().n.get()
         };
@@ -139,13 +182,12 @@ fn sigma_within_subgroups_takes_whole_subgroups_and_more_pieces() {
         assert!(grouped % 5 == 0 && grouped > plain && grouped <= plain * 5 / 4 + 5, "{plain} {grouped}");
     }
     let cp = design(Index::Cp, Method::ChiSquare);
-    assert_eq!(cp.with_subgroups_of(1), Err(SizingError::SubgroupOutOfRange));
     // One subgroup may be enough.
     let wide = Precision::Relative(Millionths(3_000_000));
-    let one = precision::smallest_by(&cp.with_subgroups_of(5).unwrap(), 1.0, wide, NINETY_FIVE, Kind::Lower)
-        .unwrap();
+    let within = cp.with_sigma(Sigma::Pooled(five())).unwrap();
+    let one = precision::smallest_by(&within, 1.0, wide, NINETY_FIVE, Kind::Lower).unwrap();
     assert_eq!((one.n.get(), one.achieved_before), (5, None));
-    let within = cp.with_subgroups_of(3).unwrap();
+    let within = cp.with_sigma(Sigma::Pooled(SubgroupSize::new(3).unwrap())).unwrap();
     let beyond = Precision::Relative(Millionths(1_000));
     let refused = precision::smallest_by(&within, 1.0, beyond, NINETY_FIVE, Kind::TwoSided);
     assert_eq!(refused, Err(SizingError::AboveLimit));

@@ -9,6 +9,7 @@ use crate::{
     plan::{Draft, tests as plans},
     quantity::{Millionths, Precision},
     record::Refusal,
+    sigma::{Sigma, SubgroupSize},
     stopping::StoppingRule,
 };
 
@@ -25,6 +26,23 @@ fn small_plan() -> Event {
     };
     Event::Plan(Plan::try_from(draft).unwrap())
 }
+
+/// The same with sigma within subgroups of 3, or of neighbours: 6 planned, ±60 %.
+fn within_plan(sigma: Sigma) -> Event {
+    let draft = Draft {
+        rule: StoppingRule {
+            planned: Count::new(6).unwrap(),
+            precision: Precision::Relative(Millionths(600_000)),
+            limit: Count::new(12).unwrap(),
+        },
+        same_in_a_row: 4,
+        sigma,
+        ..plans::draft()
+    };
+    Event::Plan(Plan::try_from(draft).unwrap())
+}
+
+const THREE: SubgroupSize = SubgroupSize::new(3).unwrap();
 
 fn reading(counts: i64) -> Event {
     Event::Reading(Counts::new(counts).unwrap())
@@ -97,6 +115,21 @@ fn the_settling_reading_can_be_taken_back_and_the_study_goes_on() {
 }
 
 #[test]
+fn a_study_in_subgroups_is_judged_at_whole_ones_only() {
+    let settled = |sigma| {
+        (1..=12).find(|n| {
+            let mut events = std::vec![within_plan(sigma)];
+            events.extend(SPREAD[..*n].iter().map(|c| reading(*c)));
+            replay(&events).study().unwrap().standing() == Standing::Settled
+        })
+    };
+    // ±60 % takes ν ≥ z²/(2r²) = 5.3 at the least: three subgroups of three have 6, and by their ranges 5.6.
+    assert_eq!(settled(Sigma::Pooled(THREE)), Some(9));
+    assert_eq!(settled(Sigma::Ranges(THREE)), Some(9));
+    assert_eq!(settled(Sigma::MovingRanges), Some(10));
+}
+
+#[test]
 fn only_the_latest_reading_can_be_taken_back_and_only_once() {
     let base = [small_plan(), reading(1), reading(2)];
     let twice =
@@ -116,6 +149,9 @@ fn a_new_plan_ends_what_went_before() {
 fn any_event() -> impl Strategy<Value = Event> {
     prop_oneof![
         1 => Just(small_plan()),
+        1 => Just(within_plan(Sigma::Pooled(THREE))),
+        1 => Just(within_plan(Sigma::Ranges(THREE))),
+        1 => Just(within_plan(Sigma::MovingRanges)),
         20 => (9_990i64..10_010).prop_map(reading),
         3 => (1u32..60).prop_map(|seq| Event::TakenBack(Seq(seq))),
         2 => Just(Event::Seen),
@@ -133,8 +169,8 @@ proptest! {
         let whole = replay(&events);
         let cut = if events.is_empty() { 0 } else { at.index(events.len()) };
         let mut bytes = [0; crate::journal::STATE_MAX];
-        let stored = postcard::to_slice(&replay(&events[..cut]), &mut bytes).unwrap();
-        let mut station: Station = postcard::from_bytes(stored).unwrap();
+        let used = replay(&events[..cut]).store(&mut bytes).unwrap();
+        let mut station = Station::restore(&bytes[..used]).unwrap();
         for (i, event) in events.iter().enumerate().skip(cut) {
             station.apply(Seq(i as u32 + 1), event);
         }
@@ -172,11 +208,14 @@ proptest! {
             }
             station.apply(seq, event);
         }
-        let mut sums = Moments::default();
+        let Some(study) = station.study() else { return Ok(()) };
+        let mut tally = Tally::new(study.plan().sigma);
         for (_, counts) in &counted {
-            sums.add(*counts).unwrap();
+            tally.add(*counts).unwrap();
         }
-        prop_assert_eq!(station.study().map(|s| *s.moments()).unwrap_or_default(), sums);
+        prop_assert_eq!(study.moments(), tally.moments());
+        let (resolution, specification) = (study.plan().resolution, study.plan().specification());
+        prop_assert_eq!(study.sample(), tally.sample(resolution, specification).ok());
     }
 }
 
@@ -184,10 +223,8 @@ proptest! {
 fn the_largest_state_fits_a_checkpoint() {
     let mut station = replay(&[Event::Plan(Plan::try_from(plans::longest()).unwrap())]);
     let study = station.study.as_mut().unwrap();
-    for counts in [1_000_000_000_000, -1_000_000_000_000] {
-        for _ in 0..500_000 {
-            study.moments.add(Counts::new(counts).unwrap()).unwrap();
-        }
+    for counts in [1_000_000_000_000, -1_000_000_000_000].iter().cycle().take(1_000_000) {
+        study.tally.add(Counts::new(*counts).unwrap()).unwrap();
     }
     study.surplus = u32::MAX;
     study.taken_back = u32::MAX;
@@ -196,5 +233,18 @@ fn the_largest_state_fits_a_checkpoint() {
     study.held = Some(Held::GaugeStuck);
     (station.boots, station.refused) = (u32::MAX, u32::MAX);
     let mut bytes = [0; crate::journal::STATE_MAX];
-    assert!(postcard::to_slice(&station, &mut bytes).is_ok());
+    assert!(station.store(&mut bytes).is_some());
+}
+
+#[test]
+fn a_state_of_another_version_is_not_taken_for_one() {
+    let station = replay(&[small_plan(), reading(10_001)]);
+    let mut bytes = [0; crate::journal::STATE_MAX];
+    let used = station.store(&mut bytes).unwrap();
+    assert_eq!(Station::restore(&bytes[..used]), Some(station.clone()));
+    // The first version stored no format.
+    assert_eq!(Station::restore(&bytes[1..used]), None);
+    assert_eq!(Station::restore(&[]), None);
+    bytes[0] += 1;
+    assert_eq!(Station::restore(&bytes[..used]), None);
 }
