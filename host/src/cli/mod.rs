@@ -11,6 +11,7 @@ use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::Kind;
 use donelight_core::quantity::{Confidence, Millionths, Precision};
+use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
 
 pub use value::{NormalProcess, Summary};
 
@@ -67,7 +68,8 @@ pub enum Size {
     #[command(after_help = "\
 Examples:
   donelight size precision --index cpk --at 1.5 --within 10%
-  donelight size precision --index cpk --at 1.33 --within 0.1 --confidence 90% --kind lower")]
+  donelight size precision --index cpk --at 1.33 --within 0.1 --confidence 90% --kind lower
+  donelight size precision --index cpk --at 1.5 --within 10% --subgroups 5")]
     Precision(SizePrecision),
     /// The smallest n that tells a claimed index from another one
     #[command(after_help = "\
@@ -75,6 +77,28 @@ Examples:
   donelight size power --index cpk --claim 1.5 --against 1.3
   donelight size power --index cpk --claim 1.33 --against 1.67 --alpha 10% --power 90%")]
     Power(SizePower),
+}
+
+/// Which sigma the index takes.
+#[derive(Debug, Args)]
+pub struct SigmaChoice {
+    /// Which sigma: of all readings (the trade then writes Pp, Ppk for Cp, Cpk), within subgroups, of neighbours, or the
+    /// total of within and between subgroups (Ppk too) [default: overall; with subgroups: pooled]
+    #[arg(long, value_name = "SIGMA", value_parser = value::sigma(), ignore_case = true)]
+    pub sigma: Option<String>,
+    /// Pieces in a subgroup, 2 to 25: so many readings that follow each other
+    #[arg(long, value_name = "PIECES")]
+    pub subgroups: Option<SubgroupSize>,
+}
+
+impl SigmaChoice {
+    /// The choice; `found` is a size of subgroups that the data show.
+    ///
+    /// # Errors
+    /// Word and size do not go together.
+    pub fn choose(&self, found: Option<SubgroupSize>) -> Result<Sigma, SigmaError> {
+        Sigma::new(self.sigma.as_deref(), self.subgroups.or(found))
+    }
 }
 
 /// `donelight size precision …`
@@ -95,6 +119,9 @@ pub struct SizePrecision {
     /// Two limits, or only a lower or an upper one
     #[arg(long, value_parser = value::kind(), ignore_case = true, default_value = "two-sided")]
     pub kind: Kind,
+    /// Which sigma
+    #[command(flatten)]
+    pub sigma: SigmaChoice,
 }
 
 /// `donelight size power …`
@@ -115,6 +142,9 @@ pub struct SizePower {
     /// The chance of noticing the other index: 95% or 0.95
     #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%")]
     pub power: Confidence,
+    /// Which sigma
+    #[command(flatten)]
+    pub sigma: SigmaChoice,
 }
 
 /// `donelight plan …`
@@ -256,17 +286,24 @@ pub struct Virtual {
 Examples:
   donelight assess lids.csv --lsl 1.95 --usl 2.05 --resolution 0.001
   donelight assess lids.csv --column thickness --usl 2.05 --resolution 0.001 --index cpu --require 1.33
+  donelight assess lids.csv --lsl 1.95 --usl 2.05 --resolution 0.001 --subgroups 5 --sigma ranges
   donelight assess --summary n=212,mean=2.0013,sd=0.0101 --lsl 1.95 --usl 2.05 --report lids.html")]
 pub struct Assess {
     /// Readings: a CSV file, or text with one reading a line
     #[arg(value_name = "FILE.csv", group = "source")]
     pub file: Option<PathBuf>,
-    /// Instead of readings: their number, mean and standard deviation (n − 1)
+    /// Instead of readings: their number, mean and standard deviation (n − 1, or the sigma that --sigma names)
     #[arg(long, value_name = "n=…,mean=…,sd=…", value_parser = value::summary, group = "source")]
     pub summary: Option<Summary>,
     /// The column of the readings, by its title or number [default: the first with numbers]
     #[arg(long, value_name = "NAME|NUMBER", conflicts_with = "summary")]
     pub column: Option<String>,
+    /// Which sigma
+    #[command(flatten)]
+    pub sigma: SigmaChoice,
+    /// The column that names each reading's subgroup, by its title or number, instead of --subgroups
+    #[arg(long, value_name = "NAME|NUMBER", conflicts_with_all = ["summary", "subgroups"])]
+    pub subgroup_column: Option<String>,
     /// The gauge's step, such as 0.001: readings are counted in it, exactly
     #[arg(long, value_name = "STEP", required_unless_present = "summary")]
     pub resolution: Option<Resolution>,

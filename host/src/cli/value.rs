@@ -4,6 +4,7 @@ use clap::builder::{PossibleValuesParser, TypedValueParser};
 use donelight_core::capability::Index;
 use donelight_core::interval::Kind;
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
+use donelight_core::sigma::Sigma;
 
 use crate::level;
 
@@ -29,6 +30,10 @@ pub struct Summary {
 
 pub(super) fn index() -> impl TypedValueParser<Value = Index> {
     PossibleValuesParser::new(["cp", "cpl", "cpu", "cpk", "cpm"]).try_map(|name| name.parse::<Index>())
+}
+
+pub(super) fn sigma() -> PossibleValuesParser {
+    PossibleValuesParser::new(Sigma::WORDS)
 }
 
 pub(super) fn kind() -> impl TypedValueParser<Value = Kind> {

@@ -5,14 +5,15 @@ use std::path::Path;
 
 use donelight_core::capability::{IndexError, Specification, SpecificationError};
 use donelight_core::interval::Kind;
+use donelight_core::sigma::{Sigma, SubgroupSize};
 
 use crate::cli::{Assess, Summary};
 use crate::files;
 use crate::output::{Answer, Exit, Explain, Failure};
-use crate::readings;
+use crate::readings::{self, Columns};
 use crate::report::analysis::{self, Analysis, Trouble};
 use crate::report::words::{self, Outcome, Verdict};
-use crate::report::{Data, Fact, Question, Reading, Study, export, page};
+use crate::report::{Data, Fact, Question, Reading, Study, export, number, page};
 
 /// Answers `donelight assess …`.
 ///
@@ -53,6 +54,8 @@ enum AssessError {
     NoEstimate(Trouble),
     #[error("neither a file with its resolution nor a summary is given")]
     NothingGiven,
+    #[error("the degrees of freedom of total sigma come from the readings, and a summary has none")]
+    TotalOfSummary,
 }
 
 impl Explain for AssessError {
@@ -62,6 +65,7 @@ impl Explain for AssessError {
             Self::NoEstimate(Trouble::Sample(_)) => "no-estimate",
             Self::NoEstimate(Trouble::Index(_)) => "index-not-defined",
             Self::NothingGiven => "usage",
+            Self::TotalOfSummary => "sigma-options",
         }
     }
 
@@ -71,6 +75,7 @@ impl Explain for AssessError {
             // The core's message says what to do.
             Self::NoEstimate(_) => String::new(),
             Self::NothingGiven => "See donelight assess --help.".to_owned(),
+            Self::TotalOfSummary => "Give the readings in a file, or another sigma.".to_owned(),
         }
     }
 
@@ -78,9 +83,10 @@ impl Explain for AssessError {
         match self {
             Self::NoEstimate(Trouble::Sample(_) | Trouble::Index(IndexError::NotFinite)) => Exit::Refused,
             // The index and the limits given on the command line do not go together.
-            Self::RequireWithUpper | Self::NothingGiven | Self::NoEstimate(Trouble::Index(_)) => {
-                Exit::WrongUse
-            }
+            Self::RequireWithUpper
+            | Self::NothingGiven
+            | Self::TotalOfSummary
+            | Self::NoEstimate(Trouble::Index(_)) => Exit::WrongUse,
         }
     }
 }
@@ -100,19 +106,32 @@ impl Explain for SpecificationError {
 }
 
 fn study(options: &Assess, specification: Specification) -> Result<Study, Failure> {
-    let (data, column, origin) = match (&options.file, options.summary, options.resolution) {
+    let (data, column, origin, sigma) = match (&options.file, options.summary, options.resolution) {
         (Some(file), _, Some(resolution)) => {
-            let found = readings::read(file, options.column.as_deref(), resolution, &options.unit)?;
+            if options.subgroup_column.is_some() {
+                // Before the file is read: a column of subgroups has some size, which one does not matter here.
+                options.sigma.choose(Some(SubgroupSize::MIN))?;
+            }
+            let columns = Columns {
+                readings: options.column.as_deref(),
+                subgroups: options.subgroup_column.as_deref(),
+            };
+            let found = readings::read_columns(file, &columns, resolution, &options.unit)?;
+            let sigma = options.sigma.choose(found.subgroup)?;
             let readings = found.readings.into_iter().map(Reading::counted).collect();
             let mut origin = vec![Fact::new("File", full_path(file))];
             origin.extend(found.title.as_ref().map(|title| Fact::new("Column", title)));
             origin.push(Fact::new("SHA-256 of the file", found.fingerprint));
-            (Data::Readings { resolution, readings }, found.title, origin)
+            (Data::Readings { resolution, readings }, found.title, origin, sigma)
         }
         (_, Some(Summary { n, mean, sd }), _) => {
+            let sigma = options.sigma.choose(None)?;
+            if matches!(sigma, Sigma::Total(_)) {
+                return Err(AssessError::TotalOfSummary.into());
+            }
             let origin =
                 vec![Fact::new("Summary", "number, mean and standard deviation as given; no readings seen")];
-            (Data::Summary { n, mean, sd }, None, origin)
+            (Data::Summary { n, mean, sd }, None, origin, sigma)
         }
         // clap asks for a file with its resolution, or a summary.
         _ => return Err(AssessError::NothingGiven.into()),
@@ -135,6 +154,7 @@ fn study(options: &Assess, specification: Specification) -> Result<Study, Failur
             confidence: options.confidence,
             kind: options.kind,
             required: options.require,
+            sigma,
         },
         data,
         planned: None,
@@ -147,6 +167,17 @@ fn full_path(path: &Path) -> String {
     fs::canonicalize(path).as_deref().unwrap_or(path).display().to_string()
 }
 
+/// "pooled within subgroups of 5; 40 degrees of freedom".
+fn resting(study: &Study, analysis: &Analysis) -> String {
+    let Question { index, sigma, .. } = study.question;
+    let nu = analysis.nu.map_or_else(|| "no".to_owned(), number::degrees_of_freedom);
+    let trade = match index.trade_name(sigma) {
+        name if name == index.name() => String::new(),
+        name => format!("; the trade also calls {index} with it {name}"),
+    };
+    format!("{}; {nu} degrees of freedom{trade}", words::sigma_name(sigma))
+}
+
 /// The verdict and the numbers in words.
 pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report: Option<&Path>) -> String {
     let mut lines = vec![verdict.headline.clone()];
@@ -156,7 +187,12 @@ pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report
     let number = |value: Option<f64>| value.map_or_else(|| "none".to_owned(), |value| value.to_string());
     lines.push(format!("  n     {}", analysis.n));
     lines.push(format!("  mean  {}{unit}", number(analysis.mean)));
-    lines.push(format!("  sd    {}{unit}  (n \u{2212} 1)", number(analysis.sd)));
+    if analysis.sd.is_some() || study.question.sigma == Sigma::Overall {
+        lines.push(format!("  sd    {}{unit}  (n \u{2212} 1)", number(analysis.sd)));
+    }
+    if study.question.sigma != Sigma::Overall {
+        lines.push(format!("  sigma {}{unit}  ({})", number(analysis.sigma), resting(study, analysis)));
+    }
     for row in &analysis.rows {
         let interval =
             row.interval.map_or_else(|| "no interval method yet".to_owned(), |i| words::interval_text(&i));

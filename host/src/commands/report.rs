@@ -113,6 +113,7 @@ pub(super) fn reported(kept: &Kept, ledger: &Path) -> Study {
             confidence: plan.confidence,
             kind: plan.kind,
             required: None,
+            sigma: plan.sigma,
         },
         data: Data::Readings {
             resolution: plan.resolution,

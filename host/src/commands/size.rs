@@ -1,21 +1,25 @@
 //! `donelight size`: how many pieces a study needs, by precision or by power.
 
+use donelight_core::capability::Index;
 use donelight_core::interval::{Interval, Kind};
-use donelight_core::quantity::{Confidence, Millionths, Precision};
-use donelight_core::sizing::SizingError;
+use donelight_core::quantity::{Confidence, Count, DegreesOfFreedom, Millionths, Precision};
+use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
 use donelight_core::sizing::power::{self, PowerSize};
 use donelight_core::sizing::precision::{self, PrecisionSize};
+use donelight_core::sizing::{Design, SizingError};
 use serde_json::{Value, json};
 
 use crate::cli::{Size, SizePower, SizePrecision};
 use crate::level;
 use crate::output::{Answer, Exit, Explain, Failure};
+use crate::report::{number, words};
 
 impl Explain for SizingError {
     fn kind(&self) -> &'static str {
         match self {
             Self::AboveLimit => "size-above-limit",
             Self::NoMethodYet(_) => "no-method-yet",
+            Self::SigmaTotal => "no-size-beforehand",
             _ => "size-options",
         }
     }
@@ -26,9 +30,28 @@ impl Explain for SizingError {
 
     fn exit(&self) -> Exit {
         match self {
-            Self::AboveLimit | Self::NoMethodYet(_) => Exit::Refused,
+            Self::AboveLimit | Self::NoMethodYet(_) | Self::SigmaTotal => Exit::Refused,
             _ => Exit::WrongUse,
         }
+    }
+}
+
+impl Explain for SigmaError {
+    fn kind(&self) -> &'static str {
+        "sigma-options"
+    }
+
+    fn help(&self) -> String {
+        match self {
+            Self::NeedsSize => "Say for example --subgroups 5.",
+            Self::TakesNoSize => "Leave out --subgroups, or say --sigma pooled.",
+            Self::Unknown | Self::SizeOutOfRange => "",
+        }
+        .to_owned()
+    }
+
+    fn exit(&self) -> Exit {
+        Exit::WrongUse
     }
 }
 
@@ -43,79 +66,133 @@ pub(super) fn run(size: &Size) -> Result<Answer, Failure> {
     }
 }
 
-const METHOD: &str = "Method: normal approximation of Bissell (1990), sigma overall with n \u{2212} 1 degrees of \
-    freedom.\nIt supposes a stable process and readings near to normal.";
+fn design(index: Index, sigma: Sigma) -> Result<Design, SizingError> {
+    Design::by_bissell(index)?.with_sigma(sigma)
+}
+
+/// How the size was come by.
+fn method(sigma: Sigma, n: Count) -> String {
+    let sigma = match sigma {
+        Sigma::Overall => "sigma overall with n \u{2212} 1 degrees of freedom".to_owned(),
+        sigma => {
+            let nu = sigma.degrees_of_freedom(n).map_or(0.0, DegreesOfFreedom::get);
+            let nu = number::degrees_of_freedom(nu);
+            format!("sigma {} with {nu} degrees of freedom", words::sigma_name(sigma))
+        }
+    };
+    format!(
+        "Method: normal approximation of Bissell (1990), {sigma}.\n\
+         It supposes a stable process and readings near to normal."
+    )
+}
+
+/// "212 pieces", "260 pieces: 52 subgroups of 5".
+fn in_subgroups(sigma: Sigma, n: Count) -> String {
+    match sigma.subgroup() {
+        Some(size) => format!("{}: {} subgroups of {size}", pieces(n.get()), n.get() / size.get()),
+        None => pieces(n.get()),
+    }
+}
+
+/// What every size says of its sigma.
+fn with_sigma(mut json: Value, index: Index, sigma: Sigma, n: Count) -> Value {
+    if let Some(json) = json.as_object_mut() {
+        json.insert("name".to_owned(), index.trade_name(sigma).into());
+        json.insert("sigma".to_owned(), sigma.word().into());
+        json.insert("subgroup_size".to_owned(), sigma.subgroup().map(SubgroupSize::get).into());
+        json.insert("nu".to_owned(), sigma.degrees_of_freedom(n).map(DegreesOfFreedom::get).into());
+    }
+    json
+}
 
 fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
-    let &SizePrecision { index, at, within, confidence, kind } = options;
-    let size = precision::smallest(index, at.to_f64(), within, confidence, kind)?;
+    let &SizePrecision { index, at, within, confidence, kind, ref sigma } = options;
+    let sigma = sigma.choose(None)?;
+    let size = precision::smallest_by(&design(index, sigma)?, at.to_f64(), within, confidence, kind)?;
     let PrecisionSize { n, achieved, achieved_before, interval } = size;
     let before = achieved_before.map_or_else(
         || "Fewer pieces have no interval.".to_owned(),
         |before| {
-            format!("With {} it would be {}, which is too far.", pieces(n.get() - 1), width(within, before))
+            let fewer = pieces(n.get() - sigma.step());
+            format!("With {fewer} it would be {}, which is too far.", width(within, before))
         },
     );
     let text = format!(
         "Measure {}.\n\nIf {index} then comes out at {}, {} is {}.\n\
-         It reaches {} from the estimate; {} is wanted. {before}\n\n{METHOD}",
-        pieces(n.get()),
+         It reaches {} from the estimate; {} is wanted. {before}\n\n{}",
+        in_subgroups(sigma, n),
         level::plain(at.0),
         called(confidence, kind),
         shown(&interval),
         width(within, achieved),
         wanted(within),
+        method(sigma, n),
     );
     Ok(Answer::done(
         text,
-        json!({
-            "n": n.get(),
-            "achieved": achieved,
-            "achieved_before": achieved_before,
-            "low": interval.low,
-            "high": interval.high,
-            "index": index.name().to_lowercase(),
-            "at": at.to_f64(),
-            "within": goal_json(within),
-            "confidence": confidence.to_f64(),
-            "kind": kind.name(),
-            "method": "bissell",
-        }),
+        with_sigma(
+            json!({
+                "n": n.get(),
+                "achieved": achieved,
+                "achieved_before": achieved_before,
+                "low": interval.low,
+                "high": interval.high,
+                "index": index.name().to_lowercase(),
+                "at": at.to_f64(),
+                "within": goal_json(within),
+                "confidence": confidence.to_f64(),
+                "kind": kind.name(),
+                "method": "bissell",
+            }),
+            index,
+            sigma,
+            n,
+        ),
     ))
 }
 
 fn by_power(options: &SizePower) -> Result<Answer, Failure> {
-    let &SizePower { index, claim, against, alpha, power } = options;
-    let size = power::smallest(index, claim.to_f64(), against.to_f64(), alpha, power)?;
+    let &SizePower { index, claim, against, alpha, power, ref sigma } = options;
+    let sigma = sigma.choose(None)?;
+    let size = power::smallest_by(&design(index, sigma)?, claim.to_f64(), against.to_f64(), alpha, power)?;
     let PowerSize { n, achieved, achieved_before, critical } = size;
     let side = if against < claim { "below" } else { "above" };
     let before = achieved_before.map_or_else(
         || "Fewer pieces have no test.".to_owned(),
-        |before| format!("{} would notice it with only {}.", pieces(n.get() - 1), percent(before, 4)),
+        |before| {
+            let fewer = pieces(n.get() - sigma.step());
+            format!("{fewer} would notice it with only {}.", percent(before, 4))
+        },
     );
     let text = format!(
         "Measure {}.\n\nReject the claim that {index} is {} if the estimate is {side} {critical:.4}.\n\
-         A true claim is then rejected with a risk of {}; an index of {} is noticed with {}.\n{before}\n\n{METHOD}",
-        pieces(n.get()),
+         A true claim is then rejected with a risk of {}; an index of {} is noticed with {}.\n{before}\n\n{}",
+        in_subgroups(sigma, n),
         level::plain(claim.0),
         level::percent(alpha.0),
         level::plain(against.0),
         percent(achieved, 4),
+        method(sigma, n),
     );
     Ok(Answer::done(
         text,
-        json!({
-            "n": n.get(),
-            "achieved": achieved,
-            "achieved_before": achieved_before,
-            "critical": critical,
-            "index": index.name().to_lowercase(),
-            "claim": claim.to_f64(),
-            "against": against.to_f64(),
-            "alpha": alpha.to_f64(),
-            "power": power.to_f64(),
-            "method": "bissell",
-        }),
+        with_sigma(
+            json!({
+                "n": n.get(),
+                "achieved": achieved,
+                "achieved_before": achieved_before,
+                "critical": critical,
+                "index": index.name().to_lowercase(),
+                "claim": claim.to_f64(),
+                "against": against.to_f64(),
+                "alpha": alpha.to_f64(),
+                "power": power.to_f64(),
+                "method": "bissell",
+            }),
+            index,
+            sigma,
+            n,
+        ),
     ))
 }
 

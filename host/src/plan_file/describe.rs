@@ -4,7 +4,8 @@ use donelight_core::counts::Decimal;
 use donelight_core::interval::Kind;
 use donelight_core::plan::{Parity, Plan};
 use donelight_core::quantity::Precision;
-use donelight_core::sizing::precision;
+use donelight_core::sigma::SubgroupSize;
+use donelight_core::sizing::{Design, precision};
 use serde_json::{Value, json};
 
 use crate::level;
@@ -27,6 +28,7 @@ pub fn facts(plan: &Plan) -> Vec<(String, String)> {
     add("Specification", specification(plan));
     add("Resolution", with_unit(plan, plan.resolution.to_string()));
     add("Question", format!("{} with its {}", plan.index, words::interval_name(plan.confidence, plan.kind)));
+    add("Sigma", words::sigma_name(plan.sigma));
     add("Planned pieces", format!("{}, and never more than {}", rule.planned.get(), rule.limit.get()));
     add("Wanted precision", wanted(plan));
     let parity = match gauge.parity {
@@ -79,7 +81,8 @@ fn wanted(plan: &Plan) -> String {
 
 /// The pieces that the plan's precision takes if the index comes out at so much; `None` beyond the core's bound.
 fn needed(plan: &Plan, at: f64) -> Option<u32> {
-    precision::smallest(plan.index, at, plan.rule.precision, plan.confidence, plan.kind)
+    let design = Design::by_bissell(plan.index).and_then(|design| design.with_sigma(plan.sigma)).ok()?;
+    precision::smallest_by(&design, at, plan.rule.precision, plan.confidence, plan.kind)
         .ok()
         .map(|size| size.n.get())
 }
@@ -131,6 +134,13 @@ fn remarks(plan: &Plan) -> Vec<String> {
             ));
         }
     }
+    if plan.sigma.subgroup().is_some() {
+        remarks.push(
+            "The study is judged at whole subgroups only. Measure each one in a short time: what varies more slowly than \
+             that is left out of the index."
+                .to_owned(),
+        );
+    }
     remarks.push(format!(
         "{} All of it supposes a stable process and readings near to normal.",
         words::coverage(plan.kind)
@@ -159,6 +169,9 @@ pub fn json(plan: &Plan) -> Value {
         "index": plan.index.name().to_lowercase(),
         "confidence": plan.confidence.to_f64(),
         "kind": plan.kind.name(),
+        "sigma": plan.sigma.word(),
+        "subgroup_size": plan.sigma.subgroup().map(SubgroupSize::get),
+        "name": plan.index.trade_name(plan.sigma),
         "planned": plan.rule.planned.get(),
         "precision": { "relative": relative, "absolute": absolute },
         "limit": plan.rule.limit.get(),

@@ -8,6 +8,7 @@ use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::Kind;
 use donelight_core::plan::{Draft, Fault as DraftFault, Field, LineSettings, Parity, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
+use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
 use donelight_core::stopping::StoppingRule;
 use donelight_core::text::Text;
 use toml::de::DeTable;
@@ -63,7 +64,9 @@ impl Reader<'_, '_> {
         let index = self.needed(&mut capability, "index", "\"cpk\"", word::<Index>);
         let confidence = self.optional(&mut capability, "confidence", confidence);
         let kind = self.optional(&mut capability, "kind", word::<Kind>);
+        let sigma_word = self.optional(&mut capability, "sigma", sigma_word);
         capability.finish(self.faults);
+        let sigma = self.sigma(&mut root, sigma_word);
         let rule = self.rule(&mut root);
         let gauge = self.gauge(&mut root);
         let mut watch = root.table("watch", false, self.faults);
@@ -85,6 +88,7 @@ impl Reader<'_, '_> {
             rule,
             gauge,
             same_in_a_row: same_in_a_row.unwrap_or(0),
+            sigma,
         }
     }
 
@@ -99,6 +103,26 @@ impl Reader<'_, '_> {
             precision: precision.unwrap_or(Precision::Relative(Millionths(1_000_000))),
             limit: limit.unwrap_or(Count::MAX),
         }
+    }
+
+    /// The sigma from its word and the table of subgroups.
+    fn sigma(&mut self, root: &mut Table<'_>, word: Option<&'static str>) -> Sigma {
+        let there = root.holds("subgroups");
+        let mut subgroups = root.table("subgroups", false, self.faults);
+        let read = |taken: &Taken| taken.text.parse::<SubgroupSize>().map_err(|error| error.to_string());
+        let size = if there { self.needed(&mut subgroups, "size", "5", read) } else { None };
+        subgroups.finish(self.faults);
+        if self.unread.iter().any(|key| key == SIGMA || key == SIZE) {
+            return Sigma::Overall;
+        }
+        Sigma::new(word, size).unwrap_or_else(|error| {
+            let key = if error == SigmaError::TakesNoSize { SIZE } else { SIGMA };
+            let help = if error == SigmaError::NeedsSize { " in a table [subgroups]: size = 5" } else { "" };
+            let at = self.places.get(key).copied().unwrap_or(0);
+            self.faults.add(at, key, format!("{error}{help}"));
+            self.unread.push(SIGMA.to_owned());
+            Sigma::Overall
+        })
     }
 
     fn gauge(&mut self, root: &mut Table<'_>) -> LineSettings {
@@ -191,6 +215,11 @@ fn stand_in() -> Resolution {
     Resolution::new(1, 0).expect("a step of 1 is a resolution")
 }
 
+/// Which sigma.
+const SIGMA: &str = "capability.sigma";
+/// How many pieces a subgroup has.
+const SIZE: &str = "subgroups.size";
+
 /// The key of a draft's field.
 const fn key(field: Field) -> &'static str {
     match field {
@@ -208,6 +237,7 @@ const fn key(field: Field) -> &'static str {
         Field::DataBits => "gauge.data_bits",
         Field::StopBits => "gauge.stop_bits",
         Field::SameInARow => "watch.same_in_a_row",
+        Field::Sigma => SIGMA,
     }
 }
 
@@ -226,8 +256,10 @@ fn involved(fault: DraftFault) -> Vec<&'static str> {
         }
         DraftFault::PlannedAboveLimit => &["stop.planned", "stop.limit"],
         DraftFault::PrecisionBeyondLimit => {
-            &["stop.precision", "stop.limit", "capability.confidence", "capability.kind"]
+            &["stop.precision", "stop.limit", "capability.confidence", "capability.kind", SIGMA]
         }
+        DraftFault::PlannedNotWhole | DraftFault::LimitNotWhole => &[SIGMA, SIZE],
+        DraftFault::IndexNeedsOverall => &["capability.index"],
         _ => &[],
     };
     others.iter().copied().chain([key(fault.field())]).collect()
@@ -249,6 +281,13 @@ where
     T::Err: std::fmt::Display,
 {
     taken.text.trim().parse().map_err(|error: T::Err| error.to_string())
+}
+
+/// One of the words for a sigma.
+fn sigma_word(taken: &Taken) -> Result<&'static str, String> {
+    let word = taken.text.trim();
+    let known = Sigma::WORDS.into_iter().find(|known| known.eq_ignore_ascii_case(word));
+    known.ok_or_else(|| SigmaError::Unknown.to_string())
 }
 
 fn whole<T: FromStr>(taken: &Taken) -> Result<T, String> {

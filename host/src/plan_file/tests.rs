@@ -165,3 +165,39 @@ fn keys_that_may_be_left_out_have_the_defaults_that_the_example_names() {
     assert_eq!(plan.same_in_a_row, 0);
     assert!(describe::summary(&plan).contains("at most 3"));
 }
+
+#[test]
+fn sigma_within_subgroups_is_planned_by_its_word_and_their_size() {
+    use donelight_core::sigma::{Sigma, SubgroupSize};
+    let five = SubgroupSize::new(5).unwrap();
+    let within = |word: &str, size: &str| {
+        let text = EXAMPLE.replace("planned = 212", "planned = 260").replace("limit = 240", "limit = 320");
+        from_text(&text.replace("sigma = \"overall\"\n", word).replace("# [subgroups]\n# size = 5", size))
+    };
+    let table = "[subgroups]\nsize = 5";
+    assert_eq!(within("sigma = \"pooled\"\n", table).unwrap().sigma, Sigma::Pooled(five));
+    assert_eq!(within("sigma = \"Ranges\"\n", table).unwrap().sigma, Sigma::Ranges(five));
+    assert_eq!(within("", table).unwrap().sigma, Sigma::Pooled(five));
+    assert_eq!(within("", "").unwrap().sigma, Sigma::Overall);
+    assert_eq!(within("sigma = \"moving-ranges\"\n", "").unwrap().sigma, Sigma::MovingRanges);
+    let plan = within("sigma = \"pooled\"\n", table).unwrap();
+    assert!(describe::summary(&plan).contains("pooled within subgroups of 5"));
+    assert_eq!(describe::json(&plan)["name"], "Cpk");
+
+    let one = |word: &str, size: &str, key: &str, words: &str| {
+        let faults = within(word, size).unwrap_err();
+        assert_eq!(faults.len(), 1, "{faults:?}");
+        assert_eq!(faults[0].key, key, "{faults:?}");
+        assert!(faults[0].message.contains(words), "{faults:?}");
+    };
+    one("sigma = \"pooled\"\n", "", "capability.sigma", "[subgroups]: size = 5");
+    one("sigma = \"within\"\n", table, "capability.sigma", "unknown sigma");
+    one("sigma = \"overall\"\n", table, "subgroups.size", "leave their size out");
+    one("sigma = \"total\"\n", table, "capability.sigma", "does not stop by total sigma");
+    one("sigma = \"pooled\"\n", "[subgroups]\nsize = 26", "subgroups.size", "2 to 25");
+    one("sigma = \"pooled\"\n", "[subgroups]\n", "subgroups.size", "missing");
+    one("sigma = \"pooled\"\n", "[subgroups]\nsize = 8", "stop.planned", "multiple");
+    one("sigma = \"pooled\"\n", "[subgroups]\nsize = 13", "stop.limit", "multiple");
+    one("sigma = \"moving-ranges\"\n", "[subgroups]\nsize = 5", "subgroups.size", "leave their size out");
+    one("sigma = \"ranges\"\n", "[subgroups]\nsize = 5\nshape = 3", "subgroups.shape", "unknown key");
+}

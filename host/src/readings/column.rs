@@ -2,11 +2,12 @@
 
 use super::{FileError, Table};
 
-/// The column named by the user, or the only one with numbers. Several are no guess: a row number or a temperature
+/// The column named by the user, or the only one with numbers, `other` left aside. Several are no guess: a row number or a temperature
 /// taken for the reading would give a clean and wrong answer.
 pub(super) fn choose(
     table: &Table<'_>,
     wanted: Option<&str>,
+    other: Option<usize>,
     is_number: impl Fn(&[u8]) -> bool,
 ) -> Result<usize, FileError> {
     if let Some(wanted) = wanted {
@@ -15,7 +16,8 @@ pub(super) fn choose(
     if table.width == 1 {
         return Ok(0);
     }
-    let numeric: Vec<usize> = (0..table.width).filter(|&index| mostly(table, index, &is_number)).collect();
+    let columns = (0..table.width).filter(|&index| Some(index) != other);
+    let numeric: Vec<usize> = columns.filter(|&index| mostly(table, index, &is_number)).collect();
     match numeric.as_slice() {
         [only] => Ok(*only),
         [] => Err(FileError::NoNumbers),
@@ -28,7 +30,8 @@ pub(super) fn choose(
     }
 }
 
-fn named(table: &Table<'_>, wanted: &str) -> Result<usize, FileError> {
+/// The column with this title or number.
+pub(super) fn named(table: &Table<'_>, wanted: &str) -> Result<usize, FileError> {
     let wanted = wanted.trim();
     let same = |title: &String| title.eq_ignore_ascii_case(wanted);
     let matching: Vec<usize> = table

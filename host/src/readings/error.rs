@@ -7,6 +7,7 @@ use std::path::PathBuf;
 use donelight_core::quantity::Count;
 use serde_json::{Value, json};
 
+use super::SubgroupFault;
 use crate::output::Explain;
 
 /// Why a file gives no readings. Nothing is computed from the rest of it.
@@ -50,6 +51,13 @@ pub enum FileError {
         count: usize,
         /// The first of them.
         shown: Vec<BadRow>,
+    },
+    /// The column of subgroups does not part the readings into subgroups of one size.
+    Subgroups {
+        /// The line of the first row that does not fit, from 1 on.
+        line: usize,
+        /// Why it does not.
+        fault: SubgroupFault,
     },
     /// More readings than a study may have.
     TooMany {
@@ -102,6 +110,9 @@ impl fmt::Display for FileError {
                 }
                 Ok(())
             }
+            Self::Subgroups { line, fault } => {
+                write!(f, "the subgroups cannot be taken from the file: line {line}: {fault}")
+            }
             Self::TooMany { count } => {
                 write!(f, "the file has {count} readings; a study has at most {}", Count::MAX.get())
             }
@@ -133,6 +144,7 @@ impl Explain for FileError {
             Self::DecimalCommas => "decimal-commas",
             Self::NoSuchColumn { .. } => "no-such-column",
             Self::BadRows { .. } => "bad-rows",
+            Self::Subgroups { .. } => "bad-subgroups",
             Self::TooMany { .. } => "too-many-readings",
         }
     }
@@ -159,6 +171,9 @@ impl Explain for FileError {
             Self::NoSuchColumn { .. } => "Name one of these, by title or number.",
             Self::BadRows { .. } => {
                 "Correct the file, or remove what is no reading; a line that starts with # is passed over."
+            }
+            Self::Subgroups { .. } => {
+                "Sort the file by subgroups, each with the same number of readings, 2 to 25; only the last may have fewer."
             }
             Self::TooMany { .. } => "Split the file.",
         }

@@ -5,14 +5,17 @@
 
 mod column;
 mod error;
+mod subgroups;
 
 use std::fs;
 use std::path::Path;
 
 use donelight_core::counts::{Counts, ReadingError, Resolution};
 use donelight_core::quantity::Count;
+use donelight_core::sigma::SubgroupSize;
 
 pub use error::{BadRow, FileError};
+pub use subgroups::SubgroupFault;
 
 /// What a file held.
 #[derive(Clone, Debug, PartialEq, Eq)]
@@ -23,6 +26,17 @@ pub struct ReadingsFile {
     pub title: Option<String>,
     /// SHA-256 of the whole file, in hexadecimal.
     pub fingerprint: String,
+    /// How many readings each subgroup has, if a column names them.
+    pub subgroup: Option<SubgroupSize>,
+}
+
+/// Which columns to read: each by its title, or its number from 1 on.
+#[derive(Clone, Copy, Debug, Default)]
+pub struct Columns<'a> {
+    /// The readings; `None` if only one column has numbers, the subgroups' left aside.
+    pub readings: Option<&'a str>,
+    /// What names each reading's subgroup, if that is to be read.
+    pub subgroups: Option<&'a str>,
 }
 
 /// Reads one column of a file as counts of `resolution`; `column` is a title or a number from 1 on, or `None` if there
@@ -36,9 +50,23 @@ pub fn read(
     resolution: Resolution,
     unit: &str,
 ) -> Result<ReadingsFile, FileError> {
+    read_columns(path, &Columns { readings: column, subgroups: None }, resolution, unit)
+}
+
+/// The same, with subgroups if a column names them. They must follow each other and be alike in size; the last one may be
+/// incomplete.
+///
+/// # Errors
+/// See [`FileError`].
+pub fn read_columns(
+    path: &Path,
+    columns: &Columns<'_>,
+    resolution: Resolution,
+    unit: &str,
+) -> Result<ReadingsFile, FileError> {
     let bytes = fs::read(path).map_err(|error| FileError::Unreadable { path: path.to_owned(), error })?;
-    let (readings, title) = from_bytes(&bytes, column, resolution, unit)?;
-    Ok(ReadingsFile { readings, title, fingerprint: fingerprint(&bytes) })
+    let (readings, title, subgroup) = from_bytes(&bytes, columns, resolution, unit)?;
+    Ok(ReadingsFile { readings, title, fingerprint: fingerprint(&bytes), subgroup })
 }
 
 /// SHA-256 in hexadecimal.
@@ -53,11 +81,11 @@ pub fn fingerprint(bytes: &[u8]) -> String {
     })
 }
 
-type Found = (Vec<Counts>, Option<String>);
+type Found = (Vec<Counts>, Option<String>, Option<SubgroupSize>);
 
 fn from_bytes(
     bytes: &[u8],
-    column: Option<&str>,
+    columns: &Columns<'_>,
     resolution: Resolution,
     unit: &str,
 ) -> Result<Found, FileError> {
@@ -75,7 +103,8 @@ fn from_bytes(
                 | ReadingError::NotAscii)
         )
     };
-    let index = column::choose(&table, column, is_number)?;
+    let grouping = columns.subgroups.map(|wanted| column::named(&table, wanted)).transpose()?;
+    let index = column::choose(&table, columns.readings, grouping, is_number)?;
     let mut readings = Vec::with_capacity(table.rows.len());
     let mut bad = Vec::new();
     let mut bad_count = 0;
@@ -97,7 +126,8 @@ fn from_bytes(
         return Err(FileError::TooMany { count: readings.len() });
     }
     let title = table.titles.as_ref().and_then(|titles| titles.get(index).cloned());
-    Ok((readings, title))
+    let subgroup = grouping.map(|grouping| subgroups::size(&table, grouping)).transpose()?;
+    Ok((readings, title, subgroup))
 }
 
 /// The reading of a row, or the offending text and why it is none.

@@ -2,8 +2,8 @@ use super::*;
 
 fn read(text: &str, column: Option<&str>) -> Result<(Vec<i64>, Option<String>), FileError> {
     let resolution: Resolution = "0.001".parse().unwrap();
-    from_bytes(text.as_bytes(), column, resolution, "mm")
-        .map(|(readings, title)| (readings.into_iter().map(Counts::get).collect(), title))
+    from_bytes(text.as_bytes(), &Columns { readings: column, subgroups: None }, resolution, "mm")
+        .map(|(readings, title, _)| (readings.into_iter().map(Counts::get).collect(), title))
 }
 
 fn lines_of_bad_rows(text: &str) -> Vec<usize> {
@@ -83,4 +83,39 @@ fn files_without_readings_say_so() {
 fn the_fingerprint_is_sha_256() {
     // FIPS 180-2, appendix B.1: the digest of "abc".
     assert_eq!(fingerprint(b"abc"), "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad");
+}
+
+fn subgroups(text: &str) -> Result<u32, (usize, SubgroupFault)> {
+    let columns = Columns { readings: None, subgroups: Some("1") };
+    match from_bytes(text.as_bytes(), &columns, "0.1".parse().unwrap(), "") {
+        Ok((_, _, size)) => Ok(size.unwrap().get()),
+        Err(FileError::Subgroups { line, fault }) => Err((line, fault)),
+        Err(other) => panic!("{other:?}"),
+    }
+}
+
+#[test]
+fn subgroups_are_neighbouring_rows_of_one_name_and_the_last_may_be_incomplete() {
+    assert_eq!(subgroups("1,5.1\n1,5.2\n2,5.3\n2,5.4\n"), Ok(2));
+    assert_eq!(subgroups("shift,y\nearly,5.1\nearly,5.2\nearly,5.3\n# noon\nlate,5.4\n"), Ok(3));
+}
+
+#[test]
+fn rows_that_make_no_subgroups_of_one_size_are_named_by_their_line() {
+    let name = |name: &str| name.to_owned();
+    assert_eq!(subgroups("1,5.1\n1,5.2\n,5.3\n"), Err((3, SubgroupFault::Blank)));
+    assert_eq!(
+        subgroups("a,5.1\na,5.2\nb,5.3\nb,5.4\na,5.5\n"),
+        Err((5, SubgroupFault::Scattered { name: name("a") }))
+    );
+    assert_eq!(
+        subgroups("g,y\n1,5.1\n1,5.2\n2,5.3\n3,5.4\n"),
+        Err((4, SubgroupFault::Uneven { name: name("2"), pieces: 1, first: 2 }))
+    );
+    assert_eq!(
+        subgroups("1,5.1\n1,5.2\n2,5.3\n2,5.4\n2,5.5\n"),
+        Err((3, SubgroupFault::Uneven { name: name("2"), pieces: 3, first: 2 }))
+    );
+    assert_eq!(subgroups("1,5.1\n2,5.2\n3,5.3\n"), Err((1, SubgroupFault::Size { pieces: 1 })));
+    assert_eq!(subgroups(&"1,5.1\n".repeat(26)), Err((1, SubgroupFault::Size { pieces: 26 })));
 }

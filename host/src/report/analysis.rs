@@ -3,8 +3,8 @@
 use donelight_core::capability::{Index, IndexError, Sample, SampleError};
 use donelight_core::counts::{Counts, Decimal, Resolution};
 use donelight_core::interval::{self, Interval, IntervalError};
-use donelight_core::moments::Moments;
 use donelight_core::quantity::Count;
+use donelight_core::sigma::{Sigma, Tally};
 
 use super::charts::narrowing::Step;
 use super::{Belonging, Data, Reading, Study};
@@ -20,8 +20,11 @@ pub struct Analysis {
     pub voided: u32,
     /// Their mean; `None` without readings.
     pub mean: Option<f64>,
-    /// Their standard deviation with n − 1; `None` below two readings.
+    /// Their standard deviation with n − 1, whichever sigma the indices take; `None` below two readings, and for a summary
+    /// that gives another sigma.
     pub sd: Option<f64>,
+    /// The sigma that the indices take; `None` where there is no sample.
+    pub sigma: Option<f64>,
     /// Degrees of freedom behind it.
     pub nu: Option<f64>,
     /// The index that was asked for, or why there is none.
@@ -65,13 +68,14 @@ pub fn of(study: &Study) -> Analysis {
     match &study.data {
         Data::Readings { resolution, readings } => of_readings(study, *resolution, readings),
         Data::Summary { n, mean, sd } => {
-            let sample = Sample::from_summary(*n, *mean, *sd, &study.specification);
+            let sample = summarised(study, *n, *mean, *sd);
             Analysis {
                 n: n.get(),
                 surplus: 0,
                 voided: 0,
                 mean: Some(*mean),
-                sd: Some(*sd),
+                sd: (study.question.sigma == Sigma::Overall).then_some(*sd),
+                sigma: sample.as_ref().ok().map(Sample::sigma),
                 nu: sample.as_ref().ok().map(|sample| sample.nu().get()),
                 asked: asked(study, &sample),
                 rows: rows(study, &sample),
@@ -82,17 +86,30 @@ pub fn of(study: &Study) -> Analysis {
     }
 }
 
+/// The sample of a summary, whose standard deviation is the sigma that was asked for.
+fn summarised(study: &Study, n: Count, mean: f64, sd: f64) -> Result<Sample, SampleError> {
+    let sample = Sample::from_summary(n, mean, sd, &study.specification)?;
+    match study.question.sigma {
+        Sigma::Overall => Ok(sample),
+        sigma => {
+            let nu = sigma.degrees_of_freedom(n).ok_or(SampleError::TooFewSubgroups)?;
+            sample.with_sigma(sigma, sd, nu, n)
+        }
+    }
+}
+
 fn of_readings(study: &Study, resolution: Resolution, readings: &[Reading]) -> Analysis {
     let of = |belonging| readings.iter().filter(move |reading| reading.belonging == belonging);
     let counted: Vec<Counts> = of(Belonging::Counted).map(|reading| reading.counts).collect();
-    let moments = sum(&counted);
-    let sample = Sample::from_moments(&moments, resolution, &study.specification);
+    let tally = tally(study, &counted);
+    let (moments, sample) = (tally.moments(), tally.sample(resolution, &study.specification));
     Analysis {
         n: moments.n().get(),
         surplus: saturating(of(Belonging::Surplus).count()),
         voided: saturating(of(Belonging::Voided).count()),
         mean: moments.mean(resolution),
         sd: moments.standard_deviation(resolution),
+        sigma: sample.as_ref().ok().map(Sample::sigma),
         nu: sample.as_ref().ok().map(|sample| sample.nu().get()),
         asked: asked(study, &sample),
         rows: rows(study, &sample),
@@ -102,12 +119,12 @@ fn of_readings(study: &Study, resolution: Resolution, readings: &[Reading]) -> A
 }
 
 /// The sums of all readings. Whoever fills a [`Study`] keeps to [`Count::MAX`]; what lies beyond it would be left out.
-fn sum(counted: &[Counts]) -> Moments {
-    let mut moments = Moments::default();
+fn tally(study: &Study, counted: &[Counts]) -> Tally {
+    let mut tally = Tally::new(study.question.sigma);
     for &counts in counted.iter().take(Count::MAX.get() as usize) {
-        let _ = moments.add(counts);
+        let _ = tally.add(counts);
     }
-    moments
+    tally
 }
 
 fn asked(study: &Study, sample: &Result<Sample, SampleError>) -> Result<Row, Trouble> {
@@ -135,20 +152,25 @@ fn row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> 
 
 fn steps(study: &Study, resolution: Resolution, counted: &[Counts]) -> Vec<Step> {
     let stride = counted.len().div_ceil(STEPS_MAX).max(1);
-    let mut moments = Moments::default();
+    let mut tally = Tally::new(study.question.sigma);
     let mut steps = Vec::new();
     for (i, &counts) in counted.iter().enumerate() {
-        if moments.add(counts).is_err() {
+        if tally.add(counts).is_err() {
             break;
         }
         let n = i + 1;
         if n % stride != 0 && n != counted.len() {
             continue;
         }
-        let Ok(sample) = Sample::from_moments(&moments, resolution, &study.specification) else { continue };
+        let Ok(sample) = tally.sample(resolution, &study.specification) else { continue };
         if let Ok(Row { estimate, interval: Some(interval), .. }) = row(study, &sample, study.question.index)
         {
-            steps.push(Step { n: moments.n().get(), estimate, low: interval.low, high: interval.high });
+            steps.push(Step {
+                n: tally.moments().n().get(),
+                estimate,
+                low: interval.low,
+                high: interval.high,
+            });
         }
     }
     steps

@@ -2,6 +2,7 @@
 
 use donelight_core::counts::Decimal;
 use donelight_core::quantity::Millionths;
+use donelight_core::sigma::{Sigma, SubgroupSize};
 use serde_json::{Value, json};
 
 use super::analysis::{Analysis, Row};
@@ -55,8 +56,12 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
         "voided": analysis.voided,
         "mean": analysis.mean,
         "sd": analysis.sd,
+        "sigma": question.sigma.word(),
+        "subgroup_size": question.sigma.subgroup().map(SubgroupSize::get),
+        "sigma_estimate": analysis.sigma,
         "nu": analysis.nu,
         "index": question.index.name().to_lowercase(),
+        "name": question.index.trade_name(question.sigma),
         "estimate": asked.map(|row| row.estimate),
         "low": interval.and_then(|interval| interval.low),
         "high": interval.and_then(|interval| interval.high),
@@ -68,7 +73,7 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
             _ if question.required.is_none() => None,
             outcome => Some(outcome == Outcome::Shown),
         },
-        "indices": analysis.rows.iter().map(row).collect::<Vec<_>>(),
+        "indices": analysis.rows.iter().map(|found| row(found, question.sigma)).collect::<Vec<_>>(),
         "lower_limit": number(specification.lower()),
         "upper_limit": number(specification.upper()),
         "target": number(specification.target()),
@@ -88,9 +93,10 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
     })
 }
 
-fn row(row: &Row) -> Value {
+fn row(row: &Row, sigma: Sigma) -> Value {
     json!({
         "index": row.index.name().to_lowercase(),
+        "name": row.index.trade_name(sigma),
         "estimate": row.estimate,
         "low": row.interval.and_then(|interval| interval.low),
         "high": row.interval.and_then(|interval| interval.high),

@@ -15,6 +15,7 @@ use donelight_core::counts::{Counts, Resolution};
 use donelight_core::interval::Kind;
 use donelight_core::plan::Plan;
 use donelight_core::quantity::{Confidence, Count, Millionths};
+use donelight_core::sigma::Sigma;
 use donelight_core::stopping::Standing;
 
 /// What is reported.
@@ -53,6 +54,8 @@ pub struct Question {
     pub kind: Kind,
     /// What the lower limit has to reach, if something is claimed.
     pub required: Option<Millionths>,
+    /// Which sigma the index takes.
+    pub sigma: Sigma,
 }
 
 /// What was measured.
@@ -65,13 +68,13 @@ pub enum Data {
         /// In the order they came in.
         readings: Vec<Reading>,
     },
-    /// Only number, mean and standard deviation (with n − 1).
+    /// Only number, mean and sigma: the standard deviation with n − 1, or what the question names.
     Summary {
         /// Number of readings.
         n: Count,
         /// Their mean, in the unit.
         mean: f64,
-        /// Their standard deviation, in the unit.
+        /// Their sigma, in the unit.
         sd: f64,
     },
 }

@@ -27,9 +27,21 @@ pub fn upper_limit(value: f64) -> String {
     nearest((value * SHIFT).ceil() / SHIFT, PLACES)
 }
 
+/// Degrees of freedom: whole ones as such, others with two decimals, rounded down.
+#[must_use]
+pub fn degrees_of_freedom(nu: f64) -> String {
+    if nu.fract() == 0.0 { nu.to_string() } else { nearest((nu * 100.0).floor() / 100.0, 2) }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn degrees_of_freedom_are_whole_or_rounded_down() {
+        assert_eq!(degrees_of_freedom(40.0), "40");
+        assert_eq!(degrees_of_freedom(36.479_9), "36.47");
+    }
 
     #[test]
     fn numbers_have_a_true_minus_and_no_negative_zero() {

@@ -3,6 +3,7 @@
 use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::Kind;
 use donelight_core::plan::Plan;
+use donelight_core::sigma::Sigma;
 use maud::{DOCTYPE, Markup, PreEscaped, html};
 
 use super::analysis::{Analysis, value};
@@ -99,7 +100,8 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                 } }
                 p {
                     "Limits: " (words::interval_name(study.question.confidence, kind))
-                    ", sigma overall (n \u{2212} 1). " (words::coverage(kind))
+                    ", sigma " (words::sigma_name(study.question.sigma)) ". " (words::coverage(kind))
+                    @if let Some(about) = words::about_sigma(study.question.sigma) { " " (about) }
                     " Each limit holds for its index alone."
                 }
             }
@@ -205,7 +207,8 @@ fn beyond_in_words(analysis: &Analysis) -> String {
 }
 
 fn distribution(study: &Study, analysis: &Analysis) -> Markup {
-    let spread = analysis.mean.zip(analysis.sd.filter(|sd| *sd > 0.0));
+    // The curve is that of all readings; a summary may give another sigma only.
+    let spread = analysis.mean.zip(analysis.sd.or(analysis.sigma).filter(|sd| *sd > 0.0));
     let (bins, resolution) = match &study.data {
         Data::Readings { resolution, readings } => {
             let counted = readings.iter().filter(|reading| reading.belonging == Belonging::Counted);
@@ -294,15 +297,23 @@ fn narrowed(study: &Study, analysis: &Analysis) -> Markup {
 }
 
 fn record(study: &Study, analysis: &Analysis) -> Markup {
-    let mut numbers = vec![Fact::new("Readings counted", analysis.n.to_string())];
+    let question = study.question;
+    let mut numbers = vec![
+        Fact::new("Index", words::index_name(question.index, question.sigma)),
+        Fact::new("Readings counted", analysis.n.to_string()),
+    ];
     if let Some(mean) = analysis.mean {
         numbers.push(Fact::new("Mean", measure(study, mean)));
     }
     if let Some(sd) = analysis.sd {
         numbers.push(Fact::new("Standard deviation (n \u{2212} 1)", measure(study, sd)));
     }
+    if let Some(sigma) = analysis.sigma.filter(|_| question.sigma != Sigma::Overall) {
+        let name = format!("Sigma {}", words::sigma_name(question.sigma));
+        numbers.push(Fact::new(name, measure(study, sigma)));
+    }
     if let Some(nu) = analysis.nu {
-        numbers.push(Fact::new("Degrees of freedom", nu.to_string()));
+        numbers.push(Fact::new("Degrees of freedom", number::degrees_of_freedom(nu)));
     }
     numbers.extend(specification_facts(study));
     html! {

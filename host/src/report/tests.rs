@@ -37,6 +37,7 @@ fn study() -> Study {
             confidence: plan.confidence,
             kind: plan.kind,
             required: Some(Millionths(1_330_000)),
+            sigma: plan.sigma,
         },
         data: Data::Readings { resolution: plan.resolution, readings },
         planned: Some((plan, Standing::Settled)),

@@ -18,7 +18,7 @@ pub mod words;
 
 use donelight_core::capability::Index;
 use donelight_core::plan::Plan;
-use donelight_core::sizing::precision;
+use donelight_core::sizing::{Design, precision};
 use rayon::prelude::*;
 
 pub use outcome::{Outcome, Pieces, Share};
@@ -90,8 +90,10 @@ const READINGS: f64 = 1.5e7;
 pub fn usual_studies(plan: &Plan, processes: &[Process]) -> u32 {
     let rule = plan.rule;
     let expected = |process: &Process| {
-        let size =
-            precision::smallest(plan.index, process.true_index, rule.precision, plan.confidence, plan.kind);
+        let size = Design::by_bissell(plan.index).and_then(|design| {
+            let design = design.with_sigma(plan.sigma)?;
+            precision::smallest_by(&design, process.true_index, rule.precision, plan.confidence, plan.kind)
+        });
         f64::from(size.map_or(rule.limit, |size| size.n.clamp(rule.planned, rule.limit)).get())
     };
     let pieces: f64 = processes.iter().map(expected).sum();

@@ -1,11 +1,11 @@
 //! One simulated study, from the first reading to the end that the plan's rule gives it, through the core's own code.
 
-use donelight_core::capability::Sample;
 use donelight_core::counts::Counts;
 use donelight_core::interval::{self, Estimate};
 use donelight_core::moments::Moments;
 use donelight_core::plan::Plan;
 use donelight_core::quantity::Count;
+use donelight_core::sigma::{Sigma, Tally};
 use donelight_core::stopping::Standing;
 
 use super::bar::Bar;
@@ -39,7 +39,13 @@ impl<'a> Studies<'a> {
 
     /// The study of this number.
     pub(super) fn run(&self, study: u32) -> End {
-        self.run_judged(study, |moments| !self.bar.rules_out(moments, &self.gauged))
+        self.run_judged(study, |moments| self.is_open(moments))
+    }
+
+    /// Whether the readings may settle the study. The bar is that of the overall sigma; with another one, the core is asked
+    /// at every reading.
+    fn is_open(&self, moments: &Moments) -> bool {
+        self.plan.sigma != Sigma::Overall || !self.bar.rules_out(moments, &self.gauged)
     }
 
     /// The same, and at how many readings the interval was computed.
@@ -47,7 +53,7 @@ impl<'a> Studies<'a> {
     pub(super) fn run_counted(&self, study: u32) -> (End, u32) {
         let looks = std::cell::Cell::new(0);
         let end = self.run_judged(study, |moments| {
-            let open = !self.bar.rules_out(moments, &self.gauged);
+            let open = self.is_open(moments);
             looks.set(looks.get() + u32::from(open));
             open
         });
@@ -56,21 +62,20 @@ impl<'a> Studies<'a> {
 
     /// The same; the interval is computed only where `can_settle` says so.
     pub(super) fn run_judged(&self, study: u32, can_settle: impl Fn(&Moments) -> bool) -> End {
-        let rule = &self.plan.rule;
-        let mut moments = Moments::default();
+        let mut tally = Tally::new(self.plan.sigma);
         for pair in 0.. {
             for z in self.deviates.pair(study, pair) {
                 // `Process::before` keeps every reading within range, and the rule ends at its limit, a `Count`.
                 let counts = Counts::new(self.gauged.centre.get() + self.gauged.reading(z));
-                moments.add(counts.expect("in range")).expect("below the limit");
-                let n = moments.n();
+                tally.add(counts.expect("in range")).expect("below the limit");
+                let n = tally.moments().n();
                 let mut estimate = None;
-                let standing = rule.judge(n, || {
-                    estimate = if can_settle(&moments) { self.estimate(&moments) } else { None };
+                let standing = self.plan.judge(n, || {
+                    estimate = if can_settle(tally.moments()) { self.estimate(&tally) } else { None };
                     estimate
                 });
                 if standing != Standing::Gathering {
-                    return End { n, standing, estimate: estimate.or_else(|| self.estimate(&moments)) };
+                    return End { n, standing, estimate: estimate.or_else(|| self.estimate(&tally)) };
                 }
             }
         }
@@ -78,9 +83,9 @@ impl<'a> Studies<'a> {
     }
 
     /// As a station gets it: see `donelight_core::station::Study::estimate`.
-    fn estimate(&self, moments: &Moments) -> Option<Estimate> {
+    fn estimate(&self, tally: &Tally) -> Option<Estimate> {
         let plan = self.plan;
-        let sample = Sample::from_moments(moments, plan.resolution, plan.specification()).ok()?;
+        let sample = tally.sample(plan.resolution, plan.specification()).ok()?;
         interval::with_quantile(&sample, plan.index, plan.quantile()).ok()
     }
 }

@@ -166,6 +166,43 @@ fn the_indices_of_an_unbiased_mean_have_their_known_bias_at_any_offset() {
     }
 }
 
+/// The example with sigma within subgroups of so many pieces; the rest as asked.
+fn within(sigma: &str, size: u32, planned: u32, precision: &str, limit: u32) -> Plan {
+    let table = if size > 1 { format!("[subgroups]\nsize = {size}") } else { String::new() };
+    changed(&[
+        ("\"0.001\"", "\"0.000001\""),
+        ("sigma = \"overall\"", &format!("sigma = \"{sigma}\"")),
+        ("# [subgroups]\n# size = 5", &table),
+        ("index = \"cpk\"", "index = \"cpu\""),
+        ("planned = 212", &format!("planned = {planned}")),
+        ("precision = \"10%\"", &format!("precision = \"{precision}\"")),
+        ("limit = 240", &format!("limit = {limit}")),
+    ])
+}
+
+/// The same bias, of which sigma pooled within 5 subgroups of 3 has that of ν = 10: √5 Γ(4.5)/Γ(5).
+#[test]
+fn a_sigma_within_subgroups_has_the_bias_of_its_own_degrees_of_freedom() {
+    let factor = 5_f64.sqrt() * 105.0 * std::f64::consts::PI.sqrt() / 16.0 / 24.0;
+    let outcome = quick(&within("pooled", 3, 15, "1000%", 15), 1.33, 0.0);
+    let (bias, error) = (outcome.bias().unwrap(), outcome.bias_standard_error().unwrap());
+    assert!((bias - 1.33 * (factor - 1.0)).abs() < 4.0 * error, "{bias} ± {error}");
+    // Not that of ν = 14, which the overall sigma of 15 pieces has: 1.0579 against 1.0837.
+    assert!((bias - 1.33 * 0.0579).abs() > 4.0 * error, "{bias} ± {error}");
+}
+
+/// The floor is one of ν = z²/(2r²): 21.3 at 30 %. Pooled in threes that takes 11 subgroups; moving ranges 35 (0.605 ν each).
+#[test]
+fn studies_within_subgroups_end_at_whole_ones_and_not_before_their_floor() {
+    let pooled = quick(&within("pooled", 3, 6, "30%", 300), 3.0, 0.0);
+    assert!((33..=39).contains(&pooled.n().least()), "{}", pooled.n().least());
+    for n in 0..=10 {
+        assert_eq!(pooled.n().quantile(f64::from(n) / 10.0) % 3, 0);
+    }
+    let moving = quick(&within("moving-ranges", 1, 6, "30%", 300), 3.0, 0.0);
+    assert!((36..=42).contains(&moving.n().least()), "{}", moving.n().least());
+}
+
 /// z√(1/(9nĈ²) + 1/(2(n − 1))) ≤ r has no solution below n = 1 + z²/(2r²), whatever the estimate.
 #[test]
 fn no_study_ends_before_the_floor_that_its_precision_sets() {

@@ -9,6 +9,7 @@ use donelight_core::lamps::Call;
 use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Refusal;
+use donelight_core::sigma::Sigma;
 use donelight_core::stopping::StoppingRule;
 use donelight_core::wire::{self, FRAME_MAX, FrameReader, Reply, Request};
 
@@ -40,6 +41,7 @@ fn plan(planned: u32, limit: u32) -> Plan {
         },
         gauge: LineSettings::default(),
         same_in_a_row: 4,
+        sigma: Sigma::Overall,
     };
     Plan::try_from(draft).unwrap()
 }

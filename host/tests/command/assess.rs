@@ -264,3 +264,105 @@ fn the_words_of_an_assessment_are_these() {
          person. It does not say that a part or a machine is safe.\n"
     );
 }
+
+/// NIST StRD, analysis of variance, SiRstv (a public copy): five instruments, five resistivities each.
+const SIRSTV: &str = "instrument,resistivity\n1,196.3052\n1,196.1240\n1,196.1890\n1,196.2569\n1,196.3403\n2,196.3042\n\
+    2,196.3825\n2,196.1669\n2,196.3257\n2,196.0422\n3,196.1303\n3,196.2005\n3,196.2889\n3,196.0343\n3,196.1811\n\
+    4,196.2795\n4,196.1748\n4,196.1494\n4,196.1485\n4,195.9885\n5,196.2119\n5,196.1051\n5,196.1850\n5,196.0052\n5,196.2090\n";
+
+#[test]
+fn sigma_within_subgroups_agrees_with_the_mean_squares_that_nist_certifies() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("sirstv.csv");
+    fs::write(&file, SIRSTV).unwrap();
+    let options = "--lsl 195.5 --usl 197 --resolution 0.0001 --json";
+    let by_column = assess(&file, &format!("{options} --subgroup-column instrument")).ends_with(0).json();
+    // Certified: mean squares of 1.27865654E-02 between (4) and 1.08318280E-02 within (20 degrees of freedom); from memory.
+    let (between, within) = (1.278_656_54e-2_f64, 1.083_182_80e-2_f64);
+    let near = |json: &Value, name: &str, value: f64| {
+        assert!((number(json, name) / value - 1.0).abs() < 1e-13, "{name}: {} against {value}", json[name]);
+    };
+    near(&by_column, "sigma_estimate", within.sqrt());
+    assert_eq!((number(&by_column, "nu"), number(&by_column, "n")), (20.0, 25.0));
+    assert_eq!((&by_column["sigma"], &by_column["name"]), (&"pooled".into(), &"Cpk".into()));
+    let by_size = assess(&file, &format!("{options} --column 2 --subgroups 5")).ends_with(0).json();
+    assert_eq!(by_size["estimate"], by_column["estimate"]);
+
+    let total = assess(&file, &format!("{options} --subgroup-column 1 --sigma total")).ends_with(0).json();
+    let variance = between / 5.0 + within * 0.8;
+    near(&total, "sigma_estimate", variance.sqrt());
+    let [p, q] = [between / 5.0, within * 0.8].map(|part| part / variance);
+    near(&total, "nu", 1.0 / (p * p / 4.0 + q * q / 20.0));
+    assert_eq!(total["name"], "Ppk");
+
+    let overall = assess(&file, &format!("{options} --column 2")).ends_with(0).json();
+    assert_eq!(
+        (&overall["sigma"], &overall["name"], &overall["index"]),
+        (&"overall".into(), &"Ppk".into(), &"cpk".into())
+    );
+    assert_eq!(overall["sigma_estimate"], overall["sd"]);
+    for json in [&by_column, &total] {
+        assert_eq!(
+            json["sd"], overall["sd"],
+            "the standard deviation of all readings is that of all readings"
+        );
+    }
+}
+
+#[test]
+fn the_words_and_the_page_name_the_sigma_and_what_it_leaves_out() {
+    let folder = tempfile::tempdir().unwrap();
+    let (file, page) = (folder.path().join("sirstv.csv"), folder.path().join("sirstv.html"));
+    fs::write(&file, SIRSTV).unwrap();
+    let options = format!("--usl 197 --resolution 0.0001 --column 2 --report {}", page.display());
+    let within = assess(&file, &format!("{options} --subgroups 5 --sigma ranges")).ends_with(0);
+    assert!(
+        within.out.contains("by the mean range of subgroups of 5; 18.35 degrees of freedom"),
+        "{}",
+        within.out
+    );
+    assert!(
+        within.out.contains("left out of Cpk. The standard deviation of all readings is"),
+        "{}",
+        within.out
+    );
+    let html = fs::read_to_string(&page).unwrap();
+    assert!(html.contains("Cpk (sigma by the mean range of subgroups of 5)"));
+    assert!(html.contains("effective ones (Patnaik 1950)"));
+    assess(&file, &options).ends_with(0);
+    let html = fs::read_to_string(&page).unwrap();
+    assert!(html.contains("Cpk (overall sigma; the trade also calls it Ppk)"));
+    let total = assess(&file, &format!("{options} --subgroups 5 --sigma total")).ends_with(0);
+    assert!(total.out.contains("; the trade also calls Cpk with it Ppk)"), "{}", total.out);
+    assert!(fs::read_to_string(&page).unwrap().contains("(Satterthwaite 1946)"));
+}
+
+#[test]
+fn a_summary_may_give_sigma_within_subgroups() {
+    let line = "assess --summary n=260,mean=12,sd=0.01 --lsl 11.95 --usl 12.05";
+    let json = donelight(&format!("{line} --subgroups 5 --json")).ends_with(0).json();
+    assert_eq!((number(&json, "nu"), number(&json, "sigma_estimate")), (208.0, 0.01));
+    assert!(json["sd"].is_null(), "it is not the standard deviation of all readings");
+    // Bissell's formula by hand: 5/3 ∓ 1.95996 √(1/(9·260) + (5/3)²/(2·208)).
+    let reach = 1.959_963_984_540_054 * (1.0 / 2340.0 + 25.0 / 9.0 / 416.0_f64).sqrt();
+    assert!((number(&json, "low") - (5.0 / 3.0 - reach)).abs() < 1e-12, "{json}");
+    let refused = donelight(&format!("{line} --subgroups 5 --sigma total")).ends_with(2);
+    assert!(refused.err.contains("Give the readings in a file"), "{}", refused.err);
+    let cpm = donelight(&format!("{line} --target 12 --subgroups 5 --index cpm")).ends_with(2);
+    assert!(cpm.err.contains("overall sigma only"), "{}", cpm.err);
+}
+
+#[test]
+fn subgroups_that_cannot_be_taken_from_a_file_are_told_with_the_line() {
+    let folder = tempfile::tempdir().unwrap();
+    let file = folder.path().join("uneven.csv");
+    fs::write(&file, SIRSTV.replace("1,196.1240\n", "")).unwrap();
+    let answer =
+        assess(&file, "--usl 197 --resolution 0.0001 --subgroup-column instrument --json").ends_with(1);
+    assert_eq!(answer.json()["error"]["kind"], "bad-subgroups");
+    assert!(answer.err.contains("line 6: subgroup \"2\" has 5 readings, the first one 4"), "{}", answer.err);
+    let few = assess(&file, "--usl 197 --resolution 0.0001 --column 2 --subgroups 25").ends_with(1);
+    assert!(few.err.contains("too few whole subgroups"), "{}", few.err);
+    let both = assess(&file, "--usl 197 --resolution 0.0001 --subgroup-column 1 --subgroups 5").ends_with(2);
+    assert!(both.err.contains("cannot be used with"), "{}", both.err);
+}

@@ -106,3 +106,55 @@ fn what_no_study_can_reach_is_refused_with_advice() {
     let answer = donelight("size precision --index cpm --at 1.5 --within 10%").ends_with(1);
     assert!(answer.err.contains("choose cpk"), "{}", answer.err);
 }
+
+#[test]
+fn a_size_in_subgroups_is_a_whole_number_of_them_and_names_its_sigma() {
+    // ν = 4n/5 in Bissell's formula asks for n ≥ 259.06, by hand.
+    let answer = donelight("size precision --index cpk --at 1.5 --within 10% --subgroups 5 --json").json();
+    assert_eq!(
+        (&answer["n"], &answer["nu"], &answer["subgroup_size"]),
+        (&260.into(), &208.0.into(), &5.into())
+    );
+    assert_eq!(
+        (&answer["index"], &answer["name"], &answer["sigma"]),
+        (&"cpk".into(), &"Cpk".into(), &"pooled".into())
+    );
+    assert!(answer["achieved"].as_f64().unwrap() <= 0.1 && answer["achieved_before"].as_f64().unwrap() > 0.1);
+    let overall = donelight("size precision --index cpk --at 1.5 --within 10% --json").json();
+    assert_eq!(
+        (&overall["name"], &overall["sigma"], &overall["nu"]),
+        (&"Ppk".into(), &"overall".into(), &211.0.into())
+    );
+    assert!(overall["subgroup_size"].is_null());
+
+    let words = donelight("size precision --at 1.5 --within 10% --subgroups 5").ends_with(0).out;
+    assert!(words.starts_with("Measure 260 pieces: 52 subgroups of 5.\n"), "{words}");
+    assert!(
+        words.contains("With 255 pieces") && words.contains("pooled within subgroups of 5 with 208 degrees"),
+        "{words}"
+    );
+    let ranges = donelight("size power --claim 1.5 --against 1.3 --subgroups 5 --sigma Ranges --json").json();
+    let pooled = donelight("size power --claim 1.5 --against 1.3 --subgroups 5 --json").json();
+    assert!(ranges["n"].as_u64() > pooled["n"].as_u64() && ranges["n"].as_u64().unwrap().is_multiple_of(5));
+    let moving =
+        donelight("size precision --index cp --at 1.5 --within 10% --sigma moving-ranges --json").json();
+    assert_eq!(moving["n"], 318);
+}
+
+#[test]
+fn a_sigma_and_subgroups_that_do_not_go_together_are_wrong_use() {
+    for (options, help) in [
+        ("--sigma pooled", "--subgroups 5"),
+        ("--sigma overall --subgroups 5", "Leave out --subgroups"),
+        ("--sigma moving-ranges --subgroups 5", "Leave out --subgroups"),
+        ("--sigma within", "possible values"),
+        ("--subgroups 1", "2 to 25"),
+        ("--subgroups 26", "2 to 25"),
+        ("--subgroups five", "2 to 25"),
+    ] {
+        let answer = donelight(&format!("size precision --at 1.5 --within 10% {options}")).ends_with(2);
+        assert!(answer.err.contains(help), "{options}: {}", answer.err);
+    }
+    let total = donelight("size precision --at 1.5 --within 10% --sigma total --subgroups 5").ends_with(1);
+    assert!(total.err.contains("size the study with sigma overall"), "{}", total.err);
+}

@@ -12,6 +12,7 @@ use donelight_core::interval::Kind;
 use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Seq;
+use donelight_core::sigma::Sigma;
 use donelight_core::stopping::StoppingRule;
 use donelight_core::text::Text;
 use donelight_core::wire::StationId;
@@ -40,6 +41,7 @@ pub(crate) fn plan(name: &str) -> Plan {
         },
         gauge: LineSettings::default(),
         same_in_a_row: 0,
+        sigma: Sigma::Overall,
     })
     .unwrap()
 }
