@@ -74,6 +74,33 @@ fn main_job(name: &str, precision: u32) {
     assert!(!board.events().iter().any(|event| event.what == What::Overrun));
 }
 
+/// Thirty of Lew's readings with each sigma that a station can take: done at the thirtieth, all figures those of the host.
+#[test]
+#[ignore = "needs the Pico image: run tests/run"]
+fn every_sigma_within_subgroups_is_the_same_to_the_last_bit_on_device_and_host() {
+    let set = Set::named("Lew");
+    let readings = &set.readings()[..30];
+    let mut study = Study::of(&set, 30, 150);
+    study.limit = 60;
+    let toml = study.toml();
+    let folder = tempfile::tempdir().unwrap();
+    for (i, (sigma, table)) in [
+        ("pooled", "[subgroups]\nsize = 5\n"),
+        ("ranges", "[subgroups]\nsize = 3\n"),
+        ("ranges", "[subgroups]\nsize = 15\n"),
+        ("moving-ranges", ""),
+    ]
+    .into_iter()
+    .enumerate()
+    {
+        let mut board = Board::start();
+        let text = toml.replace("[capability]\n", &format!("[capability]\nsigma = \"{sigma}\"\n")) + table;
+        board.load(&plan(&text)).unwrap();
+        assert_eq!(measure_until_done(&mut board, readings), 30, "{sigma}");
+        pull_and_compare(&mut board, &folder.path().join(format!("ledger{i}.sqlite")), readings);
+    }
+}
+
 #[test]
 #[ignore = "needs the Pico image: run tests/run"]
 fn lew_is_done_at_the_right_reading_and_keeps_the_certified_values() {
