@@ -8,10 +8,10 @@ use serde::{Deserialize, Serialize};
 use crate::{
     capability::{Index, Specification},
     counts::{Decimal, Resolution},
-    interval::{Kind, Quantile},
-    quantity::{Confidence, DegreesOfFreedom, Precision},
+    interval::{Estimate, Kind, Quantile},
+    quantity::{Confidence, Count, DegreesOfFreedom, Precision},
     sigma::{self, Sigma},
-    stopping::StoppingRule,
+    stopping::{Standing, StoppingRule},
     text::Text,
 };
 
@@ -345,6 +345,11 @@ impl Plan {
     #[must_use]
     pub fn specification(&self) -> &Specification {
         &self.specification
+    }
+
+    /// Judges a study of `n` pieces by the rule, at whole subgroups only: see [`StoppingRule::judge`].
+    pub fn judge(&self, n: Count, estimate: impl FnOnce() -> Option<Estimate>) -> Standing {
+        if self.sigma.ends_at(n) { self.rule.judge(n, estimate) } else { Standing::Gathering }
     }
 
     /// The quantile of its confidence and kind, computed once.

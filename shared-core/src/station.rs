@@ -175,9 +175,7 @@ impl Study {
     fn judge(&mut self) {
         self.standing = match self.held {
             Some(_) => Standing::Gathering,
-            // Subgroups are taken whole.
-            None if !self.plan.sigma.ends_at(self.moments().n()) => Standing::Gathering,
-            None => self.plan.rule.judge(self.moments().n(), || self.estimate()),
+            None => self.plan.judge(self.moments().n(), || self.estimate()),
         };
     }
 }
