@@ -157,9 +157,9 @@ pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report
     lines.push(format!("  n     {}", analysis.n));
     lines.push(format!("  mean  {}{unit}", number(analysis.mean)));
     lines.push(format!("  sd    {}{unit}  (n \u{2212} 1)", number(analysis.sd)));
+    let none = words::no_interval(study);
     for row in &analysis.rows {
-        let interval =
-            row.interval.map_or_else(|| "no interval method yet".to_owned(), |i| words::interval_text(&i));
+        let interval = row.interval.map_or_else(|| none.to_owned(), |i| words::interval_text(&i));
         lines.push(format!("  {:<4}  {:.4}  {interval}", row.index, row.estimate));
     }
     lines.push(String::new());

@@ -91,7 +91,7 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                             @if kind != Kind::Upper { td class="number" { (end(row.interval.and_then(|i| i.low), number::lower_limit)) } }
                             @if kind != Kind::Lower { td class="number" { (end(row.interval.and_then(|i| i.high), number::upper_limit)) } }
                             td class="remark" {
-                                @if row.interval.is_none() { "No interval method yet." }
+                                @if row.interval.is_none() { (words::no_interval(study)) "." }
                                 @else if row.index == study.question.index { "The study's question." }
                             }
                         }
@@ -99,7 +99,9 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                 } }
                 p {
                     "Limits: " (words::interval_name(study.question.confidence, kind))
-                    ", sigma overall (n \u{2212} 1). " (words::coverage(kind))
+                    ", sigma overall (n \u{2212} 1). "
+                    @if study.decided_early().is_some() { (words::AFTER_EARLY_DECISION) }
+                    @else { (words::coverage(kind)) }
                     " Each limit holds for its index alone."
                 }
             }

@@ -106,3 +106,27 @@ fn what_no_study_can_reach_is_refused_with_advice() {
     let answer = donelight("size precision --index cpm --at 1.5 --within 10%").ends_with(1);
     assert!(answer.err.contains("choose cpk"), "{}", answer.err);
 }
+
+#[test]
+fn deciding_early_names_its_looks_and_saves_thirty_percent_of_297_on_average() {
+    let answer = donelight("size power --claim 1.5 --against 1.3 --early --json").ends_with(0).json();
+    assert_eq!(answer["fixed"], 332);
+    assert_eq!(answer["looks"].as_array().unwrap().len(), 8);
+    assert!(answer["true_alpha"].as_f64().unwrap() <= 0.05);
+    assert!(answer["true_power"].as_f64().unwrap() >= 0.95);
+    for place in answer["places"].as_array().unwrap() {
+        for value in ["at_claim", "at_against"] {
+            assert!(place[value]["expected"].as_f64().unwrap() <= 208.0, "{place}");
+        }
+    }
+    let words =
+        donelight("size power --index cpl --claim 1.5 --against 1.3 --early --looks 4").ends_with(0).out;
+    for needle in ["kept if it is", "a fixed size with the same promises takes 297", "only one limit matters"]
+    {
+        assert!(words.contains(needle), "{needle} is not in {words}");
+    }
+    donelight("size power --claim 1.5 --against 1.3 --looks 4").ends_with(2);
+    donelight("size power --index cpm --claim 1.5 --against 1.3 --early").ends_with(1);
+    donelight("size power --claim 1.5 --against 1.5 --early").ends_with(2);
+    donelight("size power --claim 3 --against 0.5 --early").ends_with(1);
+}
