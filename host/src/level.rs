@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use donelight_core::quantity::Millionths;
+
 /// Whole millionths, and whether they were written with a percent sign.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub struct Level {
@@ -48,6 +50,34 @@ pub fn read(text: &str) -> Result<Level, LevelError> {
     let padded = format!("{whole}{fraction:0<places$}");
     let millionths = padded.parse().map_err(|_| LevelError::TooLarge)?;
     Ok(Level { millionths, percent })
+}
+
+/// A risk above 0 and up to 50 %.
+///
+/// # Errors
+/// Words that say what to write instead.
+pub fn alpha(text: &str) -> Result<Millionths, String> {
+    let level = read(text).map_err(|error| error.to_string())?;
+    match level.millionths {
+        1..=500_000 => Ok(Millionths(level.millionths)),
+        _ => Err("not above 0% and up to 50%; write for example 5% or 0.05".to_owned()),
+    }
+}
+
+/// An index value from 0.01 to 100.
+///
+/// # Errors
+/// Words that say what to write instead.
+pub fn index_value(text: &str) -> Result<Millionths, String> {
+    let level = read(text).map_err(|error| match error {
+        LevelError::NotANumber => "not a positive number such as 1.33".to_owned(),
+        other => other.to_string(),
+    })?;
+    match level {
+        Level { percent: true, .. } => Err("an index has no percent sign; write for example 1.33".to_owned()),
+        Level { millionths: 10_000..=100_000_000, .. } => Ok(Millionths(level.millionths)),
+        _ => Err("not between 0.01 and 100".to_owned()),
+    }
 }
 
 /// Millionths as a percentage without superfluous zeros: `95 %`, `99.73 %`.

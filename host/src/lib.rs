@@ -7,6 +7,7 @@
 
 pub mod cli;
 pub mod commands;
+pub mod design;
 pub mod files;
 pub mod ledger;
 pub mod level;

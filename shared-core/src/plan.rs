@@ -10,8 +10,9 @@ use crate::{
     counts::{Decimal, Resolution},
     interval::{Estimate, Kind, Quantile},
     quantity::{Confidence, Count, DegreesOfFreedom, Precision},
+    record::RECORD_MAX,
     sigma::{self, Sigma},
-    stopping::{Standing, StoppingRule},
+    stopping::{Goal, Standing, StoppingRule, early::EarlyError},
     text::Text,
 };
 
@@ -126,6 +127,16 @@ pub enum Fault {
     StopBits,
     /// One or two equal readings in a row are no sign of a stuck gauge.
     SameInARow,
+    /// A claim that equals the value it is to be told from, or an index of zero.
+    EarlyQuestion,
+    /// The risk of rejecting a true claim is zero or above 50 %.
+    EarlyAlpha,
+    /// The looks do not ascend, or planned count and limit are not the first and the last of them.
+    LooksOutOfOrder,
+    /// The boundaries of a look overlap, or the last look leaves something undecided.
+    LooksUndecided,
+    /// The plan does not fit into a record.
+    TooLong,
     /// The planned count ends within a subgroup.
     PlannedNotWhole,
     /// The limit ends within a subgroup.
@@ -134,6 +145,8 @@ pub enum Fault {
     IndexNeedsOverall,
     /// A study that stops by its precision cannot have total sigma.
     SigmaTotal,
+    /// A claim that is decided early has the overall sigma only.
+    EarlyNeedsOverall,
 }
 
 /// The field of a plan that a fault points at.
@@ -154,6 +167,9 @@ pub enum Field {
     DataBits,
     StopBits,
     SameInARow,
+    Claim,
+    Alpha,
+    Looks,
     Sigma,
 }
 
@@ -162,7 +178,7 @@ impl Fault {
     #[must_use]
     pub fn field(self) -> Field {
         match self {
-            Self::NoName => Field::Name,
+            Self::NoName | Self::TooLong => Field::Name,
             Self::UnitNotAWord => Field::Unit,
             Self::NoLimit | Self::LimitBeyondRange | Self::IndexNeedsLower => Field::Lower,
             Self::LimitsReversed | Self::IndexNeedsUpper => Field::Upper,
@@ -176,7 +192,10 @@ impl Fault {
             Self::DataBits => Field::DataBits,
             Self::StopBits => Field::StopBits,
             Self::SameInARow => Field::SameInARow,
-            Self::IndexNeedsOverall | Self::SigmaTotal => Field::Sigma,
+            Self::EarlyQuestion => Field::Claim,
+            Self::EarlyAlpha => Field::Alpha,
+            Self::LooksOutOfOrder | Self::LooksUndecided => Field::Looks,
+            Self::IndexNeedsOverall | Self::SigmaTotal | Self::EarlyNeedsOverall => Field::Sigma,
         }
     }
 }
@@ -215,6 +234,21 @@ impl core::fmt::Display for Fault {
             Self::DataBits => "the data bits must be 7 or 8",
             Self::StopBits => "the stop bits must be 1 or 2",
             Self::SameInARow => "equal readings in a row: 0 for never, or 3 and more",
+            Self::EarlyQuestion => {
+                "the claim must differ from the value it is to be told from, and both must be above zero"
+            }
+            Self::EarlyAlpha => "alpha must be above 0 and at most 50 %; give one such as 5%",
+            Self::LooksOutOfOrder => {
+                "the looks must be ascending numbers of pieces, at least two at the first; planned count and limit are \
+                 the first and the last of them"
+            }
+            Self::LooksUndecided => {
+                "the looks' boundaries overlap, or the last look leaves something undecided: have `donelight plan \
+                 check` compute them"
+            }
+            Self::TooLong => {
+                "the plan is too long for a record: shorten its texts, or name fewer looks"
+            }
             Self::PlannedNotWhole => {
                 "the planned pieces are no whole number of subgroups: plan a multiple of their size"
             }
@@ -227,11 +261,18 @@ impl core::fmt::Display for Fault {
                  together, and the interval would cover less than it promises; choose overall, pooled or ranges here \
                  and let `donelight assess` take total sigma of the readings"
             }
+            Self::EarlyNeedsOverall => {
+                "a claim is decided early by the overall sigma only, for which the looks' boundaries are computed: choose \
+                 that, or plan a precision instead of the claim"
+            }
         })
     }
 }
 
 impl core::error::Error for Fault {}
+
+/// The longest plan in bytes: beside it a record holds its own framing (5 bytes), the event's kind, a number and a time.
+const PLAN_MAX: usize = RECORD_MAX - 5 - 1 - 5 - 10;
 
 /// At most so many faults can a draft have at once.
 const FAULTS_MAX: usize = 24;
@@ -262,6 +303,8 @@ impl Draft {
         check(!matches!(self.gauge.data_bits, 7 | 8), Fault::DataBits);
         check(!matches!(self.gauge.stop_bits, 1 | 2), Fault::StopBits);
         check(matches!(self.same_in_a_row, 1 | 2), Fault::SameInARow);
+        let length = postcard::experimental::serialized_size(self);
+        check(length.is_ok_and(|length| length > PLAN_MAX), Fault::TooLong);
         faults
     }
 
@@ -297,19 +340,38 @@ impl Draft {
     }
 
     fn check_rule(&self, check: &mut impl FnMut(bool, Fault)) {
-        let rule = self.rule;
-        check(rule.planned.get() < 2, Fault::PlannedTooFew);
-        check(rule.planned > rule.limit, Fault::PlannedAboveLimit);
-        check(!self.sigma.ends_at(rule.planned), Fault::PlannedNotWhole);
-        check(!self.sigma.ends_at(rule.limit), Fault::LimitNotWhole);
-        check(matches!(self.sigma, Sigma::Total(_)), Fault::SigmaTotal);
-        match rule.precision {
+        let rule = &self.rule;
+        match &rule.goal {
+            Goal::Precision(precision) => {
+                check(rule.planned.get() < 2, Fault::PlannedTooFew);
+                check(rule.planned > rule.limit, Fault::PlannedAboveLimit);
+                check(!self.sigma.ends_at(rule.planned), Fault::PlannedNotWhole);
+                check(!self.sigma.ends_at(rule.limit), Fault::LimitNotWhole);
+                check(matches!(self.sigma, Sigma::Total(_)), Fault::SigmaTotal);
+                self.check_precision(*precision, check);
+            }
+            Goal::Decision(early) => {
+                let error = early.check().err();
+                let (first, last) = (early.looks.first(), early.looks.last());
+                let ends = first.map(|look| look.n) == Some(rule.planned)
+                    && last.map(|look| look.n) == Some(rule.limit);
+                check(error == Some(EarlyError::Question), Fault::EarlyQuestion);
+                check(error == Some(EarlyError::Alpha), Fault::EarlyAlpha);
+                check(error == Some(EarlyError::Order) || !ends, Fault::LooksOutOfOrder);
+                check(error == Some(EarlyError::Boundaries), Fault::LooksUndecided);
+                check(self.sigma != Sigma::Overall, Fault::EarlyNeedsOverall);
+            }
+        }
+    }
+
+    fn check_precision(&self, precision: Precision, check: &mut impl FnMut(bool, Fault)) {
+        match precision {
             Precision::Absolute(_) => check(true, Fault::PrecisionAbsolute),
             Precision::Relative(goal) => {
                 check(goal.0 == 0, Fault::PrecisionZero);
                 // The half-width is above z/√(2ν) whatever the estimate (Bissell 1990, the location term left out).
                 let z = Quantile::new(self.confidence, self.kind).z();
-                let nu = self.sigma.degrees_of_freedom(rule.limit).map_or(0.0, DegreesOfFreedom::get);
+                let nu = self.sigma.degrees_of_freedom(self.rule.limit).map_or(0.0, DegreesOfFreedom::get);
                 let goal = goal.to_f64();
                 check(goal > 0.0 && 2.0 * nu * goal * goal < z * z, Fault::PrecisionBeyondLimit);
             }

@@ -14,7 +14,7 @@ use crate::{
     quantity::Count,
     record::{Event, Seq},
     sigma::Tally,
-    stopping::Standing,
+    stopping::{Standing, early::Decision},
 };
 
 /// Why a study waits for the operator to look.
@@ -135,8 +135,23 @@ impl Study {
         interval::with_quantile(&self.sample()?, self.plan.index, self.plan.quantile()).ok()
     }
 
+    /// What is decided about the plan's claim; `None` if it claims nothing, or nothing is decided yet.
+    #[must_use]
+    pub fn decision(&self) -> Option<Decision> {
+        let early = self.plan.rule.early().filter(|_| self.standing == Standing::Settled)?;
+        early.decide(self.moments().n(), self.estimate()?.estimate)
+    }
+
+    /// Whether a look decides and only the operator's look at what holds the study is wanted: what is measured
+    /// meanwhile is surplus, or the look would be missed.
+    fn decided_though_held(&self) -> bool {
+        self.held.is_some()
+            && self.plan.rule.early().is_some()
+            && self.plan.judge(self.moments().n(), || self.estimate()) != Standing::Gathering
+    }
+
     fn reading(&mut self, seq: Seq, counts: Counts) {
-        let surplus = self.standing != Standing::Gathering;
+        let surplus = self.standing != Standing::Gathering || self.decided_though_held();
         let same = self.latest.is_some_and(|latest| latest.counts == counts);
         self.latest = Some(Latest { seq, counts, surplus });
         if surplus {

@@ -12,6 +12,7 @@ use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::Kind;
 use donelight_core::quantity::{Confidence, Millionths, Precision};
 use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
+use donelight_core::stopping::early::Spending;
 
 pub use value::{NormalProcess, Summary};
 
@@ -75,7 +76,12 @@ Examples:
     #[command(after_help = "\
 Examples:
   donelight size power --index cpk --claim 1.5 --against 1.3
-  donelight size power --index cpk --claim 1.33 --against 1.67 --alpha 10% --power 90%")]
+  donelight size power --index cpk --claim 1.33 --against 1.67 --alpha 10% --power 90%
+  donelight size power --index cpk --claim 1.5 --against 1.3 --early
+
+With --early the claim is looked at after several numbers of pieces, and the study stops as soon as one of these looks
+decides; both promises hold for the whole. Cpk is sized for two limits and the worst place between them; for a
+specification with one limit, take cpl or cpu. donelight plan new --early writes a plan that does this.")]
     Power(SizePower),
 }
 
@@ -145,20 +151,34 @@ pub struct SizePower {
     /// Which sigma
     #[command(flatten)]
     pub sigma: SigmaChoice,
+    /// Decide early, at looks that are named beforehand; sigma is the overall one
+    #[arg(long, conflicts_with_all = ["sigma", "subgroups"])]
+    pub early: bool,
+    /// How the looks are laid out
+    #[command(flatten)]
+    pub layout: Layout,
+}
+
+/// How the looks of an early decision are laid out.
+#[derive(Clone, Copy, Debug, Args)]
+pub struct Layout {
+    /// With --early: so many equally spaced looks, 2 to 12
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u8).range(2..=12), default_value_t = 8, requires = "early")]
+    pub looks: u8,
+    /// With --early: how the risks are spent; pocock stops earlier on average, obrien-fleming has an earlier last look
+    #[arg(long, value_parser = value::spending(), ignore_case = true, default_value = "pocock", requires = "early")]
+    pub spending: Spending,
 }
 
 /// `donelight plan …`
 #[derive(Debug, Subcommand)]
 pub enum Plan {
     /// Write a complete, valid, commented plan to start from
-    #[command(after_help = "Example:\n  donelight plan new plan.toml")]
-    New {
-        /// The file to write
-        file: PathBuf,
-        /// Replace the file if there is one
-        #[arg(long)]
-        force: bool,
-    },
+    #[command(after_help = "\
+Examples:
+  donelight plan new plan.toml
+  donelight plan new plan.toml --early --claim 1.5 --against 1.3")]
+    New(NewPlan),
     /// Say all that is wrong with a plan, or what it asks for and what it gives, by simulation
     #[command(after_help = "\
 Examples:
@@ -174,6 +194,34 @@ Examples:
         #[arg(long, value_name = "N", default_value_t = 1)]
         seed: u64,
     },
+}
+
+/// `donelight plan new …`
+#[derive(Debug, Args)]
+pub struct NewPlan {
+    /// The file to write
+    pub file: PathBuf,
+    /// Replace the file if there is one
+    #[arg(long)]
+    pub force: bool,
+    /// A plan that decides a claim about Cpk early, between two limits
+    #[arg(long, requires_all = ["claim", "against"])]
+    pub early: bool,
+    /// With --early: the index claimed, rejected with a risk of alpha although it is true
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value, requires = "early")]
+    pub claim: Option<Millionths>,
+    /// With --early: the other index, noticed with the wanted power
+    #[arg(long, value_name = "INDEX", value_parser = value::index_value, requires = "early")]
+    pub against: Option<Millionths>,
+    /// With --early: the risk of rejecting a true claim
+    #[arg(long, value_name = "LEVEL", value_parser = value::alpha, default_value = "5%", requires = "early")]
+    pub alpha: Millionths,
+    /// With --early: the chance of noticing the other index
+    #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%", requires = "early")]
+    pub power: Confidence,
+    /// How the looks are laid out
+    #[command(flatten)]
+    pub layout: Layout,
 }
 
 /// Which station.

@@ -5,6 +5,7 @@ use donelight_core::capability::Index;
 use donelight_core::interval::Kind;
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::sigma::Sigma;
+use donelight_core::stopping::early::Spending;
 
 use crate::level;
 
@@ -46,25 +47,15 @@ pub(super) fn confidence(text: &str) -> Result<Confidence, String> {
 }
 
 pub(super) fn alpha(text: &str) -> Result<Millionths, String> {
-    let level = level::read(text).map_err(|error| error.to_string())?;
-    match level.millionths {
-        1..=500_000 => Ok(Millionths(level.millionths)),
-        _ => Err("not above 0% and up to 50%; write for example 5% or 0.05".to_owned()),
-    }
+    level::alpha(text)
 }
 
 pub(super) fn index_value(text: &str) -> Result<Millionths, String> {
-    let level = level::read(text).map_err(|error| match error {
-        level::LevelError::NotANumber => "not a positive number such as 1.33".to_owned(),
-        other => other.to_string(),
-    })?;
-    match level {
-        level::Level { percent: true, .. } => {
-            Err("an index has no percent sign; write for example 1.33".to_owned())
-        }
-        level::Level { millionths: 10_000..=100_000_000, .. } => Ok(Millionths(level.millionths)),
-        _ => Err("not between 0.01 and 100".to_owned()),
-    }
+    level::index_value(text)
+}
+
+pub(super) fn spending() -> impl TypedValueParser<Value = Spending> {
+    PossibleValuesParser::new(["pocock", "obrien-fleming"]).try_map(|name| name.parse::<Spending>())
 }
 
 pub(super) fn precision(text: &str) -> Result<Precision, String> {

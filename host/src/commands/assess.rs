@@ -193,9 +193,9 @@ pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report
     if study.question.sigma != Sigma::Overall {
         lines.push(format!("  sigma {}{unit}  ({})", number(analysis.sigma), resting(study, analysis)));
     }
+    let none = words::no_interval(study);
     for row in &analysis.rows {
-        let interval =
-            row.interval.map_or_else(|| "no interval method yet".to_owned(), |i| words::interval_text(&i));
+        let interval = row.interval.map_or_else(|| none.to_owned(), |i| words::interval_text(&i));
         lines.push(format!("  {:<4}  {:.4}  {interval}", row.index, row.estimate));
     }
     lines.push(String::new());

@@ -2,11 +2,14 @@
 
 use std::path::Path;
 
+use donelight_core::capability::Index;
 use donelight_core::plan;
+use donelight_core::quantity::Millionths;
 use indicatif::{ProgressBar, ProgressStyle};
 use serde_json::json;
 
-use crate::cli::Plan;
+use crate::cli::{NewPlan, Plan};
+use crate::design::{self, Limits, Question};
 use crate::files;
 use crate::output::{Answer, Console, Failure};
 use crate::plan_file::{self, describe};
@@ -18,23 +21,38 @@ use crate::simulation::{self, Extent, Outcome, Process, ProcessError, words};
 /// The file exists already or cannot be written; the plan cannot be read or is invalid.
 pub(super) fn run(plan: &Plan, console: &Console) -> Result<Answer, Failure> {
     match plan {
-        Plan::New { file, force } => new(file, *force),
+        Plan::New(options) => new(options),
         Plan::Check { file, studies, seed } => check(file, *studies, *seed, console),
     }
 }
 
-fn new(file: &Path, force: bool) -> Result<Answer, Failure> {
-    let content = plan_file::EXAMPLE.as_bytes();
-    if force {
-        files::write(file, content)?
+fn new(options: &NewPlan) -> Result<Answer, Failure> {
+    let NewPlan { file, force, .. } = options;
+    let content = match (options.early, options.claim, options.against) {
+        (true, Some(claim), Some(against)) => deciding_early(options, claim, against)?,
+        _ => plan_file::EXAMPLE.to_owned(),
+    };
+    if *force {
+        files::write(file, content.as_bytes())?
     } else {
-        files::write_new(file, content)?
+        files::write_new(file, content.as_bytes())?
     }
     let name = file.display();
     Ok(Answer::done(
         format!("{name} is written. Edit it, then: donelight plan check {name}"),
         json!({ "file": file.to_string_lossy() }),
     ))
+}
+
+/// The example with another rule to stop by.
+fn deciding_early(options: &NewPlan, claim: Millionths, against: Millionths) -> Result<String, Failure> {
+    let &NewPlan { alpha, power, layout, .. } = options;
+    let spending = layout.spending;
+    // The example has two limits and asks for Cpk.
+    let question =
+        Question { index: Index::Cpk, limits: Limits::Two, claim, against, alpha, power, spending };
+    let design = design::smallest(&question, layout.looks.into())?;
+    Ok(plan_file::early::example(&design.early))
 }
 
 fn check(file: &Path, studies: Option<u32>, seed: u64, console: &Console) -> Result<Answer, Failure> {

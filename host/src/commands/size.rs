@@ -10,8 +10,10 @@ use donelight_core::sizing::{Design, SizingError};
 use serde_json::{Value, json};
 
 use crate::cli::{Size, SizePower, SizePrecision};
+use crate::design::{self, DesignError, Limits, Question};
 use crate::level;
 use crate::output::{Answer, Exit, Explain, Failure};
+use crate::plan_file::early as early_words;
 use crate::report::{number, words};
 
 impl Explain for SizingError {
@@ -62,6 +64,7 @@ impl Explain for SigmaError {
 pub(super) fn run(size: &Size) -> Result<Answer, Failure> {
     match size {
         Size::Precision(options) => by_precision(options),
+        Size::Power(options) if options.early => early(options),
         Size::Power(options) => by_power(options),
     }
 }
@@ -152,7 +155,7 @@ fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
 }
 
 fn by_power(options: &SizePower) -> Result<Answer, Failure> {
-    let &SizePower { index, claim, against, alpha, power, ref sigma } = options;
+    let &SizePower { index, claim, against, alpha, power, ref sigma, .. } = options;
     let sigma = sigma.choose(None)?;
     let size = power::smallest_by(&design(index, sigma)?, claim.to_f64(), against.to_f64(), alpha, power)?;
     let PowerSize { n, achieved, achieved_before, critical } = size;
@@ -194,6 +197,58 @@ fn by_power(options: &SizePower) -> Result<Answer, Failure> {
             n,
         ),
     ))
+}
+
+impl Explain for DesignError {
+    fn kind(&self) -> &'static str {
+        match self {
+            Self::Index(_) => "no-early-decision",
+            Self::TooMany => "size-above-limit",
+            Self::FixedIsSmall { .. } => "size-too-small-for-looks",
+            Self::Inexact => "not-exact-enough",
+            _ => "size-options",
+        }
+    }
+
+    fn help(&self) -> String {
+        String::new()
+    }
+
+    fn exit(&self) -> Exit {
+        match self {
+            Self::Index(_) | Self::TooMany | Self::FixedIsSmall { .. } | Self::Inexact => Exit::Refused,
+            _ => Exit::WrongUse,
+        }
+    }
+}
+
+fn early(options: &SizePower) -> Result<Answer, Failure> {
+    let &SizePower { index, claim, against, alpha, power, layout, .. } = options;
+    let question =
+        Question { index, limits: Limits::Two, claim, against, alpha, power, spending: layout.spending };
+    let design = design::smallest(&question, layout.looks.into())?;
+    let early = &design.early;
+    let most = early.looks.last().map_or(0, |last| last.n.get());
+    let sized = power::smallest(index, claim.to_f64(), against.to_f64(), alpha, power).ok();
+    let usual = sized.map(|size| {
+        format!("(`size power` without --early says {}, by a normal approximation.)\n", size.n.get())
+    });
+    let text = format!(
+        "Measure at most {}; stop at the first look that decides.\n\n{}.\n\n{}\n{}{}\n{}",
+        pieces(most),
+        early_words::question(index, early),
+        early_words::table(index, early),
+        early_words::effects(&design),
+        usual.unwrap_or_default(),
+        early_words::MEANING,
+    );
+    let mut json = early_words::design_json(&design);
+    if let Some(object) = json.as_object_mut() {
+        object.insert("n".to_owned(), json!(most));
+        object.insert("index".to_owned(), json!(index.name().to_lowercase()));
+        object.insert("method".to_owned(), json!("exact"));
+    }
+    Ok(Answer::done(text, json))
 }
 
 fn pieces(n: u32) -> String {

@@ -105,10 +105,11 @@ fn load(file: &Path, replace: bool, port: Option<&str>) -> Result<Answer, Failur
     let began = met.session.load(&plan, replace).map_err(|error| on(&met.port, error))?;
     let station = met.hello.station;
     let text = format!(
-        "Station {station} on {} now measures {:?}: {} pieces, at most {}.\nIts clock is set to {time}. The study's \
+        "Station {station} on {} now measures {:?}: {}{} pieces, at most {}.\nIts clock is set to {time}. The study's \
          number is {station}:{began}.\n\nMeasure until the done light is on, then: donelight station pull",
         met.port,
         plan.name.as_str(),
+        if plan.rule.early().is_some() { "a first look after " } else { "" },
         plan.rule.planned.get(),
         plan.rule.limit.get(),
     );

@@ -6,15 +6,17 @@ use donelight_core::plan::{Parity, Plan};
 use donelight_core::quantity::Precision;
 use donelight_core::sigma::SubgroupSize;
 use donelight_core::sizing::{Design, precision};
+use donelight_core::stopping::Goal;
 use serde_json::{Value, json};
 
+use super::early;
 use crate::level;
 use crate::report::words;
 
 /// The plan, line by line: name and value.
 #[must_use]
 pub fn facts(plan: &Plan) -> Vec<(String, String)> {
-    let rule = plan.rule;
+    let rule = &plan.rule;
     let gauge = plan.gauge;
     let mut facts = vec![("Study".to_owned(), plan.name.to_string())];
     let mut add = |name: &str, value: String| facts.push((name.to_owned(), value));
@@ -29,8 +31,17 @@ pub fn facts(plan: &Plan) -> Vec<(String, String)> {
     add("Resolution", with_unit(plan, plan.resolution.to_string()));
     add("Question", format!("{} with its {}", plan.index, words::interval_name(plan.confidence, plan.kind)));
     add("Sigma", words::sigma_name(plan.sigma));
-    add("Planned pieces", format!("{}, and never more than {}", rule.planned.get(), rule.limit.get()));
-    add("Wanted precision", wanted(plan));
+    match &rule.goal {
+        Goal::Precision(precision) => {
+            let planned = format!("{}, and never more than {}", rule.planned.get(), rule.limit.get());
+            add("Planned pieces", planned);
+            add("Wanted precision", wanted(plan, *precision));
+        }
+        Goal::Decision(early) => {
+            add("Claim", early::question(plan.index, early));
+            add("Looks", early::looks(early));
+        }
+    }
     let parity = match gauge.parity {
         Parity::None => "no parity",
         Parity::Even => "even parity",
@@ -64,12 +75,12 @@ fn specification(plan: &Plan) -> String {
     with_unit(plan, format!("{limits}{target}"))
 }
 
-fn wanted(plan: &Plan) -> String {
+fn wanted(plan: &Plan, precision: Precision) -> String {
     let reach = match plan.kind {
         Kind::TwoSided => "the interval reaches",
         Kind::Lower | Kind::Upper => "the bound lies",
     };
-    match plan.rule.precision {
+    match precision {
         Precision::Relative(goal) => {
             format!("{reach} no further than {} from the estimate", level::percent(goal.0))
         }
@@ -82,7 +93,7 @@ fn wanted(plan: &Plan) -> String {
 /// The pieces that the plan's precision takes if the index comes out at so much; `None` beyond the core's bound.
 fn needed(plan: &Plan, at: f64) -> Option<u32> {
     let design = Design::by_bissell(plan.index).and_then(|design| design.with_sigma(plan.sigma)).ok()?;
-    precision::smallest_by(&design, at, plan.rule.precision, plan.confidence, plan.kind)
+    precision::smallest_by(&design, at, plan.rule.precision()?, plan.confidence, plan.kind)
         .ok()
         .map(|size| size.n.get())
 }
@@ -102,6 +113,10 @@ pub fn summary(plan: &Plan) -> String {
     for (name, value) in facts(plan) {
         text.push_str(&format!("  {name:<16}  {value}\n"));
     }
+    if let Some(early) = plan.rule.early() {
+        text.push_str(&format!("\n{}", early::summary(plan, early)));
+        return text.trim_end().to_owned();
+    }
     text.push_str(&format!("\nPieces that this precision takes, if {} comes out at\n", plan.index));
     for at in ASSUMED {
         let n = needed(plan, at).map_or_else(|| "over a million".to_owned(), |n| n.to_string());
@@ -118,7 +133,7 @@ pub fn summary(plan: &Plan) -> String {
 
 /// What the writer of the plan should know.
 fn remarks(plan: &Plan) -> Vec<String> {
-    let rule = plan.rule;
+    let rule = &plan.rule;
     let mut remarks = Vec::new();
     if let Some(likely) = needed(plan, 1.33) {
         if rule.limit.get() < likely {
@@ -153,9 +168,10 @@ fn remarks(plan: &Plan) -> Vec<String> {
 pub fn json(plan: &Plan) -> Value {
     let number = |value: Option<Decimal>| value.map(|value| value.to_string());
     let assumed: Vec<Value> = ASSUMED.iter().map(|&at| json!({ "at": at, "n": needed(plan, at) })).collect();
-    let (relative, absolute) = match plan.rule.precision {
-        Precision::Relative(goal) => (Some(goal.to_f64()), None),
-        Precision::Absolute(goal) => (None, Some(goal.to_f64())),
+    let (relative, absolute) = match plan.rule.precision() {
+        Some(Precision::Relative(goal)) => (Some(goal.to_f64()), None),
+        Some(Precision::Absolute(goal)) => (None, Some(goal.to_f64())),
+        None => (None, None),
     };
     json!({
         "name": plan.name.as_str(),
@@ -175,6 +191,7 @@ pub fn json(plan: &Plan) -> Value {
         "planned": plan.rule.planned.get(),
         "precision": { "relative": relative, "absolute": absolute },
         "limit": plan.rule.limit.get(),
+        "early": plan.rule.early().map(|early| early::json(plan, early)),
         "baud": plan.gauge.baud,
         "data_bits": plan.gauge.data_bits,
         "parity": match plan.gauge.parity {

@@ -7,14 +7,15 @@ use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::Kind;
 use donelight_core::plan::{Draft, Fault as DraftFault, Field, LineSettings, Parity, Plan};
-use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
+use donelight_core::quantity::{Confidence, Count};
 use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
-use donelight_core::stopping::StoppingRule;
 use donelight_core::text::Text;
 use toml::de::DeTable;
 
 use super::Fault;
+use super::stop::{self, Subject};
 use super::table::{Faults, Table, Taken};
+use crate::design::Limits;
 use crate::level;
 
 /// All faults at once, or the plan.
@@ -40,12 +41,12 @@ pub(super) fn read(text: &str) -> Result<Plan, Vec<Fault>> {
         .map_err(|fault| vec![Fault { line: 1, key: String::new(), message: fault.to_string() }])
 }
 
-struct Reader<'r, 'f> {
-    faults: &'r mut Faults<'f>,
+pub(super) struct Reader<'r, 'f> {
+    pub(super) faults: &'r mut Faults<'f>,
     /// Where each key stands, or where its table does.
-    places: BTreeMap<String, usize>,
+    pub(super) places: BTreeMap<String, usize>,
     /// Keys whose value could not be read; what the core says of them would be about our stand-in.
-    unread: Vec<String>,
+    pub(super) unread: Vec<String>,
 }
 
 impl Reader<'_, '_> {
@@ -67,7 +68,11 @@ impl Reader<'_, '_> {
         let sigma_word = self.optional(&mut capability, "sigma", sigma_word);
         capability.finish(self.faults);
         let sigma = self.sigma(&mut root, sigma_word);
-        let rule = self.rule(&mut root);
+        let subject = index.map(|index| {
+            let limits = if lower.is_some() && upper.is_some() { Limits::Two } else { Limits::One };
+            Subject { index, limits }
+        });
+        let rule = stop::rule(self, &mut root, subject);
         let gauge = self.gauge(&mut root);
         let mut watch = root.table("watch", false, self.faults);
         let same_in_a_row = self.optional(&mut watch, "same_in_a_row", whole::<u8>);
@@ -89,19 +94,6 @@ impl Reader<'_, '_> {
             gauge,
             same_in_a_row: same_in_a_row.unwrap_or(0),
             sigma,
-        }
-    }
-
-    fn rule(&mut self, root: &mut Table<'_>) -> StoppingRule {
-        let mut stop = root.table("stop", true, self.faults);
-        let planned = self.needed(&mut stop, "planned", "212", count);
-        let precision = self.needed(&mut stop, "precision", "\"10%\"", precision);
-        let limit = self.needed(&mut stop, "limit", "240", count);
-        stop.finish(self.faults);
-        StoppingRule {
-            planned: planned.unwrap_or(Count::MAX),
-            precision: precision.unwrap_or(Precision::Relative(Millionths(1_000_000))),
-            limit: limit.unwrap_or(Count::MAX),
         }
     }
 
@@ -154,7 +146,7 @@ impl Reader<'_, '_> {
         .unwrap_or_default()
     }
 
-    fn needed<T>(
+    pub(super) fn needed<T>(
         &mut self,
         table: &mut Table<'_>,
         key: &'static str,
@@ -170,7 +162,7 @@ impl Reader<'_, '_> {
         found
     }
 
-    fn optional<T>(
+    pub(super) fn optional<T>(
         &mut self,
         table: &mut Table<'_>,
         key: &'static str,
@@ -238,6 +230,9 @@ const fn key(field: Field) -> &'static str {
         Field::StopBits => "gauge.stop_bits",
         Field::SameInARow => "watch.same_in_a_row",
         Field::Sigma => SIGMA,
+        Field::Claim => "stop.early.claim",
+        Field::Alpha => "stop.early.alpha",
+        Field::Looks => "stop.early.looks",
     }
 }
 
@@ -275,7 +270,7 @@ where
     text.parse().map_err(|error: T::Err| error.to_string())
 }
 
-fn word<T>(taken: &Taken) -> Result<T, String>
+pub(super) fn word<T>(taken: &Taken) -> Result<T, String>
 where
     T: FromStr,
     T::Err: std::fmt::Display,
@@ -298,20 +293,13 @@ fn whole<T: FromStr>(taken: &Taken) -> Result<T, String> {
         .map_err(|_| "not a whole number in range; write it in plain digits".to_owned())
 }
 
-fn count(taken: &Taken) -> Result<Count, String> {
+pub(super) fn count(taken: &Taken) -> Result<Count, String> {
     Count::new(whole(taken)?).ok_or_else(|| format!("at most {} pieces", Count::MAX.get()))
 }
 
-fn confidence(taken: &Taken) -> Result<Confidence, String> {
+pub(super) fn confidence(taken: &Taken) -> Result<Confidence, String> {
     let level = level::read(&taken.text).map_err(|error| error.to_string())?;
     Confidence::from_millionths(level.millionths).ok_or_else(|| "not between 50% and 99.9999%".to_owned())
-}
-
-fn precision(taken: &Taken) -> Result<Precision, String> {
-    let level =
-        level::read(&taken.text).map_err(|_| "not a percentage; write for example \"10%\"".to_owned())?;
-    let goal = Millionths(level.millionths);
-    Ok(if level.percent { Precision::Relative(goal) } else { Precision::Absolute(goal) })
 }
 
 fn parity(taken: &Taken) -> Result<Parity, String> {

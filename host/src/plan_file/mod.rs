@@ -1,8 +1,10 @@
 //! Plans as TOML files: read with every fault named at once and its line, and an example to start from.
 
 pub mod describe;
+pub mod early;
 mod fields;
 mod nearest;
+mod stop;
 mod table;
 
 use std::fmt;

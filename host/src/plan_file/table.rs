@@ -76,7 +76,7 @@ impl<'t> Table<'t> {
     /// Takes a table in this one. If a needed one is missing, that is one fault and not one for each of its keys.
     pub(super) fn table(&mut self, name: &'static str, needed: bool, faults: &mut Faults<'_>) -> Self {
         self.known.push(name);
-        let prefix = format!("{name}.");
+        let prefix = format!("{}{name}.", self.prefix);
         match self.entries.remove(name) {
             Some((at, value)) => match value.get_ref() {
                 DeValue::Table(table) => Self::new(prefix, at, table),
@@ -130,11 +130,44 @@ impl<'t> Table<'t> {
         }
     }
 
+    /// Takes a list of texts or numbers; `None` if it is not there or holds something else, which is then a fault.
+    pub(super) fn list(&mut self, key: &'static str, faults: &mut Faults<'_>) -> Option<(usize, Vec<Taken>)> {
+        self.known.push(key);
+        let (_, value) = self.entries.remove(key)?;
+        let start = value.span().start;
+        let DeValue::Array(items) = value.get_ref() else {
+            let example = format!("a list belongs here: write for example {key} = [50, 100, 150]");
+            faults.add(start, &self.path(key), example);
+            return None;
+        };
+        let mut taken = Vec::new();
+        for item in items.iter() {
+            let at = item.span();
+            match item.get_ref() {
+                DeValue::Integer(_) => {
+                    let text = faults.text.get(at.clone()).unwrap_or_default().to_owned();
+                    taken.push(Taken { text, bare: true, at });
+                }
+                other => {
+                    let message = format!("a whole number belongs here, not a {}", other.type_str());
+                    faults.add(at.start, &self.path(key), message);
+                    return None;
+                }
+            }
+        }
+        Some((start, taken))
+    }
+
     /// Names a key that must be there and is not.
     pub(super) fn needs(&self, key: &str, example: &str, faults: &mut Faults<'_>) {
         if !self.missing {
             faults.add(self.start, &self.path(key), format!("missing; write for example {key} = {example}"));
         }
+    }
+
+    /// Leaves a key out of what is named as known here.
+    pub(super) fn forget(&mut self, key: &str) {
+        self.known.retain(|known| *known != key);
     }
 
     /// Names whatever was not taken.

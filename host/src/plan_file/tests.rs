@@ -201,3 +201,98 @@ fn sigma_within_subgroups_is_planned_by_its_word_and_their_size() {
     one("sigma = \"moving-ranges\"\n", "[subgroups]\nsize = 5", "subgroups.size", "leave their size out");
     one("sigma = \"ranges\"\n", "[subgroups]\nsize = 5\nshape = 3", "subgroups.shape", "unknown key");
 }
+
+/// The example with a claim in place of its precision; few looks, so that the test is quick.
+fn early_text() -> String {
+    let (before, rest) = EXAMPLE.split_once("[stop]\n").unwrap();
+    let after = &rest[rest.find("[gauge]").unwrap()..];
+    format!("{before}[stop.early]\nclaim = 1.5\nagainst = 1.3\nlooks = [150, 290, 430]\n{after}")
+}
+
+#[track_caller]
+fn early_fault(from: &str, to: &str, key: &str, words: &str) {
+    let text = early_text();
+    assert_eq!(text.matches(from).count(), 1, "{from}");
+    let faults = from_text(&text.replace(from, to)).unwrap_err();
+    assert_eq!(faults.len(), 1, "{faults:?}");
+    assert_eq!(faults[0].key, key, "{faults:?}");
+    assert!(faults[0].message.contains(words), "{faults:?}");
+}
+
+#[test]
+fn a_claim_is_decided_early_at_the_looks_that_the_file_names() {
+    let text = early_text();
+    let plan = from_text(&text).unwrap();
+    let early = plan.rule.early().unwrap();
+    assert_eq!(early.looks.iter().map(|look| look.n.get()).collect::<Vec<_>>(), [150, 290, 430]);
+    assert_eq!((plan.rule.planned.get(), plan.rule.limit.get()), (150, 430));
+    assert_eq!((early.alpha.0, early.power.millionths()), (50_000, 950_000));
+    let words = describe::summary(&plan);
+    for needle in
+        ["Cpk is 1.5: rejected although true", "after 150, 290, 430 pieces", "kept if it is", "not proven"]
+    {
+        assert!(words.contains(needle), "{needle} is not in {words}");
+    }
+    assert!(!words.contains("not the ones that this command computes"), "{words}");
+    let json = describe::json(&plan);
+    assert_eq!(json["early"]["looks"][2]["keep"], json["early"]["looks"][2]["reject"]);
+    assert!(json["early"]["true_alpha"].as_f64().unwrap() <= 0.05);
+    // The same file, the same boundaries.
+    assert_eq!(from_text(&text).unwrap(), plan);
+}
+
+#[test]
+fn what_is_wrong_with_a_claim_or_its_looks_is_named() {
+    early_fault("claim = 1.5", "claim = 1.3", "stop.early.claim", "set them apart");
+    early_fault("claim = 1.5", "claim = \"95%\"", "stop.early.claim", "no percent sign");
+    early_fault("claim = 1.5\n", "", "stop.early.claim", "missing; write for example claim = 1.5");
+    early_fault("claim = 1.5", "claim = 1.5\nalpha = \"60%\"", "stop.early.alpha", "up to 50%");
+    early_fault("claim = 1.5", "claim = 1.5\nspending = \"evenly\"", "stop.early.spending", "pocock");
+    early_fault("claim = 1.5", "claim = 1.5\ncolour = 3", "stop.early.colour", "unknown key");
+    early_fault("looks = [150, 290, 430]\n", "", "stop.early.looks", "size power --early");
+    early_fault("[150, 290, 430]", "150", "stop.early.looks", "a list belongs here");
+    early_fault("[150, 290, 430]", "[150, \"x\"]", "stop.early.looks", "whole number");
+    early_fault("[150, 290, 430]", "[150, -3]", "stop.early.looks", "whole number");
+    early_fault("[150, 290, 430]", "[150, 140]", "stop.early.looks", "ascend");
+    early_fault("[150, 290, 430]", "[100, 200, 300]", "stop.early.looks", "put the last look later");
+    let faults = from_text(&early_text().replace("index = \"cpk\"", "index = \"cpm\"")).unwrap_err();
+    assert!(faults.iter().any(|fault| fault.message.contains("cannot be decided early")), "{faults:?}");
+    early_fault("[stop.early]", "[stop]\nrule = \"precision\"\n[stop.early]", "stop.rule", "write early");
+    early_fault("[stop.early]", "[stop]\nplanned = 212\n[stop.early]", "stop.planned", "unknown key");
+    let faults = from_text(&EXAMPLE.replace("planned = 212", "planned = 212\nrule = \"early\"")).unwrap_err();
+    assert!(faults.len() == 1 && faults[0].message.contains("[stop.early] is missing"), "{faults:?}");
+}
+
+/// The reason names the share of studies that would pass a process exactly at the requirement; the reference simulation
+/// has them.
+#[test]
+fn to_measure_until_the_lower_limit_passes_is_refused_with_the_reason() {
+    for asking in [
+        "rule = \"until-lower-limit-passes\"",
+        "rule = \"stop when capable\"",
+        "rule = \"lower limit\"",
+        "until = \"lower >= 1.33\"",
+        "require = 1.33",
+        "required = true",
+        "lower_limit = 1.33",
+    ] {
+        let text = EXAMPLE.replace("planned = 212", &format!("planned = 212\n{asking}"));
+        let faults = from_text(&text).unwrap_err();
+        let told: Vec<_> = faults.iter().filter(|fault| fault.message.contains("is no test")).collect();
+        assert_eq!(told.len(), 1, "{asking}: {faults:?}");
+        assert!(told[0].message.contains("22 % to 39 %"), "{faults:?}");
+        let (key, _) = asking.split_once(' ').unwrap();
+        assert_eq!(told[0].key, format!("stop.{key}"));
+    }
+    let faults = from_text(&EXAMPLE.replace("planned = 212", "planned = 212\nrule = \"hurry\"")).unwrap_err();
+    assert!(faults[0].message.contains("write precision or early"), "{faults:?}");
+    assert!(from_text(&EXAMPLE.replace("planned = 212", "planned = 212\nrule = \"precision\"")).is_ok());
+}
+
+#[test]
+fn the_written_example_of_an_early_decision_is_the_plan_that_it_was_written_for() {
+    let plan = from_text(&early_text()).unwrap();
+    let early_decision = plan.rule.early().unwrap();
+    let written = early::example(early_decision);
+    assert_eq!(from_text(&written).unwrap().rule, plan.rule, "{written}");
+}

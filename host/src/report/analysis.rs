@@ -5,9 +5,12 @@ use donelight_core::counts::{Counts, Decimal, Resolution};
 use donelight_core::interval::{self, Interval, IntervalError};
 use donelight_core::quantity::Count;
 use donelight_core::sigma::{Sigma, Tally};
+use donelight_core::stopping::early::EarlyDecision;
 
 use super::charts::narrowing::Step;
-use super::{Belonging, Data, Reading, Study};
+use super::{Belonging, Data, Question, Reading, Study};
+use crate::design::Limits;
+use crate::design::limits::{self, Ending};
 
 /// All numbers of a report.
 #[derive(Clone, Debug)]
@@ -142,6 +145,34 @@ fn rows(study: &Study, sample: &Result<Sample, SampleError>) -> Vec<Row> {
 
 fn row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> {
     let estimate = sample.estimate(index)?;
+    if let Some(early) = study.decided_early() {
+        let interval = if index == study.question.index {
+            after_early_decision(study, early, sample, estimate)
+        } else {
+            None
+        };
+        return Ok(Row { index, estimate, interval });
+    }
+    ordinary_row(study, sample, index)
+}
+
+/// The ordinary interval leans to the side on which the study stopped, so it is not given for any index then.
+fn after_early_decision(
+    study: &Study,
+    early: &EarlyDecision,
+    sample: &Sample,
+    estimate: f64,
+) -> Option<Interval> {
+    let Question { index, confidence, kind, .. } = study.question;
+    let specification = &study.specification;
+    let two = specification.lower().is_some() && specification.upper().is_some();
+    let limits = if two { Limits::Two } else { Limits::One };
+    limits::interval(early, index, limits, Ending { n: sample.n(), estimate }, confidence, kind)
+}
+
+/// As for a study whose size does not depend on its estimates.
+fn ordinary_row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> {
+    let estimate = sample.estimate(index)?;
     let interval = match interval::of(sample, index, study.question.confidence, study.question.kind) {
         Ok(found) => Some(found.interval),
         Err(IntervalError::NoMethodYet(_)) => None,
@@ -163,7 +194,8 @@ fn steps(study: &Study, resolution: Resolution, counted: &[Counts]) -> Vec<Step>
             continue;
         }
         let Ok(sample) = tally.sample(resolution, &study.specification) else { continue };
-        if let Ok(Row { estimate, interval: Some(interval), .. }) = row(study, &sample, study.question.index)
+        if let Ok(Row { estimate, interval: Some(interval), .. }) =
+            ordinary_row(study, &sample, study.question.index)
         {
             steps.push(Step {
                 n: tally.moments().n().get(),

@@ -65,7 +65,7 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
         "estimate": asked.map(|row| row.estimate),
         "low": interval.and_then(|interval| interval.low),
         "high": interval.and_then(|interval| interval.high),
-        "method": interval.map(|_| "bissell"),
+        "method": interval.map(|_| if study.decided_early().is_some() { "early-decision" } else { "bissell" }),
         "confidence": question.confidence.to_f64(),
         "kind": question.kind.name(),
         "required": question.required.map(Millionths::to_f64),

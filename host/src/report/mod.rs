@@ -17,6 +17,7 @@ use donelight_core::plan::Plan;
 use donelight_core::quantity::{Confidence, Count, Millionths};
 use donelight_core::sigma::Sigma;
 use donelight_core::stopping::Standing;
+use donelight_core::stopping::early::EarlyDecision;
 
 /// What is reported.
 #[derive(Clone, Debug)]
@@ -41,6 +42,15 @@ pub struct Study {
     pub origin: Vec<Fact>,
     /// Refused lines, gaps, holds: whatever did not go straight.
     pub incidents: Vec<Incident>,
+}
+
+impl Study {
+    /// The claim of a study that was decided early.
+    #[must_use]
+    pub fn decided_early(&self) -> Option<&EarlyDecision> {
+        let (plan, _) = self.planned.as_ref().filter(|(_, standing)| *standing == Standing::Settled)?;
+        plan.rule.early()
+    }
 }
 
 /// The index, its interval, and the value required of it.

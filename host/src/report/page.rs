@@ -92,7 +92,7 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                             @if kind != Kind::Upper { td class="number" { (end(row.interval.and_then(|i| i.low), number::lower_limit)) } }
                             @if kind != Kind::Lower { td class="number" { (end(row.interval.and_then(|i| i.high), number::upper_limit)) } }
                             td class="remark" {
-                                @if row.interval.is_none() { "No interval method yet." }
+                                @if row.interval.is_none() { (words::no_interval(study)) "." }
                                 @else if row.index == study.question.index { "The study's question." }
                             }
                         }
@@ -100,7 +100,9 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                 } }
                 p {
                     "Limits: " (words::interval_name(study.question.confidence, kind))
-                    ", sigma " (words::sigma_name(study.question.sigma)) ". " (words::coverage(kind))
+                    ", sigma " (words::sigma_name(study.question.sigma)) ". "
+                    @if study.decided_early().is_some() { (words::AFTER_EARLY_DECISION) }
+                    @else { (words::coverage(kind)) }
                     @if let Some(about) = words::about_sigma(study.question.sigma) { " " (about) }
                     " Each limit holds for its index alone."
                 }

@@ -264,3 +264,52 @@ fn the_csv_is_read_back_as_the_same_readings() {
     assert_eq!(text.matches(",voided,").count(), 2);
     assert_eq!(text.matches(",surplus,").count(), 2);
 }
+
+/// A study of 150 pieces whose claim was decided at its first look.
+fn decided(deviations: i64, claim: &str) -> Study {
+    let (before, rest) = plan_file::EXAMPLE.split_once("[stop]\n").unwrap();
+    let after = &rest[rest.find("[gauge]").unwrap()..];
+    let text = format!("{before}[stop.early]\n{claim}\nlooks = [150, 290, 430]\n{after}");
+    let plan = plan_file::from_text(&text).unwrap();
+    let mut study = study();
+    let Data::Readings { readings, .. } = &mut study.data else { panic!() };
+    *readings = (0..150)
+        .map(|i| Reading::counted(Counts::new(12_000 + deviations * deviation(i)).unwrap()))
+        .collect();
+    study.question.required = None;
+    study.planned = Some((plan, Standing::Settled));
+    study
+}
+
+#[test]
+fn an_early_decision_is_told_with_its_risk_and_with_limits_that_allow_for_the_looks() {
+    let study = decided(1, "claim = 1.5\nagainst = 1.3");
+    let (analysis, page) = page_of(&study);
+    let verdict = words::verdict(&study, &analysis);
+    assert_eq!(verdict.outcome, Outcome::Kept, "{verdict:?}");
+    assert!(verdict.headline.contains("is 1.5, against 1.3, is kept at look 1 of 3"), "{verdict:?}");
+    assert!(verdict.more[0].contains("Kept is not proven"), "{verdict:?}");
+    let row = analysis.asked.unwrap();
+    let (low, high) = (row.interval.unwrap().low.unwrap(), row.interval.unwrap().high.unwrap());
+    // At a first look the limits are those of a fixed size; the exact lower one lies above Bissell's.
+    let ordinary = {
+        let mut other = study.clone();
+        other.planned = None;
+        analysis::of(&other).asked.unwrap().interval.unwrap()
+    };
+    assert!((low - ordinary.low.unwrap()).abs() < 0.03 && (high - ordinary.high.unwrap()).abs() < 0.03);
+    assert!(low < row.estimate && row.estimate < high);
+    assert!(analysis.rows.iter().all(|row| row.interval.is_some() == (row.index == study.question.index)));
+    assert!(page.contains("allow for the looks") && page.contains("claim kept"));
+    assert_eq!(export::json(&study, &analysis)["method"], "early-decision");
+    let wide = decided(2, "claim = 1.5\nagainst = 1.3");
+    let verdict = words::verdict(&wide, &analysis::of(&wide));
+    assert_eq!(verdict.outcome, Outcome::Rejected, "{verdict:?}");
+    assert!(verdict.more[0].contains("risk of at most 5 %"), "{verdict:?}");
+    // What is required on the command line is answered first, by the same limits.
+    let mut required = study;
+    required.question.required = Some(Millionths(1_000_000));
+    let verdict = words::verdict(&required, &analysis::of(&required));
+    assert_eq!(verdict.outcome, Outcome::Shown, "{verdict:?}");
+    assert!(verdict.more[0].contains("is kept"), "{verdict:?}");
+}

@@ -4,9 +4,10 @@ use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
 use donelight_core::interval::{Interval, Kind};
 use donelight_core::plan::Plan;
-use donelight_core::quantity::Confidence;
+use donelight_core::quantity::{Confidence, Count};
 use donelight_core::sigma::Sigma;
 use donelight_core::stopping::Standing;
+use donelight_core::stopping::early::{Decision, EarlyDecision};
 
 use super::analysis::{Analysis, Row};
 use super::{Data, Question, Study, Weight, number};
@@ -23,6 +24,10 @@ pub enum Outcome {
     Shown,
     /// It does not.
     NotShown,
+    /// The study's claim was kept at one of its looks.
+    Kept,
+    /// The study's claim was rejected at one of its looks.
+    Rejected,
     /// Nothing was required: an estimate only.
     Estimate,
     /// The plan asks for more readings: whatever the interval is now, it settles nothing.
@@ -38,6 +43,8 @@ impl Outcome {
         match self {
             Self::Shown => "shown",
             Self::NotShown => "not shown",
+            Self::Kept => "claim kept",
+            Self::Rejected => "claim rejected",
             Self::Estimate => "estimate",
             Self::Unfinished => "not finished",
             Self::None => "no estimate",
@@ -71,7 +78,22 @@ pub fn verdict(study: &Study, analysis: &Analysis) -> Verdict {
         }
         Ok(row) => claim(&study.question, row),
     };
+    let decided = analysis.asked.ok().and_then(|row| decision(study, analysis.n, &row));
     let mut more = Vec::new();
+    let (outcome, headline) = match decided {
+        Some(decided) => {
+            more.extend(decided.more);
+            match outcome {
+                // What was required on the command line is answered first.
+                Outcome::Shown | Outcome::NotShown => {
+                    more.insert(0, decided.headline);
+                    (outcome, headline)
+                }
+                _ => (decided.outcome, format!("{} {headline}", decided.headline)),
+            }
+        }
+        None => (outcome, headline),
+    };
     if outcome == Outcome::NotShown {
         more.push(
             "Not shown is not the same as shown to be bad: more readings narrow the interval, and may or may not lift \
@@ -83,6 +105,39 @@ pub fn verdict(study: &Study, analysis: &Analysis) -> Verdict {
         more.push(progress(plan, *standing, analysis.n));
     }
     Verdict { outcome, headline, more }
+}
+
+/// What a look decided about the plan's claim.
+fn decision(study: &Study, n: u32, row: &Row) -> Option<Verdict> {
+    let early = study.decided_early()?;
+    let decision = early.decide(Count::new(n)?, row.estimate)?;
+    let (claim, against) = (level::plain(early.claim.0), level::plain(early.against.0));
+    let power = level::percent(early.power.millionths());
+    let (outcome, word, meaning) = match decision {
+        Decision::ClaimKept => (
+            Outcome::Kept,
+            "kept",
+            format!(
+                "Kept is not proven: it means that the study, which notices {against} with at least {power}, did not \
+                 notice it."
+            ),
+        ),
+        Decision::ClaimRejected => (
+            Outcome::Rejected,
+            "rejected",
+            format!("A true claim is rejected with a risk of at most {}.", level::percent(early.alpha.0)),
+        ),
+    };
+    let look = early.looks.iter().position(|look| look.n.get() == n).map_or(0, |at| at + 1);
+    Some(Verdict {
+        outcome,
+        headline: format!(
+            "The claim that {} is {claim}, against {against}, is {word} at look {look} of {}.",
+            row.index,
+            early.looks.len()
+        ),
+        more: vec![meaning],
+    })
 }
 
 fn claim(question: &Question, row: &Row) -> (Outcome, String) {
@@ -107,7 +162,10 @@ fn claim(question: &Question, row: &Row) -> (Outcome, String) {
 }
 
 fn progress(plan: &Plan, standing: Standing, n: u32) -> String {
-    let rule = plan.rule;
+    let rule = &plan.rule;
+    if let Some(early) = rule.early() {
+        return progress_to_a_decision(early, standing, n);
+    }
     match standing {
         Standing::Gathering => format!(
             "The study is not finished: {n} readings are in, at least {} are planned, and no more than {} are asked for.",
@@ -121,6 +179,25 @@ fn progress(plan: &Plan, standing: Standing, n: u32) -> String {
         Standing::Spent => format!(
             "The plan's limit of {} readings is reached, but the interval is not as narrow as planned.",
             rule.limit.get()
+        ),
+    }
+}
+
+fn progress_to_a_decision(early: &EarlyDecision, standing: Standing, n: u32) -> String {
+    let last = early.looks.last().map_or(0, |last| last.n.get());
+    match standing {
+        Standing::Gathering => {
+            let next = early.looks.iter().map(|look| look.n.get()).find(|&look| look > n).unwrap_or(last);
+            format!(
+                "The study is not finished: {n} readings are in, the next look comes after {next}, the last one after \
+                 {last}."
+            )
+        }
+        Standing::Settled => {
+            format!("The study is finished: {n} readings are in; it could have taken {last}.")
+        }
+        Standing::Spent => format!(
+            "The last look, after {last} readings, decided nothing, since there is no estimate: the readings are all alike."
         ),
     }
 }
@@ -202,6 +279,22 @@ pub fn limit(value: Decimal, resolution: Option<Resolution>) -> String {
     text.extend((value.decimals()..wanted).map(|_| '0'));
     text.replace('-', "\u{2212}")
 }
+
+/// Why an index has no limits.
+#[must_use]
+pub fn no_interval(study: &Study) -> &'static str {
+    if study.decided_early().is_some() {
+        "no limits after an early decision"
+    } else {
+        "no interval method yet"
+    }
+}
+
+/// How the limits come about after an early decision.
+pub const AFTER_EARLY_DECISION: &str = "A study that stops where its estimate is extreme would have an interval that \
+    leans to that side and covers too little (a nominal two-sided 95 % some 91 %, own simulation). These limits allow \
+    for the looks: results are ordered by where the study ended, and each limit is exact or covers more, wherever the \
+    process is, if it is stable and normal.";
 
 /// What the interval's method really covers; own computation, see the core's `interval::bissell`.
 #[must_use]

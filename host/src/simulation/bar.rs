@@ -42,7 +42,8 @@ impl<'a> Bar<'a> {
     /// An estimate that is too low to settle at n pieces, and nearly the largest such: by halving between an estimate
     /// that is too low and one that may not be.
     fn find(&self, n: Count) -> f64 {
-        let Precision::Relative(goal) = self.plan.rule.precision else { return 0.0 };
+        // A claim that is decided early is looked at seldom, and any estimate may decide it.
+        let Some(Precision::Relative(goal)) = self.plan.rule.precision() else { return f64::NEG_INFINITY };
         let widened = goal.to_f64() * (1.0 + MARGIN);
         let may_settle = |at: f64| {
             let plan = self.plan;

@@ -69,14 +69,16 @@ pub fn simulate(
 /// Indices that a plan is tried with, since it does not say what it was sized for.
 const INDICES: [f64; 3] = [1.0, 1.33, 1.67];
 
-/// The processes that a plan is tried with: a few indices, each centred and, where that makes a difference, with the
+/// The processes that a plan is tried with: what it claims and what it shall notice, or else a few indices; each centred and, where that makes a difference, with the
 /// mean one standard deviation off. Cpk's coverage hardly changes beyond: then one limit only is in play.
 #[must_use]
 pub fn usual_processes(plan: &Plan) -> Vec<Process> {
     let two_limits = plan.lower.is_some() && plan.upper.is_some();
     let offsets: &[f64] =
         if two_limits && matches!(plan.index, Index::Cpk | Index::Cpm) { &[0.0, 1.0] } else { &[0.0] };
-    INDICES
+    let asked = plan.rule.early().map(|early| [early.claim.to_f64(), early.against.to_f64()]);
+    let indices: &[f64] = asked.as_ref().map_or(&INDICES, |asked| asked);
+    indices
         .iter()
         .flat_map(|&true_index| offsets.iter().map(move |&offset| Process { true_index, offset }))
         .collect()
@@ -88,11 +90,14 @@ const READINGS: f64 = 1.5e7;
 /// So many studies of each process that the answer comes within two seconds: fewer, the more pieces a study takes.
 #[must_use]
 pub fn usual_studies(plan: &Plan, processes: &[Process]) -> u32 {
-    let rule = plan.rule;
+    let rule = &plan.rule;
     let expected = |process: &Process| {
+        let Some(goal) = rule.precision() else {
+            return f64::midpoint(rule.planned.get().into(), rule.limit.get().into());
+        };
         let size = Design::by_bissell(plan.index).and_then(|design| {
             let design = design.with_sigma(plan.sigma)?;
-            precision::smallest_by(&design, process.true_index, rule.precision, plan.confidence, plan.kind)
+            precision::smallest_by(&design, process.true_index, goal, plan.confidence, plan.kind)
         });
         f64::from(size.map_or(rule.limit, |size| size.n.clamp(rule.planned, rule.limit)).get())
     };

@@ -4,6 +4,7 @@ use std::collections::BTreeMap;
 
 use donelight_core::interval::Interval;
 use donelight_core::stopping::Standing;
+use donelight_core::stopping::early::Decision;
 
 use super::process::Process;
 use super::study::End;
@@ -70,6 +71,8 @@ pub struct Outcome {
     met_at_planned: u32,
     spent: u32,
     with_estimate: u32,
+    decided: u32,
+    rejected: u32,
     errors: f64,
     squared_errors: f64,
 }
@@ -85,6 +88,8 @@ impl Outcome {
             met_at_planned: 0,
             spent: 0,
             with_estimate: 0,
+            decided: 0,
+            rejected: 0,
             errors: 0.0,
             squared_errors: 0.0,
         }
@@ -98,6 +103,8 @@ impl Outcome {
         self.studies += 1;
         self.met_at_planned += u32::from(settled && n == planned);
         self.spent += u32::from(!settled);
+        self.decided += u32::from(end.decision.is_some());
+        self.rejected += u32::from(end.decision == Some(Decision::ClaimRejected));
         if let Some(estimate) = end.estimate {
             let error = estimate.estimate - self.process.true_index;
             self.with_estimate += 1;
@@ -117,6 +124,8 @@ impl Outcome {
         self.met_at_planned += other.met_at_planned;
         self.spent += other.spent;
         self.with_estimate += other.with_estimate;
+        self.decided += other.decided;
+        self.rejected += other.rejected;
         self.errors += other.errors;
         self.squared_errors += other.squared_errors;
     }
@@ -143,6 +152,12 @@ impl Outcome {
     #[must_use]
     pub fn coverage(&self) -> Share {
         self.share(self.covered)
+    }
+
+    /// How many rejected the plan's claim; `None` if nothing was claimed, or nothing decided.
+    #[must_use]
+    pub fn rejected(&self) -> Option<Share> {
+        (self.decided > 0).then(|| self.share(self.rejected))
     }
 
     /// How many met the goal at the planned count.

@@ -7,6 +7,7 @@ use donelight_core::plan::Plan;
 use donelight_core::quantity::Count;
 use donelight_core::sigma::{Sigma, Tally};
 use donelight_core::stopping::Standing;
+use donelight_core::stopping::early::Decision;
 
 use super::bar::Bar;
 use super::process::{Gauged, Process, ProcessError};
@@ -21,6 +22,8 @@ pub(super) struct End {
     pub(super) standing: Standing,
     /// The interval at the end; `None` if all readings were alike.
     pub(super) estimate: Option<Estimate>,
+    /// What is decided about the plan's claim, if it has one.
+    pub(super) decision: Option<Decision>,
 }
 
 /// What the studies of one process have in common.
@@ -75,7 +78,10 @@ impl<'a> Studies<'a> {
                     estimate
                 });
                 if standing != Standing::Gathering {
-                    return End { n, standing, estimate: estimate.or_else(|| self.estimate(&tally)) };
+                    let estimate = estimate.or_else(|| self.estimate(&tally));
+                    let decision =
+                        self.plan.rule.early().and_then(|early| early.decide(n, estimate.as_ref()?.estimate));
+                    return End { n, standing, estimate, decision };
                 }
             }
         }

@@ -5,11 +5,15 @@ use donelight_core::plan::Plan;
 use serde_json::{Value, json};
 
 use super::{Extent, Outcome, Share};
+use crate::level;
 use crate::report::words::interval_name;
 
 /// The outcomes as a table, and what it says.
 #[must_use]
 pub fn text(plan: &Plan, extent: Extent, outcomes: &[Outcome]) -> String {
+    if plan.rule.early().is_some() {
+        return text_of_decisions(plan, extent, outcomes);
+    }
     let index = plan.index.name();
     let Extent { seed, studies } = extent;
     let mut text = format!(
@@ -33,11 +37,7 @@ pub fn text(plan: &Plan, extent: Extent, outcomes: &[Outcome]) -> String {
     for outcome in outcomes {
         text.push_str(&line(widths, &row(outcome)));
     }
-    let middle = match (plan.index, plan.lower, plan.upper) {
-        (Index::Cpm, ..) => "the target",
-        (_, Some(_), Some(_)) => "the middle of the limits",
-        _ => "the middle, which one limit does not have",
-    };
+    let middle = middle(plan);
     text.push_str(&format!(
         "\nmean off: in standard deviations, from {middle}. covers: how often the {} at the end holds the true {index}, \
          ± one standard error of the simulation. pieces: their mean; 95 %: enough in 95 of 100 studies. met at {}: the \
@@ -56,6 +56,48 @@ pub fn text(plan: &Plan, extent: Extent, outcomes: &[Outcome]) -> String {
             share(worst)
         ));
     }
+    text
+}
+
+fn middle(plan: &Plan) -> &'static str {
+    match (plan.index, plan.lower, plan.upper) {
+        (Index::Cpm, ..) => "the target",
+        (_, Some(_), Some(_)) => "the middle of the limits",
+        _ => "the middle, which one limit does not have",
+    }
+}
+
+/// For a plan that decides a claim: how often it is rejected, and after how many pieces.
+fn text_of_decisions(plan: &Plan, extent: Extent, outcomes: &[Outcome]) -> String {
+    let index = plan.index.name();
+    let Extent { seed, studies } = extent;
+    let mut text = format!(
+        "Simulated with this plan: {studies} studies of each process (normal, stable, read as the gauge reads; seed \
+         {seed}).\n\n"
+    );
+    let header =
+        [format!("true {index}").as_str(), "mean off", "rejected", "pieces", "median", "95 %", "most"]
+            .map(str::to_owned);
+    let widths = [8, 8, 12, 8, 7, 7, 7];
+    text.push_str(&line(widths, &header));
+    for outcome in outcomes {
+        let (process, n) = (outcome.process(), outcome.n());
+        let row = [
+            level::plain((process.true_index * 1e6).round() as u32),
+            format!("{:.1}", process.offset),
+            outcome.rejected().map_or_else(|| "none decided".to_owned(), share),
+            format!("{:.1}", n.mean()),
+            n.quantile(0.5).to_string(),
+            n.quantile(0.95).to_string(),
+            n.most().to_string(),
+        ];
+        text.push_str(&line(widths, &row));
+    }
+    text.push_str(&format!(
+        "\nmean off: in standard deviations, from {}. rejected: how often the claim is, \u{b1} one standard error of the \
+         simulation. pieces: their mean; 95 %: enough in 95 of 100 studies.",
+        middle(plan)
+    ));
     text
 }
 
@@ -122,8 +164,11 @@ fn case(outcome: &Outcome) -> Value {
     json!({
         "true_index": outcome.process().true_index,
         "offset": outcome.process().offset,
-        "coverage": outcome.coverage().value,
-        "coverage_se": outcome.coverage().standard_error,
+        // After an early decision the ordinary interval is not the one that is reported.
+        "coverage": outcome.rejected().is_none().then(|| outcome.coverage().value),
+        "coverage_se": outcome.rejected().is_none().then(|| outcome.coverage().standard_error),
+        "rejected": outcome.rejected().map(|share| share.value),
+        "rejected_se": outcome.rejected().map(|share| share.standard_error),
         "bias": outcome.bias(),
         "bias_se": outcome.bias_standard_error(),
         "n_mean": n.mean(),

@@ -10,7 +10,7 @@ use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Refusal;
 use donelight_core::sigma::Sigma;
-use donelight_core::stopping::StoppingRule;
+use donelight_core::stopping::{Goal, StoppingRule};
 use donelight_core::wire::{self, FRAME_MAX, FrameReader, Reply, Request};
 
 use super::feed::Feed;
@@ -36,7 +36,7 @@ fn plan(planned: u32, limit: u32) -> Plan {
         kind: Kind::TwoSided,
         rule: StoppingRule {
             planned: count(planned),
-            precision: Precision::Relative(Millionths(500_000)),
+            goal: Goal::Precision(Precision::Relative(Millionths(500_000))),
             limit: count(limit),
         },
         gauge: LineSettings::default(),

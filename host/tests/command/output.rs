@@ -10,7 +10,7 @@ fn every_command_helps_with_what_it_takes() {
         ("", "size plan station virtual assess report demo --json"),
         ("size precision", "--index --at --within --confidence --kind Examples:"),
         ("size power", "--claim --against --alpha --power Examples:"),
-        ("plan new", "--force Example:"),
+        ("plan new", "--force Examples:"),
         ("plan check", "--studies --seed Examples:"),
         ("station", "list status load pull clock blink"),
         ("station pull", "--ledger --port"),

@@ -167,3 +167,31 @@ limit = 240
     let json = run(&["plan", "check", "plan.toml", "--json"], folder.path()).ends_with(0).json();
     assert!(json["simulation"]["refused"].as_str().unwrap().contains("10^12"), "{json}");
 }
+
+#[test]
+fn a_new_plan_that_decides_early_is_valid_and_says_what_it_does() {
+    let folder = tempfile::tempdir().unwrap();
+    let new = ["plan", "new", "plan.toml", "--early", "--claim", "1.5", "--against", "1.3", "--looks", "3"];
+    run(&new, folder.path()).ends_with(0);
+    let check = run(&["plan", "check", "plan.toml"], folder.path()).ends_with(0);
+    for words in ["Cpk is 1.5: rejected although true", "kept if it is", "Pieces on average", "not proven"] {
+        assert!(check.out.contains(words), "{words} is not in\n{}", check.out);
+    }
+    let json = run(&["plan", "check", "plan.toml", "--json"], folder.path()).ends_with(0).json();
+    assert_eq!(json["early"]["looks"].as_array().unwrap().len(), 3);
+    assert_eq!(json["limit"], json["early"]["looks"][2]["n"]);
+    // The simulation rounds to the gauge's steps and goes through the station's rule; the design knows of neither.
+    let cases = json["simulation"]["cases"].as_array().unwrap();
+    let places = json["early"]["places"].as_array().unwrap();
+    for (case, (place, value)) in
+        cases.iter().zip([(0, "at_claim"), (1, "at_claim"), (0, "at_against"), (1, "at_against")])
+    {
+        let (rejected, error) = (case["rejected"].as_f64().unwrap(), case["rejected_se"].as_f64().unwrap());
+        let designed = places[place][value]["rejected"].as_f64().unwrap();
+        assert!((rejected - designed).abs() < 5.0 * error, "{case} {designed}");
+        assert!(case["coverage"].is_null(), "{case}");
+    }
+    run(&new[..6], folder.path()).ends_with(2);
+    run(&["plan", "new", "other.toml", "--claim", "1.5"], folder.path()).ends_with(2);
+    assert!(!folder.path().join("other.toml").exists());
+}

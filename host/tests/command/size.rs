@@ -158,3 +158,28 @@ fn a_sigma_and_subgroups_that_do_not_go_together_are_wrong_use() {
     let total = donelight("size precision --at 1.5 --within 10% --sigma total --subgroups 5").ends_with(1);
     assert!(total.err.contains("size the study with sigma overall"), "{}", total.err);
 }
+
+#[test]
+fn deciding_early_names_its_looks_and_saves_thirty_percent_of_297_on_average() {
+    let answer = donelight("size power --claim 1.5 --against 1.3 --early --json").ends_with(0).json();
+    assert_eq!(answer["fixed"], 332);
+    assert_eq!(answer["looks"].as_array().unwrap().len(), 8);
+    assert!(answer["true_alpha"].as_f64().unwrap() <= 0.05);
+    assert!(answer["true_power"].as_f64().unwrap() >= 0.95);
+    for place in answer["places"].as_array().unwrap() {
+        for value in ["at_claim", "at_against"] {
+            assert!(place[value]["expected"].as_f64().unwrap() <= 208.0, "{place}");
+        }
+    }
+    let words =
+        donelight("size power --index cpl --claim 1.5 --against 1.3 --early --looks 4").ends_with(0).out;
+    for needle in ["kept if it is", "a fixed size with the same promises takes 297", "only one limit matters"]
+    {
+        assert!(words.contains(needle), "{needle} is not in {words}");
+    }
+    donelight("size power --claim 1.5 --against 1.3 --looks 4").ends_with(2);
+    donelight("size power --index cpm --claim 1.5 --against 1.3 --early").ends_with(1);
+    donelight("size power --claim 1.5 --against 1.5 --early").ends_with(2);
+    donelight("size power --claim 1.5 --against 1.3 --early --subgroups 5").ends_with(2);
+    donelight("size power --claim 3 --against 0.5 --early").ends_with(1);
+}

@@ -13,7 +13,7 @@ use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Seq;
 use donelight_core::sigma::Sigma;
-use donelight_core::stopping::StoppingRule;
+use donelight_core::stopping::{Goal, StoppingRule};
 use donelight_core::text::Text;
 use donelight_core::wire::StationId;
 
@@ -36,7 +36,7 @@ pub(crate) fn plan(name: &str) -> Plan {
         kind: Kind::TwoSided,
         rule: StoppingRule {
             planned: count(12),
-            precision: Precision::Relative(Millionths(450_000)),
+            goal: Goal::Precision(Precision::Relative(Millionths(450_000))),
             limit: count(30),
         },
         gauge: LineSettings::default(),

@@ -9,7 +9,7 @@ use crate::{
     plan::{Draft, Plan, tests as plans},
     quantity::{Millionths, Precision},
     record::Sealed,
-    stopping::StoppingRule,
+    stopping::{Goal, StoppingRule},
 };
 
 const ID: StationId = StationId([1, 2, 3, 4, 5, 6, 7, 8]);
@@ -114,7 +114,7 @@ fn small_plan() -> Plan {
     let draft = Draft {
         rule: StoppingRule {
             planned: Count::new(5).unwrap(),
-            precision: Precision::Relative(Millionths(500_000)),
+            goal: Goal::Precision(Precision::Relative(Millionths(500_000))),
             limit: Count::new(12).unwrap(),
         },
         same_in_a_row: 4,

@@ -10,7 +10,10 @@ use crate::{
     quantity::{Millionths, Precision},
     record::Refusal,
     sigma::{Sigma, SubgroupSize},
-    stopping::StoppingRule,
+    stopping::{
+        Goal, StoppingRule,
+        early::{Decision, tests as early},
+    },
 };
 
 /// A study that wants few pieces: 5 planned, ±50 %, 12 at most; 4 equal readings hold it.
@@ -18,7 +21,7 @@ fn small_plan() -> Event {
     let draft = Draft {
         rule: StoppingRule {
             planned: Count::new(5).unwrap(),
-            precision: Precision::Relative(Millionths(500_000)),
+            goal: Goal::Precision(Precision::Relative(Millionths(500_000))),
             limit: Count::new(12).unwrap(),
         },
         same_in_a_row: 4,
@@ -32,7 +35,7 @@ fn within_plan(sigma: Sigma) -> Event {
     let draft = Draft {
         rule: StoppingRule {
             planned: Count::new(6).unwrap(),
-            precision: Precision::Relative(Millionths(600_000)),
+            goal: Goal::Precision(Precision::Relative(Millionths(600_000))),
             limit: Count::new(12).unwrap(),
         },
         same_in_a_row: 4,
@@ -146,9 +149,89 @@ fn a_new_plan_ends_what_went_before() {
     assert_eq!((study.began(), study.progress().n.get()), (Seq(4), 1));
 }
 
+/// Claim 1.5 against 1.3 at 4, 8 and 12 pieces; 4 equal readings hold it. Counts are thousandths of 9.97 to 10.03.
+fn early_plan() -> Event {
+    let draft = Draft {
+        rule: StoppingRule::deciding_early(early::early()),
+        index: crate::capability::Index::Cp,
+        same_in_a_row: 4,
+        ..plans::draft()
+    };
+    Event::Plan(Plan::try_from(draft).unwrap())
+}
+
+fn early_study(counts: &[i64], then: &[Event]) -> Study {
+    let mut events = std::vec![early_plan()];
+    events.extend(counts.iter().map(|c| reading(*c)));
+    events.extend_from_slice(then);
+    replay(&events).study().unwrap().clone()
+}
+
+/// Two readings ±d about the middle, over and over: s² = d² n/(n − 1).
+fn about_the_middle(d: i64, n: usize) -> Vec<i64> {
+    (0..n).map(|i| 10_000 + if i % 2 == 0 { d } else { -d }).collect()
+}
+
+#[test]
+fn a_claim_is_decided_at_a_look_and_what_comes_after_is_surplus() {
+    // Cp = 0.06/(6s): 2.17 at d = 4 after 4 pieces, above 2.
+    let kept = early_study(&about_the_middle(4, 6), &[]);
+    assert_eq!((kept.standing(), kept.decision()), (Standing::Settled, Some(Decision::ClaimKept)));
+    assert_eq!((kept.progress().n.get(), kept.progress().surplus), (4, 2));
+    // 0.72 at d = 12: the first look rejects nothing, the second one does (0.78, below 1.2).
+    let spread = about_the_middle(12, 9);
+    assert_eq!(early_study(&spread[..7], &[]).standing(), Standing::Gathering);
+    let rejected = early_study(&spread, &[]);
+    assert_eq!(
+        (rejected.standing(), rejected.decision()),
+        (Standing::Settled, Some(Decision::ClaimRejected))
+    );
+    assert_eq!((rejected.progress().n.get(), rejected.progress().surplus), (8, 1));
+    // Between the boundaries to the end: 1.35 after 8, 1.38 after 12, below 1.4.
+    let open = about_the_middle(7, 12);
+    assert_eq!(early_study(&open[..11], &[]).standing(), Standing::Gathering);
+    assert_eq!(early_study(&open, &[]).decision(), Some(Decision::ClaimRejected));
+    // No spread, no estimate, no decision.
+    let stuck = Event::Plan(
+        Plan::try_from(Draft {
+            rule: StoppingRule::deciding_early(early::early()),
+            same_in_a_row: 0,
+            ..plans::draft()
+        })
+        .unwrap(),
+    );
+    let mut events = std::vec![stuck];
+    events.extend(std::iter::repeat_n(reading(10_000), 13));
+    let study = replay(&events).study().unwrap().clone();
+    assert_eq!((study.standing(), study.decision(), study.progress().surplus), (Standing::Spent, None, 1));
+}
+
+#[test]
+fn a_decision_is_undone_with_the_reading_that_made_it() {
+    let study = early_study(&about_the_middle(4, 4), &[Event::TakenBack(Seq(5))]);
+    assert_eq!((study.standing(), study.decision()), (Standing::Gathering, None));
+    assert_eq!(study.progress().n.get(), 3);
+}
+
+#[test]
+fn a_look_that_falls_into_a_hold_is_not_missed() {
+    // 4 equal readings at the end of the second look's pieces hold the study: Cp is 0.85 there.
+    let counts: Vec<i64> = [10_012, 9_988, 10_012, 9_988].into_iter().chain([10_012; 4]).collect();
+    let held = early_study(&counts, &[]);
+    assert_eq!((held.standing(), held.held()), (Standing::Gathering, Some(Held::GaugeStuck)));
+    let late = [reading(9_999), reading(10_001)];
+    let later = early_study(&counts, &late);
+    assert_eq!((later.progress().n.get(), later.progress().surplus), (8, 2));
+    let seen = early_study(&counts, &[&late[..], &[Event::Seen]].concat());
+    assert_eq!(seen.decision(), Some(Decision::ClaimRejected));
+    // Where the look decides nothing, the readings go on to count.
+    let counts: Vec<i64> = [10_007, 9_993, 10_007, 9_993].into_iter().chain([10_008; 4]).collect();
+    assert_eq!(early_study(&counts, &late).progress().n.get(), 10);
+}
+
 fn any_event() -> impl Strategy<Value = Event> {
     prop_oneof![
-        1 => Just(small_plan()),
+        1 => prop_oneof![Just(small_plan()), Just(early_plan())],
         1 => Just(within_plan(Sigma::Pooled(THREE))),
         1 => Just(within_plan(Sigma::Ranges(THREE))),
         1 => Just(within_plan(Sigma::MovingRanges)),
@@ -199,7 +282,9 @@ proptest! {
         let mut counted: Vec<(Seq, Counts)> = Vec::new();
         for (i, event) in events.iter().enumerate() {
             let seq = Seq(i as u32 + 1);
-            let gathering = station.study().is_some_and(|s| s.standing() == Standing::Gathering);
+            let gathering = station
+                .study()
+                .is_some_and(|s| s.standing() == Standing::Gathering && !s.decided_though_held());
             match event {
                 Event::Plan(_) => counted.clear(),
                 Event::Reading(c) if gathering => counted.push((seq, *c)),
@@ -221,7 +306,16 @@ proptest! {
 
 #[test]
 fn the_largest_state_fits_a_checkpoint() {
-    let mut station = replay(&[Event::Plan(Plan::try_from(plans::longest()).unwrap())]);
+    for draft in [plans::longest(), plans::longest_early()] {
+        let mut station = replay(&[Event::Plan(Plan::try_from(draft).unwrap())]);
+        fill(&mut station);
+        let mut bytes = [0; crate::journal::STATE_MAX];
+        assert!(station.store(&mut bytes).is_some());
+    }
+}
+
+/// Every number of the station as long as it can be.
+fn fill(station: &mut Station) {
     let study = station.study.as_mut().unwrap();
     for counts in [1_000_000_000_000, -1_000_000_000_000].iter().cycle().take(1_000_000) {
         study.tally.add(Counts::new(*counts).unwrap()).unwrap();
@@ -232,8 +326,6 @@ fn the_largest_state_fits_a_checkpoint() {
         Some(Latest { seq: Seq(u32::MAX), counts: Counts::new(-1_000_000_000_000).unwrap(), surplus: true });
     study.held = Some(Held::GaugeStuck);
     (station.boots, station.refused) = (u32::MAX, u32::MAX);
-    let mut bytes = [0; crate::journal::STATE_MAX];
-    assert!(station.store(&mut bytes).is_some());
 }
 
 #[test]

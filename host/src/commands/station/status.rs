@@ -36,8 +36,8 @@ fn study_lines(study: &StudyStatus, lines: &mut Vec<String>) {
     let progress = &study.progress;
     let standing = match progress.standing {
         Standing::Gathering => "measure on",
-        Standing::Settled => "done: enough pieces, and the interval is as narrow as planned",
-        Standing::Spent => "the plan's limit is reached, and the interval is not as narrow as planned",
+        Standing::Settled => "done: enough pieces, and the plan's goal is reached",
+        Standing::Spent => "the plan's limit is reached without its goal",
     };
     lines.push(format!("Study {:?} (record {}): {standing}", study.name.as_str(), study.began));
     lines.push(format!(
