@@ -8,7 +8,7 @@ use donelight_core::interval::Kind;
 use donelight_core::plan::{Draft, LineSettings, Parity, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Refusal;
-use donelight_core::stopping::StoppingRule;
+use donelight_core::stopping::{Goal, StoppingRule};
 use donelight_core::text::Text;
 use donelight_core::wire::{Reply, Request};
 use donelight_firmware::ring::LineFault;
@@ -30,7 +30,7 @@ fn plan(gauge: LineSettings) -> Plan {
         kind: Kind::TwoSided,
         rule: StoppingRule {
             planned: count(3),
-            precision: Precision::Relative(Millionths(1_100_000)),
+            goal: Goal::Precision(Precision::Relative(Millionths(1_100_000))),
             limit: count(10),
         },
         gauge,
