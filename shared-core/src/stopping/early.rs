@@ -9,6 +9,7 @@
 //! the claim is rejected, with a chance of at least the power.
 
 use core::fmt;
+use core::num::NonZeroU32;
 use core::str::FromStr;
 
 use heapless::Vec;
@@ -82,25 +83,28 @@ pub enum Decision {
 
 /// A boundary for the estimate: an index in whole ten-thousandths, above zero, so that the table shows what is applied.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
-pub struct Boundary(u32);
+pub struct Boundary(NonZeroU32);
 
 impl Boundary {
     /// `None` for 0, where no boundary can be.
     #[must_use]
     pub const fn from_ten_thousandths(value: u32) -> Option<Self> {
-        if value == 0 { None } else { Some(Self(value)) }
+        match NonZeroU32::new(value) {
+            Some(value) => Some(Self(value)),
+            None => None,
+        }
     }
 
     /// In ten-thousandths, at least 1.
     #[must_use]
     pub const fn ten_thousandths(self) -> u32 {
-        self.0
+        self.0.get()
     }
 
     /// As a double: one division, correctly rounded.
     #[must_use]
     pub fn to_f64(self) -> f64 {
-        f64::from(self.0) / 1e4
+        f64::from(self.0.get()) / 1e4
     }
 }
 
