@@ -4,8 +4,8 @@ use super::*;
 use crate::sigma::effective;
 use crate::special::normal;
 
-/// m, d2, d3 and c4 of m pieces: "Shewhart Constants for Control Charts", a vignette of the R package SixSigma (Cano,
-/// Moguerza & Redchuk 2012), looked up; the last row's d2 in another table.
+/// m, d2, d3 and c4 of m pieces: the trade's common table of factors for control charts (ASTM E2587 has it; read in
+/// public copies, not in the standard itself).
 #[allow(clippy::approx_constant, reason = "as it was published")]
 const SHEWHART: [(u8, f64, f64, f64); 23] = [
     (2, 1.1284, 0.8525, 0.7979),
