@@ -1,4 +1,4 @@
-//! Writes COVERAGE.md: how often the interval at the end of a study holds the true index, by simulation.
+//! Writes `shared-core/COVERAGE.md`: how often the interval at the end of a study holds the true index, by simulation.
 //!
 //! `cargo run --release -p donelight-tests --bin coverage [STUDIES]`, in the workspace's folder. The same number of
 //! studies writes the same file.
@@ -10,6 +10,8 @@ use donelight::simulation::{Extent, Outcome, Process, simulate};
 
 /// Of each process. A coverage of 95 % is then known to within a standard error of 0.07 points.
 const STUDIES: u32 = 100_000;
+/// Beside the intervals, wherever the program is run.
+const FILE: &str = concat!(env!("CARGO_MANIFEST_DIR"), "/../shared-core/COVERAGE.md");
 const SEED: u64 = 1;
 
 /// True indices, and the mean's distance from the middle in standard deviations.
@@ -42,10 +44,10 @@ fn main() -> ExitCode {
             return ExitCode::from(2);
         }
     };
-    match std::fs::write("COVERAGE.md", page(Extent { seed: SEED, studies })) {
+    match std::fs::write(FILE, page(Extent { seed: SEED, studies })) {
         Ok(()) => ExitCode::SUCCESS,
         Err(error) => {
-            eprintln!("error: COVERAGE.md is not written: {error}");
+            eprintln!("error: {FILE} is not written: {error}");
             ExitCode::FAILURE
         }
     }
