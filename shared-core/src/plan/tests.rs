@@ -31,6 +31,20 @@ pub(crate) fn draft() -> Draft {
     }
 }
 
+/// A study that wants few pieces: 5 planned, ±50 %, 12 at most; 4 equal readings hold it.
+pub(crate) fn small() -> Plan {
+    let draft = Draft {
+        rule: StoppingRule {
+            planned: Count::new(5).unwrap(),
+            goal: Goal::Precision(Precision::Relative(Millionths(500_000))),
+            limit: Count::new(12).unwrap(),
+        },
+        same_in_a_row: 4,
+        ..draft()
+    };
+    Plan::try_from(draft).unwrap()
+}
+
 /// The longest plan that there can be, to bound records and frames.
 pub(crate) fn longest() -> Draft {
     Draft {

@@ -6,10 +6,8 @@ use super::*;
 use crate::{
     counts::ReadingError,
     flash_model::Flash,
-    plan::{Draft, Plan, tests as plans},
-    quantity::{Millionths, Precision},
+    plan::{Plan, tests as plans},
     record::Sealed,
-    stopping::{Goal, StoppingRule},
 };
 
 const ID: StationId = StationId([1, 2, 3, 4, 5, 6, 7, 8]);
@@ -110,22 +108,9 @@ impl Bench {
     }
 }
 
-fn small_plan() -> Plan {
-    let draft = Draft {
-        rule: StoppingRule {
-            planned: Count::new(5).unwrap(),
-            goal: Goal::Precision(Precision::Relative(Millionths(500_000))),
-            limit: Count::new(12).unwrap(),
-        },
-        same_in_a_row: 4,
-        ..plans::draft()
-    };
-    Plan::try_from(draft).unwrap()
-}
-
 fn loaded() -> Bench {
     let mut bench = boot(Flash::blank());
-    assert_eq!(bench.load(&small_plan(), false), Ok(Seq(2)));
+    assert_eq!(bench.load(&plans::small(), false), Ok(Seq(2)));
     bench
 }
 
@@ -159,7 +144,7 @@ fn the_done_lamp_is_lit_by_the_settling_reading_and_not_before() {
 fn each_refusal_is_shown_counted_and_recorded_with_its_reason() {
     let mut bench = boot(Flash::blank());
     bench.line("1.000");
-    bench.load(&small_plan(), false).unwrap();
+    bench.load(&plans::small(), false).unwrap();
     for line in ["abc", "10.0001", "99999999999999999999", "10.0 inch", &"9".repeat(100)] {
         bench.line(line);
         assert!(!bench.recorder.lamps(Millis(bench.now)).taken);
@@ -281,11 +266,11 @@ fn a_full_journal_calls_for_help_refuses_readings_and_takes_them_again_after_a_p
 #[test]
 fn loading_again_because_the_answer_was_lost_begins_no_second_study() {
     let mut bench = loaded();
-    assert_eq!(bench.load(&small_plan(), false), Ok(Seq(2)));
+    assert_eq!(bench.load(&plans::small(), false), Ok(Seq(2)));
     bench.line("10.001");
-    assert_eq!(bench.load(&small_plan(), false), Err(Reason::StudyUnfinished));
+    assert_eq!(bench.load(&plans::small(), false), Err(Reason::StudyUnfinished));
     assert_eq!(bench.n(), 1);
-    assert_eq!(bench.load(&small_plan(), true), Ok(Seq(4)));
+    assert_eq!(bench.load(&plans::small(), true), Ok(Seq(4)));
     assert_eq!(bench.n(), 0);
 }
 

@@ -16,18 +16,9 @@ use crate::{
     },
 };
 
-/// A study that wants few pieces: 5 planned, ±50 %, 12 at most; 4 equal readings hold it.
+/// See [`plans::small`].
 fn small_plan() -> Event {
-    let draft = Draft {
-        rule: StoppingRule {
-            planned: Count::new(5).unwrap(),
-            goal: Goal::Precision(Precision::Relative(Millionths(500_000))),
-            limit: Count::new(12).unwrap(),
-        },
-        same_in_a_row: 4,
-        ..plans::draft()
-    };
-    Event::Plan(Plan::try_from(draft).unwrap())
+    Event::Plan(plans::small())
 }
 
 /// The same with sigma within subgroups of 3, or of neighbours: 6 planned, ±60 %.
