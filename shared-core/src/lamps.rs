@@ -29,6 +29,8 @@ pub enum Call {
         /// When.
         since: Millis,
     },
+    /// Records can no longer be read: two short flashes every two seconds.
+    Lost,
     /// The limit is reached without the precision: long flashes, one in two seconds.
     Spent,
     /// The journal will soon be full: a short flash every four seconds.
@@ -50,6 +52,7 @@ impl Call {
         match self {
             Self::Act => within(500, 250),
             Self::Refused { since } => now.since(since) % 200 < 100,
+            Self::Lost => within(2_000, 450) && within(300, 150),
             Self::Spent => within(2_000, 1_000),
             Self::Pull => within(4_000, 150),
         }

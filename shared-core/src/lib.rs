@@ -23,6 +23,7 @@
 extern crate std;
 
 pub mod capability;
+pub mod chain;
 pub mod counts;
 pub mod estimator;
 #[cfg(test)]

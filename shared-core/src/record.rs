@@ -43,6 +43,30 @@ impl core::fmt::Display for Seq {
     }
 }
 
+/// Numbers, one behind the other, whose records are not to be had.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, Serialize, Deserialize)]
+#[cfg_attr(feature = "defmt", derive(defmt::Format))]
+pub struct Gap {
+    /// The first missing number.
+    pub first: Seq,
+    /// The last missing number.
+    pub last: Seq,
+}
+
+impl Gap {
+    /// The numbers from `first` up to but not including `next`; `None` if there is none.
+    #[must_use]
+    pub fn between(first: Seq, next: Seq) -> Option<Self> {
+        (first < next).then(|| Self { first, last: Seq(next.0.saturating_sub(1)) })
+    }
+
+    /// Whether all of `other` lies within.
+    #[must_use]
+    pub fn holds(self, other: Self) -> bool {
+        self.first <= other.first && other.last <= self.last
+    }
+}
+
 /// Milliseconds since the station's last boot. The host turns them into wall time by the `Clock` records.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
 #[cfg_attr(feature = "defmt", derive(defmt::Format))]
@@ -83,6 +107,8 @@ pub enum Refusal {
     StudyFull,
     /// A byte came without its stop bit or with the wrong parity; the line it belongs to is lost.
     GaugeGarbled,
+    /// The power failed while a record was being written; nobody was told of that record.
+    PowerFailed,
 }
 
 impl core::fmt::Display for Refusal {
@@ -106,6 +132,9 @@ impl core::fmt::Display for Refusal {
             Self::StudyFull => f.write_str("the study is full: load a new plan"),
             Self::GaugeGarbled => f.write_str(
                 "garbled bytes: check the baud rate, data bits, parity and stop bits of gauge and plan, and the cable",
+            ),
+            Self::PowerFailed => f.write_str(
+                "the power failed while something was being stored: see if the last piece is counted, or measure it again",
             ),
         }
     }
@@ -141,6 +170,8 @@ pub enum Event {
         /// Milliseconds since 1970-01-01 00:00 UTC, at the record's own `at`.
         unix_ms: u64,
     },
+    /// The station found that it can no longer read these of its records. What they said of the study it may still know.
+    Lost(Gap),
 }
 
 /// An event with its number and its time.
@@ -155,10 +186,13 @@ pub struct Record {
 }
 
 /// The length byte and the check sum around a record.
-const FRAMING: usize = 1 + 4;
+pub(crate) const FRAMING: usize = 1 + 4;
 
 /// The longest record, so that it fits a journal's page behind the page's header.
-pub const RECORD_MAX: usize = 240;
+pub const RECORD_MAX: usize = 224;
+
+/// The shortest record: number, time and event take a byte each at least.
+pub const RECORD_MIN: usize = FRAMING + 3;
 
 /// Why bytes are no record.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]

@@ -9,12 +9,13 @@ use core::ops::ControlFlow;
 use embedded_storage::nor_flash::MultiwriteNorFlash;
 
 use crate::{
+    counts::Counts,
     gauge::LineAssembler,
-    journal::{AppendError, Journal, OpenError, Prepared, STATE_MAX},
+    journal::{AppendError, Journal, OpenError, Patrol, Prepared, STATE_MAX},
     lamps::{self, Call, Lamps},
     plan::LineSettings,
     quantity::Count,
-    record::{Event, Millis, Refusal, Seq},
+    record::{Event, Gap, Millis, Refusal, Seq},
     station::Station,
     stopping::Standing,
     text::Text,
@@ -26,6 +27,16 @@ use crate::{
 
 /// Pages kept back from readings, so that boots, clocks and plans can still be recorded when the journal is full.
 const RESERVED_PAGES: u32 = 20;
+/// Of these, pages kept back from what a host asks for, so that no host can fill the journal.
+const RESERVED_FOR_BOOTS: u32 = 10;
+/// The journal is nearly full when fewer than one page in so many is left.
+const NEARLY_FULL: u32 = 8;
+/// The patrol begins a new round so long after the last one.
+const PATROL_EVERY_MS: u64 = 60 * 60 * 1_000;
+/// Room is told for readings as wide as the widest so far, and at least of six digits.
+const SIX_DIGITS: i64 = 999_999;
+/// … and for stations that are on for so long: two bits short of five bytes, a hundred days.
+const LONG_UP: Millis = Millis(1 << 33);
 /// The erase ahead of need waits until the gauge was silent for so long.
 const QUIET_MS: u64 = 200;
 /// Refusals are collected for so long before they are recorded, so that rubbish does not fill the journal.
@@ -61,13 +72,17 @@ pub struct Recorder<F> {
     minded: Millis,
     taken: Option<Millis>,
     blinking: Option<Millis>,
+    widest: i64,
+    /// When the patrol's last round was done; `None` during a round.
+    patrolled: Option<Millis>,
 }
 
 impl<F: MultiwriteNorFlash> Recorder<F> {
     /// Finds the journal, replays it and records the boot.
     ///
     /// # Errors
-    /// Only if the flash cannot be read at all; a full journal or one that cannot be written is shown instead.
+    /// Only if the flash cannot be read at all, or holds a journal of another format; a full journal, a damaged one, or
+    /// one that cannot be written is shown instead.
     pub fn open(
         flash: F,
         id: StationId,
@@ -75,10 +90,13 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         now: Millis,
     ) -> Result<Self, OpenError<F::Error>> {
         let mut state = [0; STATE_MAX];
-        let (mut journal, length) = Journal::open(flash, &mut state)?;
+        let (mut journal, opened) = Journal::open(flash, id, &mut state)?;
         // A state of another version does not decode: the replay then begins at the first record that is kept.
-        let mut station: Station =
-            length.and_then(|length| state.get(..length)).and_then(Station::restore).unwrap_or_default();
+        let mut station: Station = opened
+            .state
+            .and_then(|length| state.get(..length))
+            .and_then(Station::restore)
+            .unwrap_or_default();
         let from = station.through().map_or(Seq::FIRST, Seq::next);
         journal.visit(from, |seq, sealed| {
             if let Ok(record) = sealed.record() {
@@ -102,11 +120,19 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             minded: now,
             taken: None,
             blinking: None,
+            widest: SIX_DIGITS,
+            patrolled: None,
         };
         recorder.look_at_journal();
         let boot = recorder.station.boots().saturating_add(1);
         // Where even that cannot be recorded, the journal's health says so.
         let _ = recorder.record(now, &Event::Boot { boot });
+        if opened.salvage.torn {
+            recorder.refuse(now, Refusal::PowerFailed);
+        }
+        if let Some(gap) = opened.salvage.skipped {
+            recorder.lost(now, gap);
+        }
         Ok(recorder)
     }
 
@@ -184,7 +210,10 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
                 Some(seq) => self.record(now, &Event::TakenBack(seq)),
                 None => Err(Refusal::NothingToTakeBack),
             },
-            Button::Seen if self.station.study().is_some_and(|study| study.held().is_some()) => {
+            Button::Seen
+                if self.station.calls_for_lost()
+                    || self.station.study().is_some_and(|study| study.held().is_some()) =>
+            {
                 self.record(now, &Event::Seen)
             }
             Button::Seen => return,
@@ -195,7 +224,7 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
     }
 
     /// Lets time pass; call it every 10 ms or more often. In quiet moments this erases flash ahead of need, which can
-    /// take the flash's longest erase time.
+    /// take the flash's longest erase time, twice now and then, or reads a page to see that it still can be read.
     pub fn tick(&mut self, now: Millis) {
         if let Some(refusal) = self.gauge.tick(now) {
             self.refuse(now, refusal);
@@ -205,8 +234,8 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             self.record_refusals(now);
             self.look_at_journal();
         }
-        if now.since(self.gauge_heard) >= QUIET_MS {
-            let _ = self.prepare();
+        if now.since(self.gauge_heard) >= QUIET_MS && !matches!(self.prepare(), Ok(Prepared::Erased)) {
+            self.patrol(now);
         }
     }
 
@@ -244,6 +273,9 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         {
             return Some(Call::Refused { since });
         }
+        if self.station.calls_for_lost() {
+            return Some(Call::Lost);
+        }
         if study.is_some_and(|study| study.standing() == Standing::Spent) {
             return Some(Call::Spent);
         }
@@ -252,11 +284,18 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
 
     // ---- recording ----
 
-    fn take_reading(&mut self, now: Millis, counts: crate::counts::Counts) -> Result<(), Refusal> {
-        if !self.journal.has_room(RESERVED_PAGES).map_err(|_| Refusal::FlashFault)? {
+    fn take_reading(&mut self, now: Millis, counts: Counts) -> Result<(), Refusal> {
+        self.record_leaving(RESERVED_PAGES, now, &Event::Reading(counts))?;
+        self.widest = self.widest.max(counts.get().saturating_abs());
+        Ok(())
+    }
+
+    /// [`Recorder::record`] if more than so many pages are left.
+    fn record_leaving(&mut self, pages: u32, now: Millis, event: &Event) -> Result<Seq, Refusal> {
+        if !self.journal.has_room(pages).map_err(|_| Refusal::FlashFault)? {
             return Err(Refusal::JournalFull);
         }
-        self.record(now, &Event::Reading(counts)).map(|_| ())
+        self.record(now, event)
     }
 
     /// Durable first, then applied.
@@ -321,6 +360,26 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         }
     }
 
+    /// Records that these records can no longer be read, unless that is on record.
+    fn lost(&mut self, now: Millis, gap: Gap) {
+        if !self.station.knows_lost(gap) {
+            // Where it cannot be recorded, the journal's health says why, and the next round finds it again.
+            let _ = self.record_leaving(RESERVED_FOR_BOOTS, now, &Event::Lost(gap));
+        }
+    }
+
+    fn patrol(&mut self, now: Millis) {
+        if self.patrolled.is_some_and(|done| now.since(done) < PATROL_EVERY_MS) {
+            return;
+        }
+        self.patrolled = None;
+        match self.journal.patrol() {
+            Ok(Patrol::Going) => {}
+            Ok(Patrol::Missing(gap)) => self.lost(now, gap),
+            Ok(Patrol::Done) | Err(_) => self.patrolled = Some(now),
+        }
+    }
+
     fn look_at_journal(&mut self) {
         if self.health == JournalHealth::Faulty {
             return;
@@ -328,7 +387,7 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
         self.health = match self.journal.pages_left() {
             Err(_) => JournalHealth::Faulty,
             Ok(left) if left <= RESERVED_PAGES => JournalHealth::Full,
-            Ok(left) if left <= self.journal.places() / 8 => JournalHealth::NearlyFull,
+            Ok(left) if left <= self.journal.places() / NEARLY_FULL => JournalHealth::NearlyFull,
             Ok(_) => JournalHealth::Well,
         };
     }
@@ -342,12 +401,15 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
                 firmware: self.firmware.clone(),
                 next: self.journal.next(),
                 oldest: self.journal.oldest().unwrap_or(self.journal.next()),
+                head: self.journal.digest(),
             }),
             Request::Status => Reply::Status(self.status(now)),
             Request::Load { plan, replace } => recorded(self.load(now, plan, replace)),
             Request::Records { from } if from > self.journal.next() => Reply::Refused(Reason::BeyondJournal),
-            Request::Records { from } => match self.journal.read(from, records) {
-                Ok(used) => Reply::Records(records.get(..used).unwrap_or_default()),
+            Request::Records { from } => match self.journal.window(from, records) {
+                Ok((before, used)) => {
+                    Reply::Records { before, records: records.get(..used).unwrap_or_default() }
+                }
                 Err(_) => Reply::Refused(Reason::NotRecorded(Refusal::FlashFault)),
             },
             Request::Received { through } if through >= self.journal.next() => {
@@ -359,7 +421,8 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
                 Reply::Done
             }
             Request::SetClock { unix_ms } => {
-                recorded(self.record(now, &Event::Clock { unix_ms }).map_err(Reason::NotRecorded))
+                let event = Event::Clock { unix_ms };
+                recorded(self.record_leaving(RESERVED_FOR_BOOTS, now, &event).map_err(Reason::NotRecorded))
             }
             Request::Blink => {
                 self.blinking = Some(now);
@@ -380,7 +443,8 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             }
         }
         let before = self.line_settings();
-        let seq = self.record(now, &Event::Plan(plan)).map_err(Reason::NotRecorded)?;
+        let event = Event::Plan(plan);
+        let seq = self.record_leaving(RESERVED_FOR_BOOTS, now, &event).map_err(Reason::NotRecorded)?;
         if self.line_settings() != before {
             self.gauge = LineAssembler::new(now);
         }
@@ -389,7 +453,6 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
 
     fn status(&mut self, now: Millis) -> Status {
         self.look_at_journal();
-        let left = self.journal.pages_left().unwrap_or(0).saturating_sub(RESERVED_PAGES);
         let last = self.journal.next().0.saturating_sub(1);
         Status {
             study: self.station.study().map(|study| {
@@ -411,12 +474,23 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             held: self.station.study().and_then(|study| study.held()),
             boots: self.station.boots(),
             up: now,
-            room: Journal::<F>::readings_in(left),
+            room: self.room(now),
             unconfirmed: last.saturating_sub(self.journal.released().0),
             refused: self.station.refused().saturating_add(self.refused_unrecorded),
             last_refusal: self.last_refusal.map(|(_, refusal)| refusal),
             journal: self.health,
+            gaps: self.station.gaps(),
+            lost: self.station.latest_lost(),
         }
+    }
+
+    /// Readings that surely can still be taken; see [`Journal::readings_in`].
+    fn room(&mut self, now: Millis) -> u32 {
+        let left = self.journal.pages_left().unwrap_or(0).saturating_sub(RESERVED_PAGES);
+        let at = Millis(now.0.saturating_mul(2)).max(LONG_UP);
+        // Within range, since it was read as a reading.
+        let widest = Counts::new(self.widest).unwrap_or_default();
+        self.journal.readings_in(left, at, widest)
     }
 }
 
@@ -428,7 +502,7 @@ fn recorded<'r>(outcome: Result<Seq, Reason>) -> Reply<'r> {
 }
 
 /// What the line says, if there is a study that can take it.
-fn read_line(station: &Station, line: &[u8]) -> Result<crate::counts::Counts, Refusal> {
+fn read_line(station: &Station, line: &[u8]) -> Result<Counts, Refusal> {
     let study = station.study().ok_or(Refusal::NoPlan)?;
     let counts = study.plan().resolution.read(line, study.plan().unit.as_str()).map_err(Refusal::Reading)?;
     if study.moments().n() == Count::MAX {

@@ -12,7 +12,7 @@ use crate::{
     moments::Moments,
     plan::Plan,
     quantity::Count,
-    record::{Event, Seq},
+    record::{Event, Gap, Seq},
     sigma::Tally,
     stopping::{Standing, early::Decision},
 };
@@ -202,12 +202,17 @@ pub struct Station {
     boots: u32,
     refused: u32,
     study: Option<Study>,
+    gaps: u32,
+    /// The gaps, the latest one last.
+    lost: heapless::Vec<Gap, 4>,
+    /// Nobody has seen yet that records are lost.
+    lost_unseen: bool,
 }
 
 impl Station {
     /// The first byte of a stored state, another one whenever its form changes. The first form had none and began with a
     /// 0 or a 1, which no form may take again.
-    const FORMAT: u8 = 2;
+    const FORMAT: u8 = 3;
 
     /// Takes the next record. A number that is not above the last one changes nothing: repeating is harmless.
     pub fn apply(&mut self, seq: Seq, event: &Event) {
@@ -230,12 +235,28 @@ impl Station {
                     study.take_back(*reading);
                 }
             }
+            Event::Lost(gap) => self.lose(*gap),
             Event::Seen => {
+                self.lost_unseen = false;
                 if let Some(study) = &mut self.study {
                     study.seen();
                 }
             }
         }
+    }
+
+    fn lose(&mut self, gap: Gap) {
+        self.gaps = self.gaps.saturating_add(1);
+        self.lost_unseen = true;
+        if self.lost.is_full()
+            && let [first, second, ..] = self.lost.as_mut_slice()
+        {
+            // Together from now on, with what lies between them.
+            *second = Gap { first: first.first.min(second.first), last: first.last.max(second.last) };
+            self.lost.remove(0);
+        }
+        // There is room now.
+        let _ = self.lost.push(gap);
     }
 
     /// Writes the state at the front of `space` and says how much it took; `None` if it does not fit.
@@ -269,6 +290,30 @@ impl Station {
     #[must_use]
     pub fn refused(&self) -> u32 {
         self.refused
+    }
+
+    /// How often records were found that can no longer be read.
+    #[must_use]
+    pub fn gaps(&self) -> u32 {
+        self.gaps
+    }
+
+    /// The latest of these.
+    #[must_use]
+    pub fn latest_lost(&self) -> Option<Gap> {
+        self.lost.last().copied()
+    }
+
+    /// Whether this gap is on record; of more than four, the oldest are remembered together with what lies between them.
+    #[must_use]
+    pub fn knows_lost(&self, gap: Gap) -> bool {
+        self.lost.iter().any(|known| known.holds(gap))
+    }
+
+    /// Whether records are lost and nobody has pressed the button since.
+    #[must_use]
+    pub fn calls_for_lost(&self) -> bool {
+        self.lost_unseen
     }
 
     /// The study: the one under way, or the last one.

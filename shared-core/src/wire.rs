@@ -1,30 +1,35 @@
 //! The link between host and station: the host asks, the station answers, one request at a time.
 //!
 //! ```text
-//! frame = 00 | COBS( version: 1 byte | number: u16 LE | postcard message | CRC-32/ISCSI of all before: u32 LE ) | 00
+//! frame = 00 | COBS( version: 1 byte | number: u32 LE | postcard message | CRC-32/ISCSI of all before: u32 LE ) | 00
 //! ```
 //!
-//! The answer carries the request's number. A frame that fails any check is dropped whole; whoever waits for it asks
+//! The answer carries the request's number. Its upper half is a token that the host draws for each session, so that two
+//! hosts that share a line tell their answers apart; the lower half counts. A frame that fails any check is dropped whole; whoever waits for it asks
 //! again, and asking again never changes anything twice. After an error the next zero byte begins afresh. Messages only
 //! ever grow at their end: postcard numbers them by position, and an unknown one gets [`Reply::Refused`].
 
 use serde::{Deserialize, Serialize};
 
 use crate::{
+    chain::Digest,
     plan::{Fault, Plan},
-    record::{CRC, Millis, Refusal, Seq},
+    record::{CRC, Gap, Millis, Refusal, Seq},
     station::{Held, Progress},
     text::Text,
 };
 
 /// The version of this protocol.
-pub const VERSION: u8 = 1;
+pub const VERSION: u8 = 2;
 
 /// The longest message with its version, number and check sum.
 pub const MESSAGE_MAX: usize = 1024;
 
 /// The longest frame: COBS adds a byte in 254 and one, and a zero stands at either end.
 pub const FRAME_MAX: usize = MESSAGE_MAX + MESSAGE_MAX / 254 + 1 + 2;
+
+/// Version and number.
+const HEAD: usize = 1 + 4;
 
 /// Most bytes of records in one reply: what is left of the message beside its other parts.
 pub const RECORDS_MAX: usize = MESSAGE_MAX - 32;
@@ -86,10 +91,15 @@ pub enum Reply<'a> {
     Status(Status),
     /// To `Load`, `SetClock`: recorded under this number.
     Recorded(Seq),
-    /// To `Records`: whole records, one behind the other, in order; empty if there is none from that number on. If the
-    /// first one's number is not the one asked for, those between are no longer to be had.
-    #[serde(borrow)]
-    Records(&'a [u8]),
+    /// To `Records`: records one behind the other, without a gap. If the first one's number is not the one asked for,
+    /// those between are not to be had; if there are none, none from that number on are.
+    Records {
+        /// The chain's digest before the first of them.
+        before: Digest,
+        /// Whole records, in order.
+        #[serde(borrow)]
+        records: &'a [u8],
+    },
     /// To `Received`, `Blink`.
     Done,
     /// Not done, for this reason.
@@ -107,6 +117,8 @@ pub struct Hello {
     pub next: Seq,
     /// The first record that is still in the journal, or `next`.
     pub oldest: Seq,
+    /// The chain's digest behind the last record.
+    pub head: Digest,
 }
 
 /// How the station and its study stand.
@@ -120,7 +132,8 @@ pub struct Status {
     pub boots: u32,
     /// Since the last start.
     pub up: Millis,
-    /// About so many readings fit into the journal before it must be pulled.
+    /// So many readings at least fit into the journal before it must be pulled, if none is wider than the widest so far
+    /// (six digits at least).
     pub room: u32,
     /// Records that the host has not yet confirmed.
     pub unconfirmed: u32,
@@ -130,6 +143,10 @@ pub struct Status {
     pub last_refusal: Option<Refusal>,
     /// What is wrong with the journal, if anything.
     pub journal: JournalHealth,
+    /// How often records were found that can no longer be read.
+    pub gaps: u32,
+    /// The latest of these.
+    pub lost: Option<Gap>,
 }
 
 /// Whether the journal can take what comes.
@@ -225,12 +242,12 @@ pub enum FrameError {
         /// Its version.
         theirs: u8,
         /// Its number.
-        number: u16,
+        number: u32,
     },
     /// The frame is whole but its message is unknown here.
     Unknown {
         /// Its number.
-        number: u16,
+        number: u32,
     },
     /// The message does not fit [`MESSAGE_MAX`].
     TooLong,
@@ -241,7 +258,7 @@ pub enum FrameError {
 /// # Errors
 /// [`FrameError::TooLong`].
 pub fn encode<'b, T: Serialize>(
-    number: u16,
+    number: u32,
     message: &T,
     out: &'b mut [u8; FRAME_MAX],
 ) -> Result<&'b [u8], FrameError> {
@@ -249,12 +266,12 @@ pub fn encode<'b, T: Serialize>(
     // block moves towards the front.
     const AHEAD: usize = FRAME_MAX - 1 - MESSAGE_MAX;
     let region = out.get_mut(AHEAD..AHEAD + MESSAGE_MAX).ok_or(FrameError::TooLong)?;
-    let (head, body) = region.split_at_mut_checked(3).ok_or(FrameError::TooLong)?;
-    let [low, high] = number.to_le_bytes();
-    head.copy_from_slice(&[VERSION, low, high]);
+    let (head, body) = region.split_first_chunk_mut::<HEAD>().ok_or(FrameError::TooLong)?;
+    let [n0, n1, n2, n3] = number.to_le_bytes();
+    *head = [VERSION, n0, n1, n2, n3];
     let room = body.len() - 4;
     let body = body.get_mut(..room).ok_or(FrameError::TooLong)?;
-    let used = 3 + postcard::to_slice(message, body).map_err(|_| FrameError::TooLong)?.len();
+    let used = HEAD + postcard::to_slice(message, body).map_err(|_| FrameError::TooLong)?.len();
     let sum = CRC.checksum(region.get(..used).ok_or(FrameError::TooLong)?).to_le_bytes();
     region.get_mut(used..used + 4).ok_or(FrameError::TooLong)?.copy_from_slice(&sum);
     cobs_in_place(out, AHEAD, used + 4).ok_or(FrameError::TooLong)
@@ -347,13 +364,13 @@ impl FrameReader {
 ///
 /// # Errors
 /// See [`FrameError`]; the message must fill the frame to its exact end.
-pub fn decode<'a, T: Deserialize<'a>>(frame: &'a [u8]) -> Result<(u16, T), FrameError> {
+pub fn decode<'a, T: Deserialize<'a>>(frame: &'a [u8]) -> Result<(u32, T), FrameError> {
     let (sealed, sum) = frame.split_last_chunk::<4>().ok_or(FrameError::Damaged)?;
     if CRC.checksum(sealed) != u32::from_le_bytes(*sum) {
         return Err(FrameError::Damaged);
     }
-    let ([version, low, high], body) = sealed.split_first_chunk::<3>().ok_or(FrameError::Damaged)?;
-    let number = u16::from_le_bytes([*low, *high]);
+    let ([version, number @ ..], body) = sealed.split_first_chunk::<HEAD>().ok_or(FrameError::Damaged)?;
+    let number = u32::from_le_bytes(*number);
     if *version != VERSION {
         return Err(FrameError::Version { theirs: *version, number });
     }

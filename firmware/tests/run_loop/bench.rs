@@ -207,7 +207,7 @@ pub(crate) struct Bench {
     pub(crate) attention: Wire,
     pub(crate) taken: Wire,
     pub(crate) take_back: Wire,
-    requests: u16,
+    requests: u32,
 }
 
 impl Bench {

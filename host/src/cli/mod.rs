@@ -52,6 +52,9 @@ pub enum Command {
     /// Talk to a station on a serial port
     #[command(subcommand, arg_required_else_help = true)]
     Station(Station),
+    /// Verify what is kept
+    #[command(subcommand, arg_required_else_help = true)]
+    Ledger(Ledger),
     /// A station without hardware: the station's own code, its journal in a folder
     Virtual(Virtual),
     /// Capability of readings, or of a summary, that came from elsewhere
@@ -279,6 +282,24 @@ Examples:
         /// Which one
         #[command(flatten)]
         port: Port,
+    },
+}
+
+/// `donelight ledger …`
+#[derive(Debug, Subcommand)]
+pub enum Ledger {
+    /// Compute everything anew from the stored bytes, and name the first record of each station that does not fit
+    #[command(after_help = "\
+Examples:
+  donelight ledger verify
+  donelight ledger verify --ledger lot7.sqlite --json
+
+Exit code 1 if a record does not fit. The digest of the last record is the one that `donelight report` prints: a ledger
+that was changed as a whole, and not only in part, shows by another digest than a report that was printed before.")]
+    Verify {
+        /// The ledger [default: in the user's data folder]
+        #[arg(long, value_name = "FILE")]
+        ledger: Option<PathBuf>,
     },
 }
 

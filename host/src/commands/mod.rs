@@ -2,6 +2,7 @@
 
 mod assess;
 mod demo;
+mod ledger;
 mod plan;
 mod report;
 mod size;
@@ -20,6 +21,7 @@ pub fn run(command: Command, console: &mut Console) -> Result<Answer, Failure> {
         Command::Size(size) => size::run(&size),
         Command::Plan(plan) => plan::run(&plan, console),
         Command::Station(station) => station::run(&station, console),
+        Command::Ledger(options) => ledger::run(&options),
         Command::Virtual(options) => virtual_station::run(&options, console),
         Command::Assess(options) => assess::run(&options),
         Command::Report(options) => report::run(&options),

@@ -148,13 +148,18 @@ fn origin(kept: &Kept, ledger: &Path) -> Vec<Fact> {
         Fact::new("Plan loaded", time(kept.began)),
     ];
     if let (Some(first), Some(last)) = (kept.readings.first(), kept.readings.last()) {
-        facts.push(Fact::new("First reading", time(first.time)));
-        facts.push(Fact::new("Last reading", time(last.time)));
+        facts.push(Fact::new("First reading", first.bounds.to_string()));
+        facts.push(Fact::new("Last reading", last.bounds.to_string()));
     }
     facts.extend([
         Fact::new("Ledger", path.display().to_string()),
         Fact::new("Records", format!("{} to {}", kept.key.began, kept.through)),
         Fact::new("SHA-256 of the records", kept.fingerprint.clone()),
+        Fact::new(
+            "Chain through the last of them",
+            kept.chain
+                .map_or_else(|| "none: kept before there was a chain".to_owned(), |chain| chain.to_string()),
+        ),
         Fact::new("Last record came into the ledger", kept.last_received.to_string()),
     ]);
     facts
@@ -178,6 +183,10 @@ fn incident(incident: &ledger::Incident) -> Incident {
         Happening::Missing(gap) => (
             Weight::Loss,
             format!("records {} to {} are missing: the station no longer had them", gap.first, gap.last),
+        ),
+        Happening::Unreadable(gap) => (
+            Weight::Note,
+            format!("the station found that it can no longer read records {} to {}", gap.first, gap.last),
         ),
         Happening::UnknownKind => {
             (Weight::Loss, "a record of a kind that this version does not know: update donelight".to_owned())

@@ -14,7 +14,8 @@ use super::LedgerError;
 const APPLICATION_ID: u32 = u32::from_be_bytes(*b"Done");
 
 /// The tables' history: the n-th file leads to version n.
-const MIGRATIONS: [&str; 1] = [include_str!("migrations/0001_records.sql")];
+const MIGRATIONS: [&str; 2] =
+    [include_str!("migrations/0001_records.sql"), include_str!("migrations/0002_chain.sql")];
 
 /// The version that this command writes.
 const VERSION: u32 = MIGRATIONS.len() as u32;
@@ -95,9 +96,10 @@ pub(super) fn open(path: &Path) -> Result<Connection, LedgerError> {
     }
     connection.pragma_update(None, "synchronous", "FULL").map_err(failed)?;
     connection.pragma_update(None, "foreign_keys", "ON").map_err(failed)?;
+    // Before anything is changed.
+    check(path, &connection)?;
     migrate(path, &mut connection, &failed)?;
     write_ahead(&connection).map_err(failed)?;
-    check(path, &connection)?;
     Ok(connection)
 }
 

@@ -2,38 +2,43 @@
 //! reading, by the station's own state machine.
 //!
 //! A window of records is one transaction, synchronised to disk before it is confirmed to the station. A number is
-//! never written twice: the same bytes again change nothing, other bytes are kept aside as a conflict.
+//! never written twice: the same bytes again change nothing, other bytes are kept aside as a conflict. Each record is kept
+//! with the chain's digest behind it, so that [`verify`] finds the first one that does not fit.
 
+mod commit;
 mod error;
 mod file;
 mod replay;
 pub mod studies;
 mod time;
+pub mod verify;
 
 use std::path::{Path, PathBuf};
 
+use donelight_core::chain::Digest;
+pub use donelight_core::record::Gap;
 use donelight_core::record::{Event, Record, Seq};
 use donelight_core::wire::{Hello, StationId};
-use rusqlite::{Connection, OptionalExtension, Transaction, TransactionBehavior, params};
+use rusqlite::{Connection, TransactionBehavior, params};
 
 pub use error::LedgerError;
 pub use studies::{Fate, Happening, Incident, Kept, Reading, SelectError, StudyKey};
-pub use time::{UnixMillis, WallTime};
+pub use time::{Bounds, UnixMillis, WallTime};
 
 /// A station is told the time anew after so long.
 const CLOCK_FRESH_MS: u64 = 12 * 60 * 60 * 1_000;
 
-/// Numbers that a station no longer had when they were asked for.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub struct Gap {
-    /// The first missing number.
-    pub first: Seq,
-    /// The last missing number.
-    pub last: Seq,
-}
-
 /// A verified record: its number and all its bytes.
 pub type Verified<'a> = (Seq, &'a [u8]);
+
+/// Verified records in ascending order, with the chain's digest before the first of them.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Window<'a> {
+    /// Before the first one.
+    pub before: Digest,
+    /// One behind the other, without a gap.
+    pub records: Vec<Verified<'a>>,
+}
 
 /// What came of a window.
 #[derive(Clone, Debug, Default, PartialEq, Eq)]
@@ -44,6 +49,8 @@ pub struct Committed {
     pub gaps: Vec<Gap>,
     /// Numbers under which another record is kept already. Nothing behind the first of them was taken.
     pub conflicts: Vec<Seq>,
+    /// The number from which on the records do not fit the chain that is kept. It and those behind it were not taken.
+    pub misfit: Option<Seq>,
 }
 
 /// An open ledger.
@@ -119,7 +126,15 @@ impl Ledger {
     /// # Errors
     /// See [`LedgerError`].
     pub fn last(&self, station: StationId) -> Result<Seq, LedgerError> {
-        last(&self.connection, station).map_err(|error| LedgerError::sqlite(&self.path, &error))
+        commit::last(&self.connection, station).map_err(|error| LedgerError::sqlite(&self.path, &error))
+    }
+
+    /// The last record of a station that is kept, with the chain's digest behind it.
+    ///
+    /// # Errors
+    /// See [`LedgerError`].
+    pub fn head(&self, station: StationId) -> Result<Option<(Seq, Option<Digest>)>, LedgerError> {
+        commit::head(&self.connection, station).map_err(|error| LedgerError::sqlite(&self.path, &error))
     }
 
     /// Whether the station was told the time since its last boot, and not long ago: its clock may go wrong by some
@@ -146,22 +161,22 @@ impl Ledger {
         told().map_err(|error: rusqlite::Error| LedgerError::sqlite(&self.path, &error))
     }
 
-    /// Takes a window of records, ascending by number, in one transaction; durable when this returns. What lies between
-    /// [`Ledger::last`] and the first one, or between any two, is noted as a gap.
+    /// Takes a window of records in one transaction; durable when this returns. What lies between [`Ledger::last`] and
+    /// the first one is noted as a gap.
     ///
     /// # Errors
     /// See [`LedgerError`]; nothing of the window is kept then.
     pub fn commit(
         &mut self,
         station: StationId,
-        window: &[Verified<'_>],
+        window: &Window<'_>,
         now: UnixMillis,
     ) -> Result<Committed, LedgerError> {
         let path = &self.path;
         let entered = self
             .connection
             .transaction_with_behavior(TransactionBehavior::Immediate)
-            .and_then(|transaction| enter(transaction, station, window, now));
+            .and_then(|transaction| commit::enter(transaction, station, window, now));
         entered.map_err(|error| LedgerError::sqlite(path, &error))
     }
 
@@ -170,75 +185,7 @@ impl Ledger {
     /// # Errors
     /// See [`LedgerError`].
     pub fn note_gap(&mut self, station: StationId, gap: Gap, now: UnixMillis) -> Result<(), LedgerError> {
-        note_gap(&self.connection, station, gap, now).map_err(|error| LedgerError::sqlite(&self.path, &error))
+        commit::note_gap(&self.connection, station, gap, now)
+            .map_err(|error| LedgerError::sqlite(&self.path, &error))
     }
-}
-
-fn last(connection: &Connection, station: StationId) -> rusqlite::Result<Seq> {
-    let mut query = connection.prepare_cached(
-        "SELECT max(ifnull((SELECT max(seq) FROM records WHERE station = ?1), 0),
-                    ifnull((SELECT max(last) FROM gaps WHERE station = ?1), 0))",
-    )?;
-    query.query_row([station.0], |row| row.get(0)).map(Seq)
-}
-
-fn note_gap(connection: &Connection, station: StationId, gap: Gap, now: UnixMillis) -> rusqlite::Result<()> {
-    let mut insert = connection.prepare_cached(
-        "INSERT INTO gaps (station, first, last, noticed_ms) VALUES (?1, ?2, ?3, ?4)
-         ON CONFLICT (station, first) DO UPDATE SET last = max(last, excluded.last)",
-    )?;
-    insert.execute(params![station.0, gap.first.0, gap.last.0, now.0]).map(|_| ())
-}
-
-fn enter(
-    transaction: Transaction<'_>,
-    station: StationId,
-    window: &[Verified<'_>],
-    now: UnixMillis,
-) -> rusqlite::Result<Committed> {
-    let mut committed = Committed::default();
-    let mut settled = last(&transaction, station)?;
-    {
-        let mut known =
-            transaction.prepare_cached("SELECT bytes FROM records WHERE station = ?1 AND seq = ?2")?;
-        let mut insert = transaction.prepare_cached(
-            "INSERT INTO records (station, seq, bytes, received_ms) VALUES (?1, ?2, ?3, ?4)",
-        )?;
-        for (seq, bytes) in window {
-            if *seq <= settled {
-                let kept: Option<Vec<u8>> =
-                    known.query_row(params![station.0, seq.0], |row| row.get(0)).optional()?;
-                match kept {
-                    Some(kept) if kept == *bytes => continue,
-                    Some(_) => {
-                        note_conflict(&transaction, station, (*seq, bytes), now)?;
-                        committed.conflicts.push(*seq);
-                        break;
-                    }
-                    None => {}
-                }
-            } else if *seq > settled.next() {
-                let gap = Gap { first: settled.next(), last: Seq(seq.0 - 1) };
-                note_gap(&transaction, station, gap, now)?;
-                committed.gaps.push(gap);
-            }
-            insert.execute(params![station.0, seq.0, bytes, now.0])?;
-            committed.new += 1;
-            settled = settled.max(*seq);
-        }
-    }
-    transaction.commit()?;
-    Ok(committed)
-}
-
-fn note_conflict(
-    connection: &Connection,
-    station: StationId,
-    (seq, bytes): Verified<'_>,
-    now: UnixMillis,
-) -> rusqlite::Result<()> {
-    let mut insert = connection.prepare_cached(
-        "INSERT OR IGNORE INTO conflicts (station, seq, bytes, noticed_ms) VALUES (?1, ?2, ?3, ?4)",
-    )?;
-    insert.execute(params![station.0, seq.0, bytes, now.0]).map(|_| ())
 }

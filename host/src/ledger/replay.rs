@@ -1,13 +1,13 @@
 //! From a station's records to its studies, through the station's own state machine.
 
-use donelight_core::record::{Event, Millis, Record, Sealed, Seq};
+use donelight_core::record::{Event, Millis, Record, Seq};
 use donelight_core::station::{Held, Progress, Station};
 use donelight_core::wire::StationId;
 
 use sha2::{Digest, Sha256};
 
-use super::studies::{Fate, Happening, Incident, Kept, Reading, StudyKey};
-use super::{Gap, UnixMillis, WallTime};
+use super::studies::{Fate, Happening, Incident, Kept, Reading, Row, StudyKey};
+use super::{Bounds, Gap, UnixMillis, WallTime};
 
 /// Takes a station's records in order.
 pub(super) struct Replay {
@@ -46,7 +46,8 @@ impl Replay {
     }
 
     /// The next record; those between the last one and this one are missing.
-    pub(super) fn take(&mut self, received: UnixMillis, seq: Seq, sealed: Sealed<'_>) {
+    pub(super) fn take(&mut self, row: Row<'_>) {
+        let Row { received, seq, sealed, chain } = row;
         self.missing_until(seq);
         self.next = seq.next();
         match sealed.record() {
@@ -57,6 +58,7 @@ impl Replay {
             kept.study = study.clone();
             kept.last_received = received;
             kept.through = seq;
+            kept.chain = chain;
             self.fingerprint.update(sealed.bytes());
         }
     }
@@ -66,7 +68,7 @@ impl Replay {
         if seq > self.next {
             let gap = Gap { first: self.next, last: Seq(seq.0 - 1) };
             self.note(gap.first, None, Happening::Missing(gap));
-            self.time.restart(seq);
+            self.time.gap(seq);
             self.next = seq;
         }
     }
@@ -76,9 +78,12 @@ impl Replay {
         let before = self.progress();
         let held_before = self.held();
         self.station.apply(seq, &event);
+        if let Event::Boot { .. } = event {
+            self.time.restart(seq);
+        }
+        self.time.record(seq, at);
         match event {
             Event::Boot { boot } => {
-                self.time.restart(seq);
                 self.note(seq, Some(at), Happening::Restarted { boot });
             }
             Event::Plan(_) => self.begin(received, seq, at),
@@ -89,7 +94,8 @@ impl Replay {
                     _ => Fate::Counted,
                 };
                 if let Some((kept, times)) = self.latest() {
-                    kept.readings.push(Reading { seq, time: None, counts, fate });
+                    let bounds = Bounds::default();
+                    kept.readings.push(Reading { seq, time: None, bounds, counts, fate });
                     times.readings.push(at);
                 }
             }
@@ -98,6 +104,7 @@ impl Replay {
             }
             Event::TakenBack(reading) => self.take_back(seq, at, reading, before),
             Event::Seen => self.note(seq, Some(at), Happening::Seen),
+            Event::Lost(gap) => self.note(seq, Some(at), Happening::Unreadable(gap)),
             _ => self.note(seq, Some(at), Happening::UnknownKind),
         }
         if let (None, Some(held)) = (held_before, self.held()) {
@@ -119,6 +126,7 @@ impl Replay {
             last_received: received,
             through: seq,
             fingerprint: String::new(),
+            chain: None,
         });
         self.times.push(Times { began: at, ..Times::default() });
     }
@@ -164,21 +172,19 @@ impl Replay {
     }
 
     /// Gives the studies with their wall times; `conflicts` are numbers with a second, differing record.
-    pub(super) fn finish(mut self, conflicts: &[u32]) -> Vec<Kept> {
+    pub(super) fn finish(mut self, conflicts: &[Seq]) -> Vec<Kept> {
         self.close();
         for (kept, times) in self.studies.iter_mut().zip(&self.times) {
             let of = |seq, at: Millis| self.time.of(seq, at);
             kept.began = of(kept.key.began, times.began);
             for (reading, at) in kept.readings.iter_mut().zip(&times.readings) {
                 reading.time = of(reading.seq, *at);
+                reading.bounds = self.time.bounds(reading.seq, *at);
             }
             for (incident, at) in kept.incidents.iter_mut().zip(&times.incidents) {
                 incident.time = at.and_then(|at| of(incident.seq, at));
             }
-            let here = conflicts
-                .iter()
-                .map(|seq| Seq(*seq))
-                .filter(|seq| (kept.key.began..=kept.through).contains(seq));
+            let here = conflicts.iter().copied().filter(|seq| (kept.key.began..=kept.through).contains(seq));
             let here: Vec<Incident> =
                 here.map(|seq| Incident { seq, time: None, what: Happening::Conflict }).collect();
             kept.incidents.extend(here);

@@ -2,14 +2,15 @@
 
 use std::fmt;
 
+use donelight_core::chain::Digest;
 use donelight_core::counts::Counts;
 use donelight_core::record::{DecodeError, Refusal, Sealed, Seq};
 use donelight_core::station::{Held, Study};
 use donelight_core::wire::StationId;
-use rusqlite::{Params, Row};
+use rusqlite::Params;
 
 use super::replay::Replay;
-use super::{Gap, Ledger, LedgerError, UnixMillis};
+use super::{Bounds, Gap, Ledger, LedgerError, UnixMillis};
 use crate::output::Explain;
 
 /// Which study: the station, and the record that began it. Written `0123456789abcdef:17`.
@@ -43,8 +44,10 @@ pub enum Fate {
 pub struct Reading {
     /// Its record.
     pub seq: Seq,
-    /// When, if the station's clock was set.
+    /// When, if the station's clock was set in the same run.
     pub time: Option<UnixMillis>,
+    /// Between which times, as far as other runs tell; equal to `time` where that is known.
+    pub bounds: Bounds,
     /// Its value, in counts of the plan's resolution.
     pub counts: Counts,
     /// What became of it.
@@ -85,6 +88,8 @@ pub enum Happening {
     },
     /// Records are missing: the station no longer had them. Readings may be among them.
     Missing(Gap),
+    /// The station found that it can no longer read these. The ledger may have them from before.
+    Unreadable(Gap),
     /// A record of a newer kind, which this version cannot read.
     UnknownKind,
     /// The station once gave another record under this number; both are kept, this study is told by the first.
@@ -114,6 +119,16 @@ pub struct Kept {
     pub through: Seq,
     /// SHA-256 of all its records' bytes one behind the other, from the plan's on, in hexadecimal.
     pub fingerprint: String,
+    /// The chain's digest behind record `through`; `None` if it was kept before there was a chain.
+    pub chain: Option<Digest>,
+}
+
+/// A record of the ledger.
+pub(super) struct Row<'a> {
+    pub(super) received: UnixMillis,
+    pub(super) seq: Seq,
+    pub(super) sealed: Sealed<'a>,
+    pub(super) chain: Option<Digest>,
 }
 
 /// Why there is no one study to give.
@@ -222,27 +237,20 @@ impl Ledger {
 
     fn studies_of(&self, station: StationId, firmware: &str) -> Result<Vec<Kept>, LedgerError> {
         let mut replay = Replay::new(station, firmware);
-        self.visit(station, |received, seq, sealed| replay.take(received, seq, sealed))?;
+        self.visit(station, |row| replay.take(row))?;
         let last = self.last(station)?;
         replay.missing_until(last.next());
-        let conflicts: Vec<u32> = self.rows(
-            "SELECT DISTINCT seq FROM conflicts WHERE station = ?1 ORDER BY seq",
-            [station.0],
-            |row| row.get(0),
-        )?;
-        Ok(replay.finish(&conflicts))
+        Ok(replay.finish(&self.conflicts(station)?))
     }
 
     /// Shows all records of a station in order; each has its check sum verified.
-    fn visit(
-        &self,
-        station: StationId,
-        mut visitor: impl FnMut(UnixMillis, Seq, Sealed<'_>),
-    ) -> Result<(), LedgerError> {
+    fn visit(&self, station: StationId, mut visitor: impl FnMut(Row<'_>)) -> Result<(), LedgerError> {
         let failed = |error: rusqlite::Error| LedgerError::sqlite(self.path(), &error);
         let mut query = self
             .connection
-            .prepare_cached("SELECT seq, bytes, received_ms FROM records WHERE station = ?1 ORDER BY seq")
+            .prepare_cached(
+                "SELECT seq, bytes, received_ms, digest FROM records WHERE station = ?1 ORDER BY seq",
+            )
             .map_err(failed)?;
         let mut rows = query.query([station.0]).map_err(failed)?;
         while let Some(row) = rows.next().map_err(failed)? {
@@ -255,16 +263,17 @@ impl Ledger {
             if sealed.seq() != Some(seq) || !rest.is_empty() {
                 return Err(damaged(DecodeError::CheckSum));
             }
-            visitor(received, seq, sealed);
+            let chain = row.get::<_, Option<_>>(3).map_err(failed)?.map(Digest);
+            visitor(Row { received, seq, sealed, chain });
         }
         Ok(())
     }
 
-    fn rows<T>(
+    pub(super) fn rows<T>(
         &self,
         sql: &str,
         parameters: impl Params,
-        read: impl FnMut(&Row<'_>) -> rusqlite::Result<T>,
+        read: impl FnMut(&rusqlite::Row<'_>) -> rusqlite::Result<T>,
     ) -> Result<Vec<T>, LedgerError> {
         let query =
             || self.connection.prepare(sql)?.query_map(parameters, read)?.collect::<Result<Vec<T>, _>>();

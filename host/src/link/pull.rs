@@ -2,13 +2,15 @@
 //!
 //! A window of records is verified, committed, and only then confirmed to the station. Whatever breaks off in between
 //! leaves the ledger with whole windows, and the next pull goes on behind the last of them. The last known record is
-//! asked for once more, to see that the station is still the one that the ledger knows.
+//! asked for once more, to see that the station is still the one that the ledger knows, and that its chain is the one that
+//! the ledger keeps.
 
+use donelight_core::chain::Digest;
 use donelight_core::record::{DecodeError, Sealed, Seq};
 use donelight_core::wire::{Hello, Reason, StationId};
 
 use super::{LinkError, Session, Transport};
-use crate::ledger::{Gap, Ledger, LedgerError, UnixMillis, Verified};
+use crate::ledger::{Gap, Ledger, LedgerError, UnixMillis, Window};
 use crate::output::Explain;
 
 /// How often a window that does not verify is asked for.
@@ -77,6 +79,16 @@ pub enum Cause {
         /// The number.
         seq: Seq,
     },
+    /// A record does not fit the chain.
+    #[error(
+        "record {seq} of station {station} does not fit the chain of the records before it in the ledger"
+    )]
+    Misfit {
+        /// Which.
+        station: StationId,
+        /// The first one that does not fit.
+        seq: Seq,
+    },
     /// A record arrived that does not verify, however often it was asked for.
     #[error("record {behind} is followed by one that does not verify: {reason}")]
     Unverified {
@@ -108,6 +120,7 @@ impl Explain for PullError {
             Cause::Ledger(error) => error.kind(),
             Cause::BegunAgain { .. } => "station-begun-again",
             Cause::Conflict { .. } => "record-conflict",
+            Cause::Misfit { .. } => "chain-broken",
             Cause::Unverified { .. } | Cause::Disorder { .. } => "records-damaged",
         }
     }
@@ -124,6 +137,11 @@ impl Explain for PullError {
             Cause::Conflict { .. } => {
                 "Both are kept. The station's flash was erased meanwhile, or another station has taken its number. Pull \
                  it into a ledger of its own: --ledger FILE."
+                    .to_owned()
+            }
+            Cause::Misfit { .. } => {
+                "It was not taken, and the station keeps it. `donelight ledger verify` tells if the ledger was changed; if \
+                 it was not, the station's records were. Pull it into a ledger of its own: --ledger FILE."
                     .to_owned()
             }
             Cause::Unverified { .. } | Cause::Disorder { .. } => {
@@ -197,9 +215,9 @@ fn up_to<T: Transport>(
     }
     let mut from = begin.max(Seq::FIRST);
     while from < next {
-        let bytes = window(session, from)?;
-        let records = verify(&bytes, from).map_err(|fault| fault.at(kept.through))?;
-        if records.is_empty() {
+        let (before, bytes) = window(session, from)?;
+        let window = verify(before, &bytes, from).map_err(|fault| fault.at(kept.through))?;
+        if window.records.is_empty() {
             // The last pages cannot be read: what is left of the numbers is not to be had.
             let gap = Gap { first: ledger.last(station)?.next(), last: Seq(next.0 - 1) };
             if gap.first <= gap.last {
@@ -207,11 +225,14 @@ fn up_to<T: Transport>(
                 kept.gaps.push(gap);
             }
         } else {
-            let committed = ledger.commit(station, &records, UnixMillis::now())?;
+            let committed = ledger.commit(station, &window, UnixMillis::now())?;
             kept.new += committed.new;
             kept.gaps.extend(committed.gaps);
             if let Some(seq) = committed.conflicts.first() {
                 return Err(Cause::Conflict { station, seq: *seq });
+            }
+            if let Some(seq) = committed.misfit {
+                return Err(Cause::Misfit { station, seq });
             }
         }
         kept.through = ledger.last(station)?;
@@ -220,7 +241,13 @@ fn up_to<T: Transport>(
         let done = kept.through.0.min(next.0 - 1).saturating_sub(begin.0);
         progress(Progress { done, total: next.0 - 1 - begin.0 });
     }
-    Ok(())
+    // The whole chain once more, by its end.
+    match ledger.head(station)? {
+        Some((seq, Some(digest))) if seq.next() == next && digest != hello.head => {
+            Err(Cause::Misfit { station, seq })
+        }
+        _ => Ok(()),
+    }
 }
 
 /// Why a window does not verify.
@@ -240,27 +267,30 @@ impl Fault {
 }
 
 /// A window that verifies, or the last of several that do not. An empty one is asked for again as well.
-fn window<T: Transport>(session: &mut Session<T>, from: Seq) -> Result<Vec<u8>, Cause> {
-    let mut bytes = Vec::new();
-    for _ in 0..ATTEMPTS {
-        bytes = session.records(from)?.to_vec();
-        if verify(&bytes, from).is_ok_and(|records| !records.is_empty()) {
-            break;
+fn window<T: Transport>(session: &mut Session<T>, from: Seq) -> Result<(Digest, Vec<u8>), Cause> {
+    let mut attempt = 1;
+    loop {
+        let (before, bytes) = session.records(from)?;
+        let bytes = bytes.to_vec();
+        if attempt == ATTEMPTS || verify(before, &bytes, from).is_ok_and(|window| !window.records.is_empty())
+        {
+            return Ok((before, bytes));
         }
+        attempt += 1;
     }
-    Ok(bytes)
 }
 
-/// Splits a window into records: each sealed, numbered from `from` on, ascending, to the exact end.
-fn verify(mut bytes: &[u8], from: Seq) -> Result<Vec<Verified<'_>>, Fault> {
+/// Splits a window into records: each sealed, the first numbered `from` or above, one behind the other, to the exact end.
+fn verify(before: Digest, mut bytes: &[u8], from: Seq) -> Result<Window<'_>, Fault> {
     let mut records = Vec::new();
-    let mut least = from;
+    let mut due = None;
     while !bytes.is_empty() {
         let (sealed, rest) = Sealed::split(bytes).map_err(Fault::Record)?;
-        let seq = sealed.seq().filter(|seq| *seq >= least).ok_or(Fault::Order)?;
+        let in_order = |seq: &Seq| due.map_or(*seq >= from, |due| *seq == due);
+        let seq = sealed.seq().filter(in_order).ok_or(Fault::Order)?;
         records.push((seq, sealed.bytes()));
-        least = seq.next();
+        due = Some(seq.next());
         bytes = rest;
     }
-    Ok(records)
+    Ok(Window { before, records })
 }

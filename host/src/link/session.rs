@@ -4,6 +4,7 @@ use std::hash::{BuildHasher, Hasher, RandomState};
 use std::io::{self, ErrorKind};
 use std::time::{Duration, Instant};
 
+use donelight_core::chain::Digest;
 use donelight_core::plan::Plan;
 use donelight_core::record::Seq;
 use donelight_core::wire::{self, FRAME_MAX, FrameError, FrameReader, Hello, Reply, Request, Status};
@@ -36,7 +37,7 @@ pub struct Session<T> {
     patience: Patience,
     /// It has said hello.
     met: bool,
-    number: u16,
+    number: u32,
     reader: FrameReader,
     /// The frame to send.
     frame: Box<[u8; FRAME_MAX]>,
@@ -58,13 +59,14 @@ impl<T: Transport> Session<T> {
     /// # Errors
     /// See [`LinkError`].
     pub fn open_with(transport: T, first: Patience, later: Patience) -> Result<(Self, Hello), LinkError> {
-        // Answers to an earlier program may still be on their way: begin with a number that it hardly used.
-        let [low, high, ..] = RandomState::new().build_hasher().finish().to_le_bytes();
+        // The token of this session, and a first number: answers to other programs may be on their way, and no other
+        // session hardly ever uses these.
+        let [n0, n1, n2, n3, ..] = RandomState::new().build_hasher().finish().to_le_bytes();
         let mut session = Self {
             transport,
             patience: first,
             met: false,
-            number: u16::from_le_bytes([low, high]),
+            number: u32::from_le_bytes([n0, n1, n2, n3]),
             reader: FrameReader::default(),
             frame: Box::new([0; FRAME_MAX]),
             answer: Vec::new(),
@@ -108,13 +110,14 @@ impl<T: Transport> Session<T> {
         }
     }
 
-    /// The bytes of whole records from number `from` on, as many as fit a frame; empty if there is none.
+    /// The bytes of whole records from number `from` on, as many as fit a frame, with the chain's digest before the first
+    /// of them; empty if there is none.
     ///
     /// # Errors
     /// See [`LinkError`].
-    pub fn records(&mut self, from: Seq) -> Result<&[u8], LinkError> {
+    pub fn records(&mut self, from: Seq) -> Result<(Digest, &[u8]), LinkError> {
         match self.ask(|| Request::Records { from })? {
-            Reply::Records(bytes) => Ok(bytes),
+            Reply::Records { before, records } => Ok((before, records)),
             other => Err(unexpected(&other)),
         }
     }
@@ -159,7 +162,8 @@ impl<T: Transport> Session<T> {
 
     /// Sends the request until its answer comes or patience ends. `request` is called at every attempt.
     fn ask(&mut self, request: impl Fn() -> Request) -> Result<Reply<'_>, LinkError> {
-        self.number = self.number.wrapping_add(1);
+        let (token, count) = (self.number & !0xffff, self.number.wrapping_add(1) & 0xffff);
+        self.number = token | count;
         let began = self.transport.now();
         let end = began + self.patience.give_up_after;
         let mut heard = 0;
@@ -235,7 +239,7 @@ impl<T: Transport> Session<T> {
 }
 
 /// Whether the frame is whole and is the answer to this request; another version may number otherwise.
-fn answers(frame: &[u8], request: u16) -> bool {
+fn answers(frame: &[u8], request: u32) -> bool {
     match wire::decode::<Reply<'_>>(frame) {
         Ok((number, _)) | Err(FrameError::Unknown { number }) => number == request,
         Err(FrameError::Version { .. }) => true,

@@ -32,27 +32,47 @@ use crate::output::Explain;
 /// [`VirtualStation::step`] wants to be called again after so long at the latest.
 pub const TICK_MS: u64 = 10;
 
-/// Why a virtual station does not start.
+/// Why a virtual station does not start. The file of its flash is left as it is.
 #[derive(Debug, thiserror::Error)]
-#[error("the station's journal cannot be read: {0}")]
-pub struct StartError(FlashError);
+pub enum StartError {
+    /// The flash cannot be read.
+    #[error("the station's journal cannot be read: {0}")]
+    Flash(FlashError),
+    /// It holds a journal of another format.
+    #[error("the station's journal has format {found}, which this version does not know")]
+    Format {
+        /// Its format.
+        found: u8,
+    },
+}
 
 impl From<OpenError<FlashError>> for StartError {
     fn from(error: OpenError<FlashError>) -> Self {
         match error {
-            OpenError::Flash(fault) => Self(fault),
-            OpenError::Geometry => Self(NorFlashErrorKind::OutOfBounds.into()),
+            OpenError::Flash(fault) => Self::Flash(fault),
+            OpenError::Geometry => Self::Flash(NorFlashErrorKind::OutOfBounds.into()),
+            OpenError::Format { found } => Self::Format { found },
         }
     }
 }
 
 impl Explain for StartError {
     fn kind(&self) -> &'static str {
-        "store-access"
+        match self {
+            Self::Flash(_) => "store-access",
+            Self::Format { .. } => "store-other-format",
+        }
     }
 
     fn help(&self) -> String {
-        "Check the disk that the --store lies on; the file is left as it is.".to_owned()
+        match self {
+            Self::Flash(_) => "Check the disk that the --store lies on; the file is left as it is.",
+            Self::Format { .. } => {
+                "Pull it with the version of donelight that wrote it, then go on with a new --store. The file is left as \
+                 it is."
+            }
+        }
+        .to_owned()
     }
 }
 

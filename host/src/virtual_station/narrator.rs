@@ -7,7 +7,7 @@ use std::fmt;
 use std::ops::ControlFlow;
 
 use donelight_core::lamps::Call;
-use donelight_core::record::{Event, Millis, Record, Refusal, Seq};
+use donelight_core::record::{Event, Gap, Millis, Record, Refusal, Seq};
 use donelight_core::recorder::Recorder;
 use donelight_core::station::{Held, Station, Study};
 use donelight_core::stopping::Standing;
@@ -22,6 +22,8 @@ pub enum Attention {
     GaugeStuck,
     /// Nothing can be recorded.
     Journal,
+    /// Records can no longer be read.
+    Lost,
     /// The plan's limit is reached without the precision.
     Spent,
     /// The journal will soon be full.
@@ -76,6 +78,13 @@ pub enum News {
         /// How often.
         times: u16,
     },
+    /// Records can no longer be read.
+    Lost {
+        /// The record that says so.
+        seq: Seq,
+        /// Their numbers.
+        gap: Gap,
+    },
     /// The clock was set.
     Clock {
         /// The record.
@@ -112,6 +121,9 @@ impl News {
             Self::Refused { seq, reason, times } => {
                 json!({ "event": "refused", "seq": seq, "reason": reason.to_string(), "times": times })
             }
+            Self::Lost { seq, gap } => {
+                json!({ "event": "lost", "seq": seq, "first": gap.first, "last": gap.last })
+            }
             Self::Clock { seq, unix_ms } => json!({ "event": "clock", "seq": seq, "unix_ms": unix_ms }),
             Self::Done { lit, n } => json!({ "event": "lamp", "lamp": "done", "lit": lit, "n": n }),
             Self::Attention(reason) => json!({
@@ -128,6 +140,7 @@ impl fmt::Display for Attention {
         f.write_str(match self {
             Self::GaugeStuck => "the gauge repeats itself; look at it, then press seen",
             Self::Journal => "nothing can be recorded; pull the log, or mend the disk and start again",
+            Self::Lost => "records can no longer be read; pull the log, then press seen",
             Self::Spent => "the plan's limit is reached without the wanted precision",
             Self::Pull => "the journal will soon be full; pull the log",
         })
@@ -149,6 +162,9 @@ impl fmt::Display for News {
             Self::Seen { .. } => f.write_str("seen"),
             Self::Refused { reason, times: 1, .. } => write!(f, "refused: {reason}"),
             Self::Refused { reason, times, .. } => write!(f, "refused {times} times: {reason}"),
+            Self::Lost { gap, .. } => {
+                write!(f, "records {} to {} can no longer be read", gap.first, gap.last)
+            }
             Self::Clock { .. } => f.write_str("clock set"),
             Self::Done { lit: true, n } => write!(f, "done lamp lit at piece {n}"),
             Self::Done { lit: false, .. } => f.write_str("done lamp dark"),
@@ -212,6 +228,7 @@ impl Narrator {
                 Some(Attention::GaugeStuck)
             }
             Some(Call::Act) => Some(Attention::Journal),
+            Some(Call::Lost) => Some(Attention::Lost),
             Some(Call::Spent) => Some(Attention::Spent),
             Some(Call::Pull) => Some(Attention::Pull),
             // Told by its record; it hides what lasts for a second only.
@@ -257,6 +274,7 @@ impl Narrator {
             Event::TakenBack(_) => News::TakenBack { seq, n },
             Event::Seen => News::Seen { seq },
             Event::Refused { reason, times } => News::Refused { seq, reason: *reason, times: *times },
+            Event::Lost(gap) => News::Lost { seq, gap: *gap },
             Event::Clock { unix_ms } => News::Clock { seq, unix_ms: *unix_ms },
             _ => return None,
         })

@@ -31,12 +31,12 @@ fn the_demos_answer_agrees_with_the_report_on_its_ledger_bit_for_bit() {
         assert_eq!(demo[what], report[what], "{what}");
     }
     assert_eq!(demo["standing"], "settled");
-    assert_eq!(demo["refused"], 1);
+    assert_eq!(demo["refused"], 2);
     assert_eq!(demo["power_cut"]["before"], demo["power_cut"]["after"]);
     let page = fs::read_to_string(here.path().join(demo["report"].as_str().unwrap())).unwrap();
     assert!(page.contains("Tower clock arbors"));
     let whats: Vec<_> = report["incidents"].as_array().unwrap().iter().map(|i| &i["what"]).collect();
-    assert_eq!(whats.len(), 2, "the refused line and the restart: {whats:?}");
+    assert_eq!(whats.len(), 3, "the refused line, the restart and the write cut off: {whats:?}");
 }
 
 #[test]

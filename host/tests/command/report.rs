@@ -3,8 +3,9 @@
 use std::fs;
 use std::path::Path;
 
-use donelight::ledger::{Ledger, UnixMillis};
+use donelight::ledger::{Ledger, UnixMillis, Window};
 use donelight::plan_file;
+use donelight_core::chain::Digest;
 use donelight_core::counts::Counts;
 use donelight_core::record::{Event, Millis, RECORD_MAX, Record, Refusal, Seq};
 use donelight_core::text::Text;
@@ -24,14 +25,18 @@ fn reading(i: i64) -> Counts {
 fn keep(path: &Path, events: &[Event]) {
     let mut ledger = Ledger::open(Some(path)).unwrap();
     let next = Seq(u32::try_from(events.len()).unwrap() + 1);
-    let hello = Hello { station: STATION, firmware: Text::new("test 0").unwrap(), next, oldest: Seq::FIRST };
+    let mut before = Digest::origin(STATION);
+    let firmware = Text::new("test 0").unwrap();
+    let hello = Hello { station: STATION, firmware, next, oldest: Seq::FIRST, head: before };
     ledger.meet(&hello, UnixMillis(1_767_600_000_000)).unwrap();
     let mut seq = Seq::FIRST;
     for (i, event) in events.iter().enumerate() {
         let mut buffer = [0; RECORD_MAX];
         let record = Record { seq, at: Millis(i as u64 * 1000), event: event.clone() };
         let bytes = record.encode(&mut buffer).unwrap();
-        ledger.commit(STATION, &[(seq, bytes)], UnixMillis(1_767_600_000_000)).unwrap();
+        let window = Window { before, records: vec![(seq, bytes)] };
+        ledger.commit(STATION, &window, UnixMillis(1_767_600_000_000)).unwrap();
+        before = before.then(bytes);
         seq = seq.next();
     }
 }

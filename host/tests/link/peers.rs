@@ -29,8 +29,9 @@ impl Peer {
     }
 
     /// The frame of `wire`'s description, made without its code.
-    fn answer(&self, number: [u8; 2]) -> Vec<u8> {
-        let mut message = vec![self.version, number[0], number[1]];
+    fn answer(&self, number: [u8; 4]) -> Vec<u8> {
+        let mut message = vec![self.version];
+        message.extend(number);
         message.extend(&self.message);
         let sum = crc::Crc::<u32>::new(&crc::CRC_32_ISCSI).checksum(&message);
         message.extend(sum.to_le_bytes());
@@ -63,7 +64,7 @@ impl Write for Peer {
     fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
         for byte in bytes {
             if let Some(frame) = self.frames.push(*byte) {
-                let number = [frame[1], frame[2]];
+                let number = [frame[1], frame[2], frame[3], frame[4]];
                 self.outbox = self.answer(number);
             }
         }
@@ -116,7 +117,7 @@ fn an_answer_to_another_request_is_passed_over() {
         fn write(&mut self, bytes: &[u8]) -> io::Result<usize> {
             for byte in bytes {
                 if let Some(frame) = self.0.frames.push(*byte) {
-                    let number = u16::from_le_bytes([frame[1], frame[2]]).wrapping_sub(1);
+                    let number = u32::from_le_bytes([frame[1], frame[2], frame[3], frame[4]]).wrapping_sub(1);
                     self.0.outbox = self.0.answer(number.to_le_bytes());
                 }
             }

@@ -2,12 +2,13 @@
 
 use std::path::{Path, PathBuf};
 
-use donelight::ledger::Ledger;
+use donelight::ledger::{Ledger, Window};
 use donelight::link::memory::MemoryLink;
 use donelight::link::pull::{Pulled, pull};
 use donelight::link::{LinkError, Session};
 use donelight::virtual_station::flash::RamFlash;
 use donelight_core::capability::Index;
+use donelight_core::chain::Digest;
 use donelight_core::interval::Kind;
 use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
@@ -120,4 +121,11 @@ pub(crate) fn rows(path: &Path) -> Vec<(u32, Vec<u8>)> {
         connection.prepare("SELECT seq, bytes FROM records WHERE station = ?1 ORDER BY seq").unwrap();
     let rows = query.query_map([STATION.0], |row| Ok((row.get(0)?, row.get(1)?))).unwrap();
     rows.map(Result::unwrap).collect()
+}
+
+/// These of all of [`STATION`]'s records, as a window.
+pub(crate) fn window(all: &[(u32, Vec<u8>)], part: std::ops::Range<usize>) -> Window<'_> {
+    let before =
+        all[..part.start].iter().fold(Digest::origin(STATION), |digest, (_, bytes)| digest.then(bytes));
+    Window { before, records: all[part].iter().map(|(seq, bytes)| (Seq(*seq), bytes.as_slice())).collect() }
 }

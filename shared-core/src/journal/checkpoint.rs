@@ -1,24 +1,39 @@
-//! Checkpoints: what must survive when the records that led to it are erased.
+//! Checkpoints: what must survive when the records that led to it are erased, written before every erase.
 //!
 //! Two sectors take turns. Each holds slots that are filled one after the other; when one sector is full the other is
 //! erased, so a valid checkpoint exists at every moment after the first. The highest number wins.
 //!
 //! ```text
-//! | "DC" | format: 1 | 0xFF | number: u32 | released: u32 | next: u32 | length: u16 | state … | CRC-32 of all before: u32 |
+//! | "DC" | format: 2 | 0xFF | number: u32 | released: u32 | next: u32 | digest: 16 bytes | erased page: u32
+//! | length: u16 | state … | CRC-32 of all before: u32 | blank … | done: 0xFF, or 0 once that sector is erased |
 //! ```
 
 use embedded_storage::nor_flash::NorFlash;
 
+use super::page::PageNumber;
+use crate::chain::Digest;
 use crate::record::{CRC, Seq};
 
 /// Bytes of a slot.
 pub(super) const SLOT: usize = 512;
 const SLOT_U32: u32 = 512;
-const HEADER: usize = 18;
+const HEADER: usize = 4 + 4 + 4 + 4 + Digest::BYTES + 4 + 2;
 const SUM: usize = 4;
-const MAGIC: [u8; 4] = *b"DC\x01\xff";
+const DONE: usize = 1;
+const MAGIC: [u8; 4] = *b"DC\x02\xff";
 /// The most that a state may take.
-pub const STATE_MAX: usize = SLOT - HEADER - SUM;
+pub const STATE_MAX: usize = SLOT - HEADER - SUM - DONE;
+
+/// How the journal stands, beside the station's state.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(super) struct Marks {
+    pub(super) released: Seq,
+    pub(super) next: Seq,
+    /// Behind the record before `next`.
+    pub(super) digest: Digest,
+    /// The first page of the sector that is to be erased.
+    pub(super) erasing: PageNumber,
+}
 
 /// The place of the latest checkpoint, and of the next one.
 #[derive(Debug)]
@@ -35,8 +50,9 @@ pub(super) struct Checkpoints {
 pub(super) struct Found {
     slot: u32,
     number: u32,
-    pub(super) released: Seq,
-    pub(super) next: Seq,
+    pub(super) marks: Marks,
+    /// The sector that was to be erased is.
+    pub(super) done: bool,
     length: usize,
 }
 
@@ -51,15 +67,25 @@ fn check(slot: &Slot, index: u32) -> Option<Found> {
     let (number, rest) = rest.split_first_chunk::<4>()?;
     let (released, rest) = rest.split_first_chunk::<4>()?;
     let (next, rest) = rest.split_first_chunk::<4>()?;
+    let (digest, rest) = rest.split_first_chunk::<{ Digest::BYTES }>()?;
+    let (erasing, rest) = rest.split_first_chunk::<4>()?;
     let (length, _) = rest.split_first_chunk::<2>()?;
     let length = usize::from(u16::from_le_bytes(*length));
+    if length > STATE_MAX {
+        return None;
+    }
     let (sealed, rest) = slot.split_at_checked(HEADER + length)?;
     let sum = rest.first_chunk::<SUM>()?;
     (CRC.checksum(sealed) == u32::from_le_bytes(*sum)).then_some(Found {
         slot: index,
         number: u32::from_le_bytes(*number),
-        released: Seq(u32::from_le_bytes(*released)),
-        next: Seq(u32::from_le_bytes(*next)),
+        marks: Marks {
+            released: Seq(u32::from_le_bytes(*released)),
+            next: Seq(u32::from_le_bytes(*next)),
+            digest: Digest(*digest),
+            erasing: PageNumber(u32::from_le_bytes(*erasing)),
+        },
+        done: slot.last() == Some(&0),
         length,
     })
 }
@@ -100,17 +126,17 @@ impl Checkpoints {
         Ok(Some((found, state)))
     }
 
-    /// Writes a checkpoint that says what is released and which seq comes next; `state` puts the state into the space it is given and says how much it took. When this
-    /// returns, the checkpoint is durable and read back.
+    /// Writes a checkpoint; `state` puts the state into the space it is given and says how much it took. When this
+    /// returns, the checkpoint is durable and read back; `false`: it does not read back, or the state does not fit.
     pub(super) fn write<F: NorFlash>(
         &mut self,
         flash: &mut F,
         buffer: &mut Slot,
-        (released, next): (Seq, Seq),
+        marks: Marks,
         state: impl FnOnce(&mut [u8]) -> Option<usize>,
     ) -> Result<bool, F::Error> {
         let number = self.latest.map_or(1, |l| l.number.saturating_add(1));
-        let Some(used) = encode(buffer, number, (released, next), state) else { return Ok(false) };
+        let Some(used) = encode(buffer, number, marks, state) else { return Ok(false) };
         let slot = self.next_slot;
         if slot.is_multiple_of(self.slots_in_sector) {
             let begin = slot / self.slots_in_sector * self.sector;
@@ -130,23 +156,37 @@ impl Checkpoints {
             _ => Ok(false),
         }
     }
+
+    /// Notes with the latest checkpoint that its sector is erased.
+    pub(super) fn erased<F: NorFlash>(&mut self, flash: &mut F) -> Result<(), F::Error> {
+        let Some(found) = &mut self.latest else { return Ok(()) };
+        found.done = true;
+        flash.write((found.slot + 1) * SLOT_U32 - 1, &[0])
+    }
 }
 
 fn encode(
     buffer: &mut Slot,
     number: u32,
-    (released, next): (Seq, Seq),
+    marks: Marks,
     state: impl FnOnce(&mut [u8]) -> Option<usize>,
 ) -> Option<usize> {
     buffer.fill(0xff);
     let (header, body) = buffer.split_first_chunk_mut::<HEADER>()?;
     let length = state(body.get_mut(..STATE_MAX)?)?;
-    let [n0, n1, n2, n3] = number.to_le_bytes();
-    let [r0, r1, r2, r3] = released.0.to_le_bytes();
-    let [s0, s1, s2, s3] = next.0.to_le_bytes();
-    let [l0, l1] = u16::try_from(length).ok()?.to_le_bytes();
-    let [m0, m1, m2, m3] = MAGIC;
-    *header = [m0, m1, m2, m3, n0, n1, n2, n3, r0, r1, r2, r3, s0, s1, s2, s3, l0, l1];
+    let length_bytes = u16::try_from(length).ok()?.to_le_bytes();
+    let parts: [&[u8]; 7] = [
+        &MAGIC,
+        &number.to_le_bytes(),
+        &marks.released.0.to_le_bytes(),
+        &marks.next.0.to_le_bytes(),
+        &marks.digest.0,
+        &marks.erasing.0.to_le_bytes(),
+        &length_bytes,
+    ];
+    for (place, byte) in header.iter_mut().zip(parts.into_iter().flatten()) {
+        *place = *byte;
+    }
     let (sealed, rest) = buffer.split_at_mut_checked(HEADER + length)?;
     *rest.first_chunk_mut::<SUM>()? = CRC.checksum(sealed).to_le_bytes();
     Some(HEADER + length + SUM)

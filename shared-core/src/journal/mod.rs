@@ -8,26 +8,28 @@
 //! What a power cut leaves: half a record, or half a header, at the very end. It is passed over, and nothing is ever
 //! written into that page or the one behind it again, since bits of an interrupted write may read differently each time.
 //! The last whole record is programmed once more with the same bytes, so that it stays whole.
+//!
+//! What has become unreadable otherwise costs what stood in that page from there on, and no more: see [`Patrol`] and
+//! [`Salvage`].
 
 mod checkpoint;
+mod open;
 mod page;
+mod read;
+mod salvage;
 #[cfg(test)]
 mod tests;
 
-use core::ops::ControlFlow;
-
 use embedded_storage::nor_flash::MultiwriteNorFlash;
 
-pub use self::checkpoint::STATE_MAX;
+pub use self::{checkpoint::STATE_MAX, open::Opened, read::Patrol, salvage::Salvage};
 use self::{
-    checkpoint::{Checkpoints, SLOT, Slot},
-    page::{HEADER, Header, PAGE, PAGE_U32, PageNumber, Records, fits},
+    checkpoint::{Checkpoints, Marks, SLOT, Slot},
+    page::{HEADER, Header, PAGE, PAGE_U32, PageNumber, RECORDS_IN_PAGE, fits, is_blank},
 };
-use crate::record::{self, Event, Millis, RECORD_MAX, Sealed, Seq};
-
-/// Readings that surely fit a page: the header's 16 bytes aside, a reading takes at most 20 bytes for the first
-/// 16 million readings, 16 to 18 as a rule.
-const READINGS_IN_PAGE: u32 = 12;
+use crate::chain::Digest;
+use crate::counts::Counts;
+use crate::record::{self, Event, Millis, RECORD_MAX, Seq};
 
 /// How often an append moves on to a fresh page before it calls the flash faulty.
 const ATTEMPTS: usize = 3;
@@ -64,6 +66,11 @@ pub enum Prepared {
 pub enum OpenError<E> {
     /// The flash is smaller than four sectors, or its geometry does not suit pages of 256 bytes.
     Geometry,
+    /// The flash holds a journal of another format, and none of this one: nothing was changed.
+    Format {
+        /// Its format.
+        found: u8,
+    },
     /// The flash itself reports an error.
     Flash(E),
 }
@@ -94,61 +101,15 @@ pub struct Journal<F> {
     /// No page below this one is kept; a multiple of the sector's pages.
     tail: PageNumber,
     next: Seq,
+    /// Behind the record before `next`.
+    digest: Digest,
     released: Seq,
-    /// What was released as of the last checkpoint of this session. One from an earlier session may be half written
-    /// and only look whole, so no erase relies on it.
-    checkpointed: Option<Seq>,
     /// A page to begin searching at, with its first seq.
     cursor: Option<(PageNumber, Seq)>,
+    patrol: Option<read::Round>,
 }
 
 impl<F: MultiwriteNorFlash> Journal<F> {
-    /// Finds the journal in `flash`, whatever its content, and gives the latest checkpoint's state in `state`, with its
-    /// length if there is one.
-    ///
-    /// # Errors
-    /// A geometry that does not fit, or the flash's own error.
-    pub fn open(
-        mut flash: F,
-        state: &mut [u8; STATE_MAX],
-    ) -> Result<(Self, Option<usize>), OpenError<F::Error>> {
-        let sector = u32::try_from(F::ERASE_SIZE).map_err(|_| OpenError::Geometry)?;
-        let sectors = u32::try_from(flash.capacity() / F::ERASE_SIZE).map_err(|_| OpenError::Geometry)?;
-        let fits = F::WRITE_SIZE == 1 && F::READ_SIZE == 1 && F::ERASE_SIZE.is_multiple_of(2 * SLOT);
-        if !fits || sectors < 4 {
-            return Err(OpenError::Geometry);
-        }
-        let mut slot: Slot = [0; SLOT];
-        let checkpoints = Checkpoints::find(&mut flash, &mut slot)?;
-        let mut length = None;
-        let (mut next, mut released) = (Seq::FIRST, Seq(0));
-        if let Some((found, bytes)) = checkpoints.latest(&mut flash, &mut slot)? {
-            next = found.next;
-            released = found.released;
-            if let Some(space) = state.get_mut(..bytes.len()) {
-                space.copy_from_slice(bytes);
-                length = Some(bytes.len());
-            }
-        }
-        let mut journal = Self {
-            flash,
-            checkpoints,
-            sector,
-            places: (sectors - 2) * (sector / PAGE_U32),
-            newest: None,
-            head: PageNumber(0),
-            offset: PAGE,
-            ready_end: PageNumber(0),
-            tail: PageNumber(0),
-            next,
-            released,
-            checkpointed: None,
-            cursor: None,
-        };
-        journal.scan()?;
-        Ok((journal, length))
-    }
-
     /// The number that the next record will get.
     #[must_use]
     pub fn next(&self) -> Seq {
@@ -159,6 +120,12 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     #[must_use]
     pub fn released(&self) -> Seq {
         self.released
+    }
+
+    /// What all records so far come to.
+    #[must_use]
+    pub fn digest(&self) -> Digest {
+        self.digest
     }
 
     /// The flash, for tests that look at it.
@@ -181,6 +148,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             }?;
             if written {
                 self.next = seq.next();
+                self.digest = self.digest.then(bytes);
                 return Ok(seq);
             }
             self.offset = PAGE;
@@ -212,12 +180,15 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             if !self.all_released_below(end).map_err(AppendError::Flash)? {
                 return Ok(Prepared::Full);
             }
-            self.checkpoint(state)?;
+            self.checkpoint(begin, state)?;
             self.tail = end;
             self.cursor = self.cursor.filter(|(page, _)| *page >= end);
+        } else {
+            self.checkpoint(begin, state)?;
         }
         let address = self.address(begin);
         self.flash.erase(address, address + self.sector).map_err(AppendError::Flash)?;
+        self.checkpoints.erased(&mut self.flash).map_err(AppendError::Flash)?;
         self.ready_end = begin.plus(self.sector_pages());
         Ok(Prepared::Erased)
     }
@@ -228,12 +199,11 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     /// The flash's own.
     pub fn pages_left(&mut self) -> Result<u32, F::Error> {
         let mut kept = self.tail;
-        loop {
-            let end = kept.plus(self.sector_pages());
-            if end.0 > self.newest.map_or(0, |n| n.0) || !self.all_released_below(end)? {
-                break;
-            }
-            kept = end;
+        // The newest page tells a boot where to go on, so its sector stays.
+        while let Some(header) = self.next_page(kept.plus(self.sector_pages()))?
+            && header.first <= self.released.next()
+        {
+            kept = self.sector_begin(header.number);
         }
         Ok(kept.plus(self.places).0.saturating_sub(self.head.0))
     }
@@ -247,153 +217,22 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         Ok(without_erasing > reserve || self.pages_left()? > reserve)
     }
 
-    /// About how many readings can still be taken with `pages_left`.
+    /// How many readings surely fit `pages_left` pages if none is longer than this one: so many digits, and numbers and
+    /// times as they may be by then.
     #[must_use]
-    pub fn readings_in(pages_left: u32) -> u32 {
-        pages_left.saturating_mul(READINGS_IN_PAGE)
+    pub fn readings_in(&self, pages_left: u32, at: Millis, widest: Counts) -> u32 {
+        let seq = Seq(self.next.0.saturating_add(pages_left.saturating_mul(RECORDS_IN_PAGE)));
+        let mut buffer = [0; RECORD_MAX];
+        let longest =
+            record::encode(seq, at, &Event::Reading(widest), &mut buffer).map_or(RECORD_MAX, <[u8]>::len);
+        let in_page = u32::try_from((PAGE - HEADER) / longest).unwrap_or(0);
+        pages_left.saturating_mul(in_page)
     }
 
     /// Pages of the whole ring.
     #[must_use]
     pub fn places(&self) -> u32 {
         self.places
-    }
-
-    /// The first record that is still kept, or the next one's number if none is.
-    ///
-    /// # Errors
-    /// The flash's own.
-    pub fn oldest(&mut self) -> Result<Seq, F::Error> {
-        Ok(self.next_page(self.tail)?.map_or(self.next, |header| header.first.min(self.next)))
-    }
-
-    /// Copies whole records, from number `from` or the first kept one behind it, to the front of `out`; gives the bytes
-    /// used. None fit or none are there: 0.
-    ///
-    /// # Errors
-    /// The flash's own.
-    pub fn read(&mut self, from: Seq, out: &mut [u8]) -> Result<usize, F::Error> {
-        let mut used = 0;
-        self.visit(from, |_, sealed| {
-            let bytes = sealed.bytes();
-            match out.get_mut(used..used + bytes.len()) {
-                Some(space) => {
-                    space.copy_from_slice(bytes);
-                    used += bytes.len();
-                    ControlFlow::Continue(())
-                }
-                None => ControlFlow::Break(()),
-            }
-        })?;
-        Ok(used)
-    }
-
-    /// Shows all records from `from` on to `visitor`, in order, until it breaks.
-    ///
-    /// # Errors
-    /// The flash's own.
-    pub fn visit(
-        &mut self,
-        from: Seq,
-        mut visitor: impl FnMut(Seq, Sealed<'_>) -> ControlFlow<()>,
-    ) -> Result<(), F::Error> {
-        let mut page = [0; PAGE];
-        let mut here = self.page_holding(from)?;
-        while let Some(header) = here {
-            self.cursor = Some((header.number, header.first));
-            let behind = self.next_page(header.number.plus(1))?;
-            let end = behind.map_or(self.next, |next| next.first);
-            self.flash.read(self.address(header.number), &mut page)?;
-            for (seq, sealed) in Records::of(&page, header, end) {
-                if seq >= from && visitor(seq, sealed).is_break() {
-                    return Ok(());
-                }
-            }
-            here = behind;
-        }
-        Ok(())
-    }
-
-    // ---- finding ----
-
-    /// Finds the newest page, the oldest, and where to go on.
-    fn scan(&mut self) -> Result<(), F::Error> {
-        let mut newest: Option<Header> = None;
-        for place in 0..self.places {
-            if let Some(header) = self.header_at_place(place)?
-                && newest.is_none_or(|n| header.number > n.number)
-            {
-                newest = Some(header);
-            }
-        }
-        let Some(newest) = newest else { return Ok(()) };
-        let sector_begin = newest.number.0 - newest.number.0 % self.sector_pages();
-        self.newest = Some(newest.number);
-        self.ready_end = PageNumber(sector_begin).plus(self.sector_pages());
-        // The page behind the newest may have been begun when the power went: it is left alone.
-        self.head = newest.number.plus(2).min(self.ready_end);
-        self.tail = PageNumber(self.ready_end.0.saturating_sub(self.places));
-        if let Some(oldest) = self.next_page(self.tail)? {
-            self.tail = PageNumber(oldest.number.0 - oldest.number.0 % self.sector_pages());
-        }
-        self.settle(newest)
-    }
-
-    /// Reads the newest page's last number and programs what is whole in it once more.
-    fn settle(&mut self, newest: Header) -> Result<(), F::Error> {
-        let mut page = [0; PAGE];
-        let address = self.address(newest.number);
-        self.flash.read(address, &mut page)?;
-        let mut records = Records::of(&page, newest, Seq(u32::MAX));
-        let last = records.by_ref().map(|(seq, _)| seq).last();
-        let whole = PAGE - records.rest().len();
-        if let Some(bytes) = page.get(..whole) {
-            self.flash.write(address, bytes)?;
-        }
-        self.next = self.next.max(last.map_or(newest.first, Seq::next));
-        Ok(())
-    }
-
-    /// The last page whose first seq is not above `from`, or the first page there is.
-    fn page_holding(&mut self, from: Seq) -> Result<Option<Header>, F::Error> {
-        let begin = match self.cursor {
-            Some((page, first)) if first <= from && page >= self.tail => page,
-            _ => self.tail,
-        };
-        let mut here = self.next_page(begin)?;
-        while let Some(header) = here {
-            match self.next_page(header.number.plus(1))? {
-                Some(next) if next.first <= from => here = Some(next),
-                _ => break,
-            }
-        }
-        Ok(here)
-    }
-
-    /// The first readable page from `page` on.
-    fn next_page(&mut self, page: PageNumber) -> Result<Option<Header>, F::Error> {
-        let Some(newest) = self.newest else { return Ok(None) };
-        for number in page.0..=newest.0 {
-            let header = self.header_at_place(number % self.places)?;
-            if let Some(header) = header.filter(|h| h.number.0 == number) {
-                return Ok(Some(header));
-            }
-        }
-        Ok(None)
-    }
-
-    fn header_at_place(&mut self, place: u32) -> Result<Option<Header>, F::Error> {
-        let mut bytes = [0; HEADER];
-        self.flash.read(self.address(PageNumber(place)), &mut bytes)?;
-        Ok(Header::decode(&bytes).filter(|header| header.number.0 % self.places == place))
-    }
-
-    fn all_released_below(&mut self, end: PageNumber) -> Result<bool, F::Error> {
-        // The newest page tells a boot where to go on, so its sector stays.
-        Ok(match self.next_page(end)? {
-            Some(header) => header.first <= self.released.next(),
-            None => false,
-        })
     }
 
     // ---- writing ----
@@ -408,7 +247,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     fn write_in_fresh_page(&mut self, record: &[u8]) -> Result<bool, AppendError<F::Error>> {
         let number = self.blank_page()?;
         let mut page = [0xff; PAGE];
-        let header = Header { number, first: self.next };
+        let header = Header { number, first: self.next, digest: self.digest };
         let used = HEADER + record.len();
         if let Some((head, body)) = page.split_first_chunk_mut::<HEADER>()
             && let Some(body) = body.get_mut(..record.len())
@@ -431,7 +270,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         let mut page = [0; PAGE];
         while self.head < self.ready_end {
             self.flash.read(self.address(self.head), &mut page).map_err(AppendError::Flash)?;
-            if page.iter().all(|byte| *byte == 0xff) {
+            if is_blank(&page) {
                 return Ok(self.head);
             }
             self.head = self.head.plus(1);
@@ -450,24 +289,25 @@ impl<F: MultiwriteNorFlash> Journal<F> {
 
     fn checkpoint(
         &mut self,
+        erasing: PageNumber,
         state: impl FnOnce(&mut [u8]) -> Option<usize>,
     ) -> Result<(), AppendError<F::Error>> {
-        if self.checkpointed == Some(self.released) {
-            return Ok(());
-        }
         let mut slot: Slot = [0; SLOT];
-        let marks = (self.released, self.next);
+        let marks = Marks { released: self.released, next: self.next, digest: self.digest, erasing };
         match self.checkpoints.write(&mut self.flash, &mut slot, marks, state).map_err(AppendError::Flash)? {
-            true => {
-                self.checkpointed = Some(self.released);
-                Ok(())
-            }
+            true => Ok(()),
             false => Err(AppendError::Faulty),
         }
     }
 
+    // ---- places ----
+
     fn sector_pages(&self) -> u32 {
         self.sector / PAGE_U32
+    }
+
+    fn sector_begin(&self, page: PageNumber) -> PageNumber {
+        PageNumber(page.0 - page.0 % self.sector_pages())
     }
 
     fn address(&self, page: PageNumber) -> u32 {

@@ -7,9 +7,19 @@ use proptest::prelude::*;
 
 use super::*;
 use crate::flash_model::{Cut, Flash, SECTORS};
+use crate::record::{Gap, Sealed};
+use crate::wire::StationId;
+
+const STATION: StationId = StationId([7; 8]);
 
 fn open(flash: Flash) -> Journal<Flash> {
-    Journal::open(flash, &mut [0; STATE_MAX]).expect("the model's geometry suits").0
+    opened(flash).0
+}
+
+fn opened(flash: Flash) -> (Journal<Flash>, Salvage) {
+    let (journal, opened) =
+        Journal::open(flash, STATION, &mut [0; STATE_MAX]).expect("the model's geometry suits");
+    (journal, opened.salvage)
 }
 
 /// The simplest event whose content tells it from its neighbours.
@@ -109,8 +119,8 @@ fn the_state_of_the_last_checkpoint_comes_back() {
     });
     assert_eq!(prepared, Ok(Prepared::Erased));
     let mut state = [0; STATE_MAX];
-    let (mut again, length) = Journal::open(journal.flash().clone(), &mut state).unwrap();
-    assert_eq!(length.map(|length| &state[..length]), Some(&b"state"[..]));
+    let (mut again, opened) = Journal::open(journal.flash().clone(), STATION, &mut state).unwrap();
+    assert_eq!(opened.state.map(|length| &state[..length]), Some(&b"state"[..]));
     assert_eq!(again.released(), Seq(n as u32));
     assert_eq!(again.next(), Seq(n as u32 + 1));
     assert_eq!(again.oldest().unwrap(), content(&mut again).first().unwrap().0);
@@ -136,23 +146,23 @@ fn records_are_read_in_windows_from_any_number() {
     }
     let mut window = [0; 100];
     let mut from = Seq(1);
-    let mut seen = 0;
+    let mut digest = Digest::origin(STATION);
     loop {
-        let used = journal.read(from, &mut window).unwrap();
+        let (before, used) = journal.window(from, &mut window).unwrap();
+        assert_eq!(before, digest, "the chain goes on at {from}");
         let mut rest = &window[..used];
         if used == 0 {
             break;
         }
         while let Ok((sealed, behind)) = Sealed::split(rest) {
             assert_eq!(sealed.seq(), Some(from));
+            digest = digest.then(sealed.bytes());
             from = from.next();
-            seen += 1;
             rest = behind;
         }
         assert_eq!(rest, [], "whole records only");
     }
-    assert_eq!(seen, 200);
-    assert_eq!(journal.read(Seq(201), &mut window), Ok(0));
+    assert_eq!((from, digest), (Seq(201), journal.digest()));
 }
 
 /// One session until the power goes: appends with marks from `mark` on, confirming all but `behind` records. Gives the
@@ -224,6 +234,187 @@ fn a_cut_while_the_ring_goes_round_loses_nothing_that_is_not_confirmed() {
     for fuel in (0..40_000).step_by(97) {
         sweep(&[(fuel, 1_500), (usize::MAX, 700)], 150);
     }
+}
+
+/// Where page `number` begins in the model's flash, for the ring's first round.
+fn page_at(number: usize) -> usize {
+    2 * 4096 + 256 * number
+}
+
+fn fill(appends: u64) -> Flash {
+    let mut journal = open(Flash::blank());
+    for mark in 0..appends {
+        assert!(append(&mut journal, mark).unwrap());
+    }
+    journal.flash().clone()
+}
+
+/// All rounds of the patrol up to its end.
+fn missing(journal: &mut Journal<Flash>) -> Vec<Gap> {
+    let mut gaps = Vec::new();
+    loop {
+        match journal.patrol().unwrap() {
+            Patrol::Going => {}
+            Patrol::Missing(gap) => gaps.push(gap),
+            Patrol::Done => return gaps,
+        }
+    }
+}
+
+/// Numbers from 1 up to `next` that are not in the journal, as gaps.
+fn gaps_in(journal: &mut Journal<Flash>) -> Vec<Gap> {
+    let mut gaps = Vec::new();
+    let mut due = Seq::FIRST;
+    for (seq, _) in content(journal) {
+        gaps.extend(Gap::between(due, seq));
+        due = seq.next();
+    }
+    gaps.extend(Gap::between(due, journal.next()));
+    gaps
+}
+
+#[test]
+fn a_corrupted_page_costs_what_stood_in_it_and_no_more_and_the_patrol_names_it() {
+    let whole = content(&mut open(fill(400)));
+    for (page, at) in [(0, 0), (7, 3), (7, 31), (7, 40), (7, 200), (15, 100), (20, 20)] {
+        let mut flash = fill(400);
+        flash.bytes[page_at(page) + at] ^= 0x10;
+        let (mut journal, salvage) = opened(flash);
+        assert_eq!(salvage, Salvage::default(), "page {page} byte {at}");
+        let kept = content(&mut journal);
+        assert!(kept.len() + 20 >= whole.len() && kept.len() < whole.len(), "page {page} byte {at}");
+        assert!(kept.iter().all(|record| whole.contains(record)));
+        let gaps = gaps_in(&mut journal);
+        assert_eq!(gaps.len(), 1, "page {page} byte {at}: {gaps:?}");
+        assert_eq!(missing(&mut journal), gaps);
+        assert_eq!(missing(&mut journal), gaps, "in the next round again");
+        journal.release(gaps[0].last);
+        assert_eq!(missing(&mut journal), [], "the host knows");
+    }
+}
+
+#[test]
+fn a_window_ends_before_a_gap_and_the_chain_goes_on_behind_it() {
+    let mut journal = open(fill(100));
+    let mut digests = Vec::from([Digest::origin(STATION)]);
+    journal
+        .visit(Seq::FIRST, |_, sealed| {
+            digests.push(digests[digests.len() - 1].then(sealed.bytes()));
+            ControlFlow::Continue(())
+        })
+        .unwrap();
+    let mut flash = journal.flash().clone();
+    flash.bytes[page_at(2) + 5] ^= 1;
+    let mut journal = open(flash);
+    let gap = gaps_in(&mut journal)[0];
+    let mut buffer = [0; 1000];
+    let mut numbers = |from: Seq| {
+        let (before, used) = journal.window(from, &mut buffer).unwrap();
+        let mut seen = Vec::new();
+        let mut rest = &buffer[..used];
+        while let Ok((sealed, behind)) = Sealed::split(rest) {
+            seen.extend(sealed.seq());
+            rest = behind;
+        }
+        assert_eq!(before, digests[seen[0].0 as usize - 1], "before {}", seen[0]);
+        (seen[0], seen[seen.len() - 1])
+    };
+    assert_eq!(numbers(Seq(5)), (Seq(5), Seq(gap.first.0 - 1)));
+    assert_eq!(numbers(gap.first).0, gap.last.next());
+}
+
+/// Whatever becomes of the newest pages, by what stood in `before`: no number is given twice, and all numbers that were
+/// acknowledged and are gone are in the skipped gap.
+fn assert_none_twice(damaged: Flash, before: &[(Seq, Event)], id: &str) {
+    let (mut journal, salvage) = opened(damaged);
+    let kept = content(&mut journal);
+    for record in &kept {
+        assert!(before.contains(record), "{id}: {record:?} was never written so");
+    }
+    let last = before.last().unwrap().0;
+    assert!(journal.next() > last, "{id}: {} would be given twice, {last} was", journal.next());
+    if kept.last().is_none_or(|(seq, _)| *seq < last) {
+        assert!(salvage.skipped.is_some_and(|gap| gap.last >= last), "{id}: {salvage:?}");
+    }
+    assert!(journal.next().0 - last.0 <= 3 * RECORDS_IN_PAGE, "{id}: {} after {last}", journal.next());
+    for mark in 900_000..900_030 {
+        assert!(append(&mut journal, mark).unwrap(), "{id}");
+    }
+    let after = content(&mut journal);
+    assert_eq!(after.len(), kept.len() + 30, "{id}: it goes on");
+    let mut again = open(journal.flash().clone());
+    assert_eq!(content(&mut again), after, "{id}: and is found again");
+}
+
+#[test]
+fn no_number_is_given_twice_when_the_newest_pages_cannot_be_read() {
+    for appends in [5, 13, 14, 100, 207, 208, 209, 300, 415, 416, 417] {
+        let flash = fill(appends);
+        let before = content(&mut open(flash.clone()));
+        let newest = open(flash.clone()).newest.unwrap().0 as usize;
+        for pages in 1..=2.min(newest) {
+            for fill in [0x00, 0x5a, 0xfe] {
+                let mut damaged = flash.clone();
+                let begin = page_at(newest + 1 - pages);
+                damaged.bytes[begin..begin + 256 * pages].fill(fill);
+                assert_none_twice(damaged, &before, &std::format!("{appends}, {pages} pages of {fill:02x}"));
+            }
+        }
+    }
+}
+
+#[test]
+fn no_number_is_given_twice_whichever_bit_of_the_newest_page_turns() {
+    for appends in [1, 9, 14, 211] {
+        let flash = fill(appends);
+        let before = content(&mut open(flash.clone()));
+        let newest = open(flash.clone()).newest.unwrap().0 as usize;
+        for bit in 0..8 * 256 {
+            let mut damaged = flash.clone();
+            damaged.bytes[page_at(newest) + bit / 8] ^= 1 << (bit % 8);
+            let (mut journal, _) = opened(damaged);
+            assert!(journal.next() > before.last().unwrap().0, "bit {bit} of {appends}");
+            let kept = content(&mut journal);
+            assert!(kept.iter().all(|record| before.contains(record)), "bit {bit} of {appends}");
+        }
+    }
+}
+
+#[test]
+fn a_journal_of_another_format_is_refused_and_left_as_it_is() {
+    let mut flash = Flash::blank();
+    flash.bytes[page_at(0)..page_at(0) + 4].copy_from_slice(b"DL\x01\xff");
+    let mut state = [0; STATE_MAX];
+    let refused = Journal::open(flash.clone(), STATION, &mut state).unwrap_err();
+    assert_eq!(refused, OpenError::Format { found: 1 });
+    // One damaged byte in a journal of this format is no other format.
+    let mut flash = fill(100);
+    flash.bytes[page_at(3) + 2] = 1;
+    assert!(Journal::open(flash, STATION, &mut state).is_ok());
+}
+
+#[test]
+fn fifty_thousand_readings_fit_a_mebibyte() {
+    let mut flash = Flash::blank();
+    flash.bytes.resize(1 << 20, 0xff);
+    let mut journal = open(flash);
+    let left = journal.pages_left().unwrap();
+    let six_digits = Counts::new(-999_999).unwrap();
+    let told = journal.readings_in(left, Millis(1 << 33), six_digits);
+    assert!(told >= 50_000, "{told}");
+    let mut taken = 0;
+    loop {
+        // Times as far on as told, the widest counts.
+        let at = Millis((1 << 33) - 1);
+        match journal.append(at, &Event::Reading(six_digits)) {
+            Ok(_) => taken += 1,
+            Err(AppendError::NotPrepared) if journal.prepare(|_| Some(0)).unwrap() == Prepared::Full => break,
+            Err(AppendError::NotPrepared) => {}
+            Err(error) => panic!("{error:?}"),
+        }
+    }
+    assert!(taken >= told, "{told} were told, {taken} fit");
+    std::println!("told {told}, taken {taken}");
 }
 
 proptest! {

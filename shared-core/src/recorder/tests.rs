@@ -16,7 +16,7 @@ const ID: StationId = StationId([1, 2, 3, 4, 5, 6, 7, 8]);
 struct Bench {
     recorder: Recorder<Flash>,
     now: u64,
-    number: u16,
+    number: u32,
 }
 
 fn boot(flash: Flash) -> Bench {
@@ -82,7 +82,7 @@ impl Bench {
         loop {
             let from = all.last().map_or(Seq::FIRST, |(seq, _)| seq.next());
             let window = self.ask(&Request::Records { from }, |reply| match reply {
-                Reply::Records(bytes) => bytes.to_vec(),
+                Reply::Records { records, .. } => records.to_vec(),
                 other => panic!("{other:?}"),
             });
             let mut rest = &window[..];

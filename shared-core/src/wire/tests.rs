@@ -7,11 +7,11 @@ use proptest::prelude::*;
 use super::*;
 use crate::{plan::tests as plans, quantity::Count, stopping::Standing};
 
-fn frame(number: u16, request: &Request) -> Vec<u8> {
+fn frame(number: u32, request: &Request) -> Vec<u8> {
     encode(number, request, &mut [0; FRAME_MAX]).unwrap().to_vec()
 }
 
-fn received(reader: &mut FrameReader, bytes: &[u8]) -> Vec<(u16, Request)> {
+fn received(reader: &mut FrameReader, bytes: &[u8]) -> Vec<(u32, Request)> {
     bytes.iter().filter_map(|b| reader.push(*b).and_then(|f| decode(f).ok())).collect()
 }
 
@@ -69,7 +69,7 @@ proptest! {
     }
 
     #[test]
-    fn requests_come_back_with_their_number(number in any::<u16>(), request in any_request()) {
+    fn requests_come_back_with_their_number(number in any::<u32>(), request in any_request()) {
         let got = received(&mut FrameReader::default(), &frame(number, &request));
         prop_assert_eq!(got, [(number, request)]);
     }
@@ -116,13 +116,13 @@ fn a_run_longer_than_any_message_is_dropped_whole_and_the_next_frame_taken() {
 #[test]
 fn another_version_is_told_apart_from_damage() {
     let mut out = [0; FRAME_MAX];
-    let body = [VERSION + 1, 0x34, 0x12, 0];
-    out[6..10].copy_from_slice(&body);
-    out[10..14].copy_from_slice(&CRC.checksum(&body).to_le_bytes());
-    let bytes = cobs_in_place(&mut out, 6, 8).unwrap().to_vec();
+    let body = [VERSION + 1, 0x78, 0x56, 0x34, 0x12, 0];
+    out[6..12].copy_from_slice(&body);
+    out[12..16].copy_from_slice(&CRC.checksum(&body).to_le_bytes());
+    let bytes = cobs_in_place(&mut out, 6, 10).unwrap().to_vec();
     let mut reader = FrameReader::default();
     let outcome = bytes.iter().find_map(|b| reader.push(*b).map(decode::<Request>));
-    assert_eq!(outcome, Some(Err(FrameError::Version { theirs: VERSION + 1, number: 0x1234 })));
+    assert_eq!(outcome, Some(Err(FrameError::Version { theirs: VERSION + 1, number: 0x1234_5678 })));
 }
 
 #[test]
@@ -163,11 +163,14 @@ fn the_longest_reply_and_the_longest_request_fit_a_frame() {
         refused: u32::MAX,
         last_refusal: Some(Refusal::NoPlan),
         journal: JournalHealth::Faulty,
+        gaps: u32::MAX,
+        lost: Some(Gap { first: Seq(u32::MAX), last: Seq(u32::MAX) }),
     };
+    let records = |records| Reply::Records { before: Digest([0xff; Digest::BYTES]), records };
     let plan = Plan::try_from(plans::longest()).unwrap();
     let mut out = [0; FRAME_MAX];
-    assert!(encode(u16::MAX, &Reply::Status(status), &mut out).is_ok());
-    assert!(encode(u16::MAX, &Reply::Records(&[0xff; RECORDS_MAX]), &mut out).is_ok());
-    assert!(encode(u16::MAX, &Request::Load { plan, replace: true }, &mut out).is_ok());
-    assert!(encode(u16::MAX, &Reply::Records(&[0xff; MESSAGE_MAX]), &mut out).is_err());
+    assert!(encode(u32::MAX, &Reply::Status(status), &mut out).is_ok());
+    assert!(encode(u32::MAX, &records(&[0xff; RECORDS_MAX]), &mut out).is_ok());
+    assert!(encode(u32::MAX, &Request::Load { plan, replace: true }, &mut out).is_ok());
+    assert!(encode(u32::MAX, &records(&[0xff; MESSAGE_MAX]), &mut out).is_err());
 }

@@ -1,5 +1,6 @@
 //! A station's status in words and as JSON; doubles keep every bit in JSON.
 
+use donelight_core::record::Gap;
 use donelight_core::station::Held;
 use donelight_core::stopping::Standing;
 use donelight_core::wire::{Hello, JournalHealth, Status, StudyStatus};
@@ -19,9 +20,16 @@ pub(super) fn text(port: &str, hello: &Hello, status: &Status) -> String {
     lines.push(String::new());
     lines.push(format!("Journal: {}", journal_text(status.journal)));
     lines.push(format!(
-        "  records not pulled yet: {}; room for about {} readings",
+        "  records not pulled yet: {}; room for at least {} readings",
         status.unconfirmed, status.room
     ));
+    if let Some(Gap { first, last }) = status.lost {
+        let often = if status.gaps == 1 { String::new() } else { format!(" (found {} times)", status.gaps) };
+        lines.push(format!(
+            "  records {first} to {last} can no longer be read{often}: pull the log, press seen, and exchange the board if \
+             it happens again"
+        ));
+    }
     lines.push(format!("Starts so far: {}; running for {}", status.boots, duration(status.up.0)));
     let latest = status.last_refusal.map(|refusal| format!("; the latest: {refusal}")).unwrap_or_default();
     lines.push(format!("Refused so far: {}{latest}", status.refused));
@@ -90,6 +98,8 @@ pub(super) fn json(hello: &Hello, status: &Status) -> Value {
         "unconfirmed": status.unconfirmed,
         "refused": status.refused,
         "last_refusal": status.last_refusal.map(|refusal| refusal.to_string()),
+        "gaps": status.gaps,
+        "lost": status.lost.map(|gap| json!({ "first": gap.first.0, "last": gap.last.0 })),
         "journal": journal_name(status.journal),
         "note": SAFETY,
     })
