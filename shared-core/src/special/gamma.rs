@@ -49,13 +49,99 @@ pub(crate) fn deviance(x: f64, a: f64) -> f64 {
 
 /// x^a e^−x / Γ(a + 1), for a ≥ 0 and x > 0: the Poisson probability of a events where x are expected.
 pub(crate) fn poisson(a: f64, x: f64) -> f64 {
-    if a == 0.0 {
-        return libm::exp(-x);
-    }
-    libm::exp(-stirling_error(a) - a * deviance(x, a)) / libm::sqrt(TAU * a)
+    if a == 0.0 { libm::exp(-x) } else { Poisson::new(a).at(x) }
 }
 
-/// ln Γ(a + 1), for a > 0.
-pub(crate) fn log_factorial(a: f64) -> f64 {
-    0.5 * libm::log(TAU * a) + stirling_error(a) + a * (libm::log(a) - 1.0)
+/// [`poisson`] of one a, above 0, at any number of x.
+#[derive(Clone, Copy)]
+pub(crate) struct Poisson {
+    a: f64,
+    form: Form,
 }
+
+#[derive(Clone, Copy)]
+enum Form {
+    /// For a small a that is a whole number or a half more: nothing cancels in x^a e^−x / Γ(a + 1) as it stands.
+    Plain(Factorial),
+    /// By the saddle point: e^−δ(a) / √(2πa).
+    SaddlePoint(f64),
+}
+
+impl Poisson {
+    pub(crate) fn new(a: f64) -> Self {
+        let form = Factorial::of(a).map_or_else(|| Form::SaddlePoint(saddle_point(a)), Form::Plain);
+        Self { a, form }
+    }
+
+    /// Whether a is a small whole number or a half more.
+    pub(crate) const fn is_plain(&self) -> bool {
+        matches!(self.form, Form::Plain(_))
+    }
+
+    pub(crate) fn at(&self, x: f64) -> f64 {
+        let scale = match self.form {
+            // Far out e^−x alone would run out of digits.
+            Form::Plain(factorial) if x < 600.0 => {
+                return factorial.power(x) * libm::exp(-x) / factorial.value;
+            }
+            Form::Plain(_) => saddle_point(self.a),
+            Form::SaddlePoint(scale) => scale,
+        };
+        scale * libm::exp(-self.a * deviance(x, self.a))
+    }
+
+    /// ln Γ(a + 1)
+    pub(crate) fn log_factorial(&self) -> f64 {
+        match self.form {
+            Form::Plain(factorial) => libm::log(factorial.value),
+            Form::SaddlePoint(scale) => self.a * (libm::log(self.a) - 1.0) - libm::log(scale),
+        }
+    }
+}
+
+fn saddle_point(a: f64) -> f64 {
+    libm::exp(-stirling_error(a)) / libm::sqrt(TAU * a)
+}
+
+/// Γ(a + 1) of an a that is a whole number up to 20, or a half more.
+#[derive(Clone, Copy)]
+struct Factorial {
+    value: f64,
+    /// a without its half.
+    whole: u32,
+    half: bool,
+}
+
+impl Factorial {
+    /// A product that is exact, or nearly, and for a half √π times one.
+    fn of(a: f64) -> Option<Self> {
+        if a > 20.5 || 2.0 * a != libm::floor(2.0 * a) {
+            return None;
+        }
+        let half = a != libm::floor(a);
+        let (mut value, mut factor) = if half { (0.5 * ROOT_PI, 0.5) } else { (1.0, 0.0) };
+        let mut whole = 0;
+        while factor < a {
+            factor += 1.0;
+            value *= factor;
+            whole += 1;
+        }
+        Some(Self { value, whole, half })
+    }
+
+    /// x^a, by squaring.
+    fn power(&self, x: f64) -> f64 {
+        let mut power = if self.half { libm::sqrt(x) } else { 1.0 };
+        let (mut square, mut rest) = (x, self.whole);
+        while rest > 0 {
+            if rest & 1 == 1 {
+                power *= square;
+            }
+            square *= square;
+            rest >>= 1;
+        }
+        power
+    }
+}
+
+const ROOT_PI: f64 = 1.772_453_850_905_516;

@@ -1,7 +1,8 @@
 //! The noncentral t distribution, T = (Z + δ)/S with Z standard normal and νS² chi-square: tails, quantiles, and the
 //! noncentrality that a tail asks for. ν from 1 to 10⁶, fractions allowed; δ from −1000 to 1000; tails down to 10^-300.
 //!
-//! Method: P(T > t) = E Φ(δ − tS), an integral over u = ln S by the trapezoidal rule, which converges geometrically
+//! Two methods. For whole ν of up to 400 and δ of the sign of t, a finite sum ([`whole`]): the usual case, ν = n − 1.
+//! Otherwise P(T > t) = E Φ(δ − tS), an integral over u = ln S by the trapezoidal rule, which converges geometrically
 //! because the integrand is entire: with a strip of half-width y the error is e^(−2πy/h) times the integrand's growth in
 //! that strip, which is known in closed form ([`Integrand::reach`]). The sum runs outwards from the integrand's peak, so
 //! that a tail keeps its relative precision however small. Own derivation; the trapezoidal rule's error: Trefethen &
@@ -12,6 +13,7 @@
 //! of Lenth (1989, AS 243) returns zero for δ > 38 and is not used.
 
 mod integrand;
+mod whole;
 
 use core::f64::consts::{PI, SQRT_2};
 
@@ -76,7 +78,7 @@ pub fn noncentrality(side: Side, tail: f64, t: f64, nu: f64) -> (f64, u32) {
     let (centre, mut delta) = noncentrality_start(-side.sign() * goal, t, nu);
     let mut integrals = 0;
     for _ in 0..MOST_STEPS {
-        let sums = Integrand::new(side, t, nu, delta).sums::<true>();
+        let sums = sums::<true>(side, t, nu, delta);
         integrals += 1;
         // The tail above grows with δ, the tail below falls.
         let sign = side.sign();
@@ -110,7 +112,20 @@ pub(super) fn tail(side: Side, t: f64, nu: f64, delta: f64) -> f64 {
         return normal::upper_tail(-side.sign() * delta);
     }
     let (side, t, delta) = if t < 0.0 { (side.other(), -t, -delta) } else { (side, t, delta) };
-    Integrand::new(side, t, nu, delta).sums::<false>().tail
+    sums::<false>(side, t, nu, delta).tail
+}
+
+/// By whichever method is the quicker; for t above zero.
+fn sums<const SLOPES: bool>(side: Side, t: f64, nu: f64, delta: f64) -> Sums {
+    whole::sums(side, t, nu, delta).unwrap_or_else(|| Integrand::new(side, t, nu, delta).sums::<SLOPES>())
+}
+
+/// Tail, density and derivatives by the sum and by the integral.
+#[cfg(test)]
+pub(super) fn both_ways(side: Side, t: f64, nu: f64, delta: f64) -> Option<([f64; 5], [f64; 5])> {
+    let all = |sums: Sums| [sums.tail, sums.density, sums.density_s, sums.density_x, sums.density_ssx];
+    let sum = whole::sums(side, t, nu, delta)?;
+    Some((all(sum), all(Integrand::new(side, t, nu, delta).sums::<true>())))
 }
 
 /// How many nodes an integral takes.
@@ -139,12 +154,14 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
     for _ in 0..MOST_STEPS {
         let t = root * libm::sinh(y / root);
         let (reached, slope, bend) = tail_along_t(side, t, nu, delta);
-        let at = NormalScale::new(reached, slope, bend).along(libm::sqrt(1.0 + t * t / nu), t / nu);
+        // dt/dy and the second derivative.
+        let (stretch, curve) = (libm::sqrt(1.0 + t * t / nu), t / nu);
+        let at = NormalScale::new(reached, slope, bend).along(stretch, curve);
         let miss = at.z - goal;
         let step = at.halley(miss, centre - y);
         if miss.abs() < SETTLED {
-            y += step;
-            break;
+            // From the very t of the tail, not from a rounded y.
+            return t + step * (stretch + 0.5 * step * curve);
         }
         y = bracket.step(y, (miss < 0.0) == (side == Side::Upper), step);
     }
@@ -155,8 +172,7 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
 fn tail_along_t(side: Side, t: f64, nu: f64, delta: f64) -> (f64, f64, f64) {
     let t = if t.abs() < SMALLEST_T { SMALLEST_T } else { t };
     let (mirror, own_side) = if t < 0.0 { (-1.0, side.other()) } else { (1.0, side) };
-    let Sums { tail, density_s, density_ssx, .. } =
-        Integrand::new(own_side, mirror * t, nu, mirror * delta).sums::<true>();
+    let Sums { tail, density_s, density_ssx, .. } = sums::<true>(own_side, mirror * t, nu, mirror * delta);
     (tail, -mirror * own_side.sign() * density_s, own_side.sign() * density_ssx)
 }
 

@@ -38,7 +38,7 @@ pub fn upper_quantile(risk: f64) -> f64 {
 pub fn quantile(p: f64) -> f64 {
     let q = p - 0.5;
     if q.abs() <= 0.425 {
-        return q * rational(0.180625 - q * q, &CENTRE);
+        return above_median(q);
     }
     let tail = if q < 0.0 { p } else { 1.0 - p };
     let z = if tail > 0.0 {
@@ -50,6 +50,11 @@ pub fn quantile(p: f64) -> f64 {
         f64::NAN
     };
     if q < 0.0 { -z } else { z }
+}
+
+/// The z with P(0 < Z < z) = `q`, for |q| up to 0.425.
+pub(super) fn above_median(q: f64) -> f64 {
+    q * rational(0.180625 - q * q, &CENTRE)
 }
 
 /// The ratio of two polynomials of degree 7, coefficients from the constant upwards.

@@ -40,3 +40,8 @@ pub(crate) fn visit(low: f64, high: f64, panels: u32, mut visit: impl FnMut(f64,
         }
     }
 }
+
+/// The integral of an even function from 0 to `end`, by the rule over −`end` to `end`, of which it is half.
+pub(crate) fn even(end: f64, function: impl Fn(f64) -> f64) -> f64 {
+    end * NODES.iter().map(|(node, weight)| weight * function(end * node)).sum::<f64>()
+}

@@ -158,7 +158,8 @@ proptest! {
         prop_assert!(tails.lower >= 0.0 && tails.upper >= 0.0);
     }
 
-    /// Both tails computed as such, from two different integrals, fill one.
+    /// Both tails computed as such, by two different integrals or sums, fill one. One next to 1, which nothing asks for, is
+    /// the sum of up to thousands of nodes.
     #[test]
     fn the_two_integrals_of_a_noncentral_t_fill_one(
         log_nu in 0.0..13.8, delta in -100.0_f64..100.0, z in -4.0_f64..4.0,
@@ -166,7 +167,42 @@ proptest! {
         let nu = f64::exp(log_nu);
         let t = delta + z * (1.0 + delta * delta / (2.0 * nu)).sqrt();
         let both = noncentral_t::tail(Side::Lower, t, nu, delta) + noncentral_t::tail(Side::Upper, t, nu, delta);
-        prop_assert!((both - 1.0).abs() < 1e-14, "{both}");
+        prop_assert!((both - 1.0).abs() < 3e-14, "{both}");
+    }
+
+    /// Two derivations of the same numbers: the finite sum for whole degrees of freedom and the trapezoidal rule.
+    #[test]
+    fn the_sum_of_a_noncentral_t_agrees_with_the_integral(
+        nu in 1_u32..=400, delta in prop_oneof![Just(0.0), 0.0..3.0, 0.0..150.0], z in -8.0_f64..8.0, above in any::<bool>(),
+    ) {
+        let nu = f64::from(nu);
+        let t = (delta + z * (1.0 + delta * delta / (2.0 * nu)).sqrt()).abs().max(1e-3);
+        let side = if above { Side::Upper } else { Side::Lower };
+        if let Some((sum, integral)) = noncentral_t::both_ways(side, t, nu, delta) {
+            let [tail, density, density_s, ..] = integral;
+            prop_assert!(close(sum[0], tail, 1e-12), "{} {}", sum[0], tail);
+            // The integral's nodes go where the tail is: they miss the density beside a tail next to 1.
+            if tail > 0.9 {
+                return Ok(());
+            }
+            // The sum's derivatives are those beside the point, which is enough for slopes.
+            prop_assert!(close(sum[1], density, 1e-9) && close(sum[2], density_s, 1e-9));
+            // Differences of the others: E xφ(x) = tE Sφ(x) − δE φ(x).
+            prop_assert!((sum[3] - integral[3]).abs() <= 1e-9 * (t * density_s + delta * density));
+            prop_assert!((sum[4] - integral[4]).abs() <= 1e-9 * (integral[4].abs() + (t + delta) * density_s));
+        }
+    }
+
+    #[test]
+    fn the_uniform_expansion_of_a_chi_square_agrees_with_its_series(log_nu in 5.71..13.5, z in -8.0_f64..8.0) {
+        let nu = f64::exp(log_nu);
+        let x = nu * (1.0 - 2.0 / (9.0 * nu) + z * (2.0 / (9.0 * nu)).sqrt()).powi(3);
+        if let Some((uniform, terms)) = chi_square::both_ways(x, nu) {
+            let (side, tolerance) = (if z < 0.0 { Side::Lower } else { Side::Upper }, 1e-13);
+            prop_assert!(close(uniform.on(side), terms.on(side), tolerance), "{uniform:?} {terms:?}");
+        } else {
+            prop_assert!(nu < 1000.0);
+        }
     }
 
     #[test]

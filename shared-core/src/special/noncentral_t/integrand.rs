@@ -21,7 +21,7 @@ pub(super) struct Integrand {
 pub(super) struct Sums {
     pub(super) tail: f64,
     /// What rounding has added to the tail.
-    lost: f64,
+    pub(super) lost: f64,
     /// E φ(x).
     pub(super) density: f64,
     /// E x φ(x).
