@@ -8,11 +8,12 @@ use serde::{Deserialize, Serialize};
 use crate::{
     capability::{Index, Specification},
     counts::{Decimal, Resolution},
-    interval::{Estimate, Kind, Quantile},
+    interval::{self, Ends, Estimate, Evidence, Kind, Method, MethodError, bissell, chi_square},
     quantity::{Confidence, Count, DegreesOfFreedom, Precision},
     record::RECORD_MAX,
     sigma::{self, Sigma},
-    stopping::{Goal, Standing, StoppingRule, early::EarlyError},
+    special::Side,
+    stopping::{Goal, Standing, StoppingRule, early::EarlyError, optional},
     text::Text,
 };
 
@@ -82,6 +83,9 @@ pub struct Draft {
     /// Which standard deviation the index takes. Plans from before there was a choice end above this: overall.
     #[serde(deserialize_with = "sigma::overall_if_left_out")]
     pub sigma: Sigma,
+    /// How its interval is computed. Plans from before there was a choice end above this: Bissell's.
+    #[serde(deserialize_with = "interval::bissell_if_left_out")]
+    pub method: Method,
 }
 
 /// One thing wrong with a draft. [`Fault::field`] names the field that has to change.
@@ -107,14 +111,14 @@ pub enum Fault {
     IndexNeedsLower,
     /// The index needs an upper limit.
     IndexNeedsUpper,
-    /// The index has no interval method yet.
-    IndexWithoutInterval,
+    /// The method does not suit the index and the kind of interval.
+    MethodUnsuited,
     /// Fewer than two pieces are planned.
     PlannedTooFew,
     /// More pieces are planned than the limit allows.
     PlannedAboveLimit,
-    /// The precision is an absolute width, which would bend the interval's coverage.
-    PrecisionAbsolute,
+    /// The method takes seconds on a station.
+    MethodTooSlow,
     /// The precision is zero.
     PrecisionZero,
     /// The precision cannot be reached within the limit, whatever is measured.
@@ -171,6 +175,7 @@ pub enum Field {
     Alpha,
     Looks,
     Sigma,
+    Method,
 }
 
 impl Fault {
@@ -184,9 +189,9 @@ impl Fault {
             Self::LimitsReversed | Self::IndexNeedsUpper => Field::Upper,
             Self::TargetOutside => Field::Target,
             Self::ResolutionTooCoarse => Field::Resolution,
-            Self::IndexWithoutInterval => Field::Index,
+            Self::MethodUnsuited | Self::MethodTooSlow => Field::Method,
             Self::PlannedTooFew | Self::PlannedAboveLimit | Self::PlannedNotWhole => Field::Planned,
-            Self::PrecisionAbsolute | Self::PrecisionZero => Field::Precision,
+            Self::PrecisionZero => Field::Precision,
             Self::PrecisionBeyondLimit | Self::LimitNotWhole => Field::Limit,
             Self::Baud => Field::Baud,
             Self::DataBits => Field::DataBits,
@@ -216,14 +221,14 @@ impl core::fmt::Display for Fault {
             }
             Self::IndexNeedsLower => "this index needs a lower limit: give one, or choose cpu or cpk",
             Self::IndexNeedsUpper => "this index needs an upper limit: give one, or choose cpl or cpk",
-            Self::IndexWithoutInterval => {
-                "this index has no interval method on the station yet: choose cpk, cpl, cpu or cp"
+            Self::MethodUnsuited => {
+                "the method does not suit this index and kind of interval: leave it out for the usual one"
             }
             Self::PlannedTooFew => "at least two pieces must be planned",
             Self::PlannedAboveLimit => "more pieces are planned than the limit allows: raise the limit",
-            Self::PrecisionAbsolute => {
-                "a station stops on a relative precision only, such as 10%: an absolute width would stop early \
-                 whenever the estimate is low, and the interval would cover less than it promises"
+            Self::MethodTooSlow => {
+                "this method takes seconds on a station: choose bissell or exact here, and let `donelight assess` \
+                 compute the balanced interval of the readings"
             }
             Self::PrecisionZero => "the precision must be above zero",
             Self::PrecisionBeyondLimit => {
@@ -329,7 +334,8 @@ impl Draft {
         let needs_upper = matches!(self.index, Index::Cp | Index::Cpu | Index::Cpm);
         check(some_limit && needs_lower && self.lower.is_none(), Fault::IndexNeedsLower);
         check(some_limit && needs_upper && self.upper.is_none(), Fault::IndexNeedsUpper);
-        check(self.index == Index::Cpm, Fault::IndexWithoutInterval);
+        check(self.method.promise(self.index, self.kind).is_none(), Fault::MethodUnsuited);
+        check(self.method == Method::Balanced, Fault::MethodTooSlow);
         check(self.index == Index::Cpm && self.sigma != Sigma::Overall, Fault::IndexNeedsOverall);
     }
 
@@ -365,17 +371,31 @@ impl Draft {
     }
 
     fn check_precision(&self, precision: Precision, check: &mut impl FnMut(bool, Fault)) {
-        match precision {
-            Precision::Absolute(_) => check(true, Fault::PrecisionAbsolute),
-            Precision::Relative(goal) => {
-                check(goal.0 == 0, Fault::PrecisionZero);
-                // The half-width is above z/√(2ν) whatever the estimate (Bissell 1990, the location term left out).
-                let z = Quantile::new(self.confidence, self.kind).z();
-                let nu = self.sigma.degrees_of_freedom(self.rule.limit).map_or(0.0, DegreesOfFreedom::get);
-                let goal = goal.to_f64();
-                check(goal > 0.0 && 2.0 * nu * goal * goal < z * z, Fault::PrecisionBeyondLimit);
-            }
+        check(precision.goal() == 0.0, Fault::PrecisionZero);
+        if let Precision::Relative(goal) = precision {
+            let narrowest = self.narrowest_relative_width();
+            check(goal.0 > 0 && goal.to_f64() < narrowest, Fault::PrecisionBeyondLimit);
         }
+    }
+
+    /// No relative half-width at the limit is below this, whatever the estimate: that of sigma alone.
+    fn narrowest_relative_width(&self) -> f64 {
+        let nu = match self.index {
+            Index::Cpm => DegreesOfFreedom::new(self.rule.limit.get().into()),
+            _ => self.sigma.degrees_of_freedom(self.rule.limit),
+        };
+        // A limit of fewer pieces than one subgroup is a fault of its own.
+        let Some(nu) = nu.filter(|nu| nu.get() >= 1.0) else { return 0.0 };
+        let ends = Ends::new(self.confidence, self.kind);
+        let reach = |side, tail: interval::Tail| match self.method {
+            Method::Bissell => tail.z() * bissell::standard_error_of_spread(1.0, nu),
+            // Boyles' has up to 2·10⁶ degrees of freedom, far from the target.
+            Method::Boyles => 0.0,
+            _ => libm::fabs(chi_square::limit(1.0, nu.get(), side, tail.risk()) - 1.0),
+        };
+        let low = ends.low.map_or(0.0, |tail| reach(Side::Lower, tail));
+        let high = ends.high.map_or(0.0, |tail| reach(Side::Upper, tail));
+        low.max(high)
     }
 }
 
@@ -385,7 +405,7 @@ impl Draft {
 pub struct Plan {
     draft: Draft,
     specification: Specification,
-    quantile: Quantile,
+    ends: Ends,
 }
 
 impl PartialEq for Plan {
@@ -409,15 +429,42 @@ impl Plan {
         &self.specification
     }
 
-    /// Judges a study of `n` pieces by the rule, at whole subgroups only: see [`StoppingRule::judge`].
-    pub fn judge(&self, n: Count, estimate: impl FnOnce() -> Option<Estimate>) -> Standing {
-        if self.sigma.ends_at(n) { self.rule.judge(n, estimate) } else { Standing::Gathering }
+    /// The index with its interval, by the plan's method: with a precision as the goal, one that allows for the stop
+    /// ([`optional`]).
+    ///
+    /// # Errors
+    /// As for [`interval::limit`].
+    pub fn estimate(&self, evidence: &Evidence) -> Result<Estimate, MethodError> {
+        let ends = match self.rule.precision() {
+            Some(precision) => &optional::ends(precision, &self.ends, evidence),
+            None => &self.ends,
+        };
+        interval::with_ends(self.method, evidence, ends)
     }
 
-    /// The quantile of its confidence and kind, computed once.
-    #[must_use]
-    pub fn quantile(&self) -> &Quantile {
-        &self.quantile
+    /// Judges a study of `n` pieces by the rule, at whole subgroups only: see [`StoppingRule::judge`].
+    pub fn judge(&self, n: Count, evidence: impl FnOnce() -> Option<Evidence>) -> Standing {
+        if !self.sigma.ends_at(n) {
+            return Standing::Gathering;
+        }
+        self.rule.judge(n, evidence, |evidence, precision| {
+            (self.method == Method::Bissell || self.is_near(evidence, precision))
+                && self
+                    .estimate(evidence)
+                    .is_ok_and(|estimate| precision.allows(estimate.half_width, estimate.estimate))
+        })
+    }
+
+    /// Whether Bissell's half-width, which costs next to nothing, is at most a quarter above the goal. That is part of the
+    /// rule: no other method is asked before.
+    fn is_near(&self, evidence: &Evidence, precision: Precision) -> bool {
+        let Evidence { index, estimate, n, nu, .. } = *evidence;
+        let error = match index {
+            Index::Cp | Index::Cpm => bissell::standard_error_of_spread(estimate, nu),
+            Index::Cpk | Index::Cpl | Index::Cpu => bissell::standard_error(estimate, n, nu),
+        };
+        let z = self.ends.low.or(self.ends.high).map_or(0.0, |tail| tail.z());
+        precision.achieved(z * error, estimate) <= 1.25 * precision.goal()
     }
 }
 
@@ -438,8 +485,8 @@ impl TryFrom<Draft> for Plan {
         }
         match Specification::new(draft.lower, draft.upper, draft.target) {
             Ok(specification) => {
-                let quantile = Quantile::new(draft.confidence, draft.kind);
-                Ok(Self { draft, specification, quantile })
+                let ends = Ends::new(draft.confidence, draft.kind);
+                Ok(Self { draft, specification, ends })
             }
             // The draft's own checks are at least as strict.
             Err(_) => Err(Fault::NoLimit),

@@ -8,7 +8,7 @@ use serde::{Deserialize, Serialize};
 use crate::{
     capability::Sample,
     counts::Counts,
-    interval::{self, Estimate},
+    interval::{Estimate, Evidence},
     moments::Moments,
     plan::Plan,
     quantity::Count,
@@ -129,17 +129,23 @@ impl Study {
         self.tally.sample(self.plan.resolution, self.plan.specification()).ok()
     }
 
+    /// The estimate of the plan's index and what it rests on; `None` where there is no sample yet.
+    #[must_use]
+    pub fn evidence(&self) -> Option<Evidence> {
+        Evidence::of(&self.sample()?, self.plan.index).ok()
+    }
+
     /// The plan's index with its interval, as of now; `None` where there is no sample yet.
     #[must_use]
     pub fn estimate(&self) -> Option<Estimate> {
-        interval::with_quantile(&self.sample()?, self.plan.index, self.plan.quantile()).ok()
+        self.plan.estimate(&self.evidence()?).ok()
     }
 
     /// What is decided about the plan's claim; `None` if it claims nothing, or nothing is decided yet.
     #[must_use]
     pub fn decision(&self) -> Option<Decision> {
         let early = self.plan.rule.early().filter(|_| self.standing == Standing::Settled)?;
-        early.decide(self.moments().n(), self.estimate()?.estimate)
+        early.decide(self.moments().n(), self.evidence()?.estimate)
     }
 
     /// Whether a look decides and only the operator's look at what holds the study is wanted: what is measured
@@ -147,7 +153,7 @@ impl Study {
     fn decided_though_held(&self) -> bool {
         self.held.is_some()
             && self.plan.rule.early().is_some()
-            && self.plan.judge(self.moments().n(), || self.estimate()) != Standing::Gathering
+            && self.plan.judge(self.moments().n(), || self.evidence()) != Standing::Gathering
     }
 
     fn reading(&mut self, seq: Seq, counts: Counts) {
@@ -190,7 +196,7 @@ impl Study {
     fn judge(&mut self) {
         self.standing = match self.held {
             Some(_) => Standing::Gathering,
-            None => self.plan.judge(self.moments().n(), || self.estimate()),
+            None => self.plan.judge(self.moments().n(), || self.evidence()),
         };
     }
 }

@@ -1,17 +1,18 @@
 //! When it is enough: the planned count **and** the wanted precision, up to a limit; or a decision about a claim, at
 //! looks that are named beforehand ([`early`]).
 //!
-//! A precision is a relative half-width (for a bound: its relative distance from the estimate). In
-//! z·√(1/(9nĈ²) + 1/(2ν)) ≤ r the estimate stands only in the first, small term, so the number of pieces at the stop
-//! is nearly fixed and the coverage stays what it was. An absolute width would stop early when the estimate happens
-//! to be low, and "until the lower limit passes" would be no test at all: neither is offered as a rule.
+//! A precision is a half-width (for a bound: its distance from the estimate), as a fraction of the estimate or of the index
+//! itself. In z·√(1/(9nĈ²) + 1/(2ν)) ≤ r the estimate stands only in the first, small term, so the number of pieces at a
+//! relative stop is nearly fixed. An absolute width stops early where the estimate happens to be low. What either does to
+//! the interval, [`optional`] makes up for. "Until the lower limit passes" would be no test at all and is not offered.
 
 pub mod early;
+pub mod optional;
 
 use serde::{Deserialize, Serialize};
 
 use crate::{
-    interval::Estimate,
+    interval::Evidence,
     quantity::{Count, Millionths, Precision},
 };
 use early::EarlyDecision;
@@ -106,17 +107,23 @@ impl StoppingRule {
         }
     }
 
-    /// Judges a study of `n` pieces. `estimate` is called only where it can matter, since it costs the device time; it
-    /// gives `None` where there is no estimate (no spread yet, say), and then the goal is not reached.
-    pub fn judge(&self, n: Count, estimate: impl FnOnce() -> Option<Estimate>) -> Standing {
+    /// Judges a study of `n` pieces. `evidence` is called only where it can matter, since it costs the device time; it
+    /// gives `None` where there is no estimate (no spread yet, say), and then the goal is not reached. `precise` says
+    /// whether the interval of such evidence is as narrow as wanted.
+    pub fn judge(
+        &self,
+        n: Count,
+        evidence: impl FnOnce() -> Option<Evidence>,
+        precise: impl FnOnce(&Evidence, Precision) -> bool,
+    ) -> Standing {
         let precision = match &self.goal {
-            Goal::Decision(early) => return early.judge(n, || estimate().map(|e| e.estimate)),
-            Goal::Precision(precision) => precision,
+            Goal::Decision(early) => return early.judge(n, || evidence().map(|e| e.estimate)),
+            Goal::Precision(precision) => *precision,
         };
         if n < self.planned {
             return Standing::Gathering;
         }
-        if estimate().is_some_and(|e| precision.allows(e.half_width, e.estimate)) {
+        if evidence().is_some_and(|evidence| precise(&evidence, precision)) {
             Standing::Settled
         } else if n >= self.limit {
             Standing::Spent

@@ -8,7 +8,6 @@
 //! 98.7 % for a lower bound and 91.2 % to 95.4 % for an upper bound (own computation by exact integration, indices 0.8
 //! to 2.0, all positions of the mean).
 
-use super::{Interval, Quantile, symmetric};
 use crate::quantity::{Count, DegreesOfFreedom};
 
 /// The standard error of Cpk, Cpl or Cpu at `value`. Infinite without pieces.
@@ -23,10 +22,4 @@ pub fn standard_error(value: f64, n: Count, nu: DegreesOfFreedom) -> f64 {
 #[must_use]
 pub fn standard_error_of_spread(value: f64, nu: DegreesOfFreedom) -> f64 {
     libm::sqrt(value * value / (2.0 * nu.get()))
-}
-
-/// The interval of Cpk, Cpl or Cpu around an estimate.
-#[must_use]
-pub fn interval(estimate: f64, n: Count, nu: DegreesOfFreedom, quantile: &Quantile) -> Interval {
-    symmetric(estimate, standard_error(estimate, n, nu), quantile)
 }

@@ -3,17 +3,19 @@
 use core::fmt;
 use core::str::FromStr;
 
-use serde::{Deserialize, Serialize};
+use serde::{Deserializer, Serialize, de};
 
-use super::{Estimate, Interval, Kind, balanced, bissell, boyles, chi_square, exact, noncentral_t};
+use super::{
+    Ends, Estimate, Interval, Kind, Tail, balanced, bissell, boyles, chi_square, exact, noncentral_t,
+};
 use crate::capability::{Index, IndexError, Sample};
 use crate::quantity::{Confidence, Count, DegreesOfFreedom};
-use crate::special::{Side, normal};
+use crate::special::Side;
 
 /// How an interval is computed. Variants are only ever added at the end.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, Serialize)]
+#[serde(into = "u8")]
 #[cfg_attr(feature = "defmt", derive(defmt::Format))]
-#[serde(rename_all = "kebab-case")]
 pub enum Method {
     /// [`chi_square`]: Cp and Cpm.
     ChiSquare,
@@ -29,6 +31,27 @@ pub enum Method {
     Balanced,
 }
 
+/// A method, or Bissell's where the stored bytes end before one.
+pub(crate) fn bissell_if_left_out<'de, D: Deserializer<'de>>(deserializer: D) -> Result<Method, D::Error> {
+    struct Stored;
+
+    impl<'de> de::Visitor<'de> for Stored {
+        type Value = Method;
+
+        fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+            f.write_str("a method, or nothing more")
+        }
+
+        fn visit_seq<A: de::SeqAccess<'de>>(self, mut stored: A) -> Result<Method, A::Error> {
+            // A byte fails to be read only where the bytes end.
+            let Ok(Some(code)) = stored.next_element::<u8>() else { return Ok(Method::Bissell) };
+            Method::try_from(code).map_err(de::Error::custom)
+        }
+    }
+
+    deserializer.deserialize_tuple(1, Stored)
+}
+
 /// What a method promises of an index.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Promise {
@@ -42,7 +65,8 @@ pub enum Promise {
 
 impl Method {
     /// All methods, in the order in which they are listed.
-    pub const ALL: [Self; 5] = [Self::ChiSquare, Self::NoncentralT, Self::Bissell, Self::Exact, Self::Boyles];
+    pub const ALL: [Self; 6] =
+        [Self::ChiSquare, Self::NoncentralT, Self::Bissell, Self::Exact, Self::Balanced, Self::Boyles];
 
     /// The name as it is written.
     #[must_use]
@@ -85,6 +109,21 @@ impl Method {
             | (Self::Boyles, Index::Cpm, _) => Promise::Approximate,
             _ => return None,
         })
+    }
+}
+
+impl From<Method> for u8 {
+    /// The code that is stored: the place among the variants.
+    fn from(method: Method) -> Self {
+        method as Self
+    }
+}
+
+impl TryFrom<u8> for Method {
+    type Error = UnknownMethod;
+
+    fn try_from(code: u8) -> Result<Self, UnknownMethod> {
+        Self::ALL.into_iter().find(|method| u8::from(*method) == code).ok_or(UnknownMethod)
     }
 }
 
@@ -196,18 +235,19 @@ impl Evidence {
     }
 }
 
-/// One end of an interval: a fraction `risk` lies beyond it.
+/// One end of an interval, with its tail beyond it.
 ///
 /// # Errors
 /// The method does not suit the index, ν lies outside 1 to 10⁶, or the limit exceeds the range of doubles.
-pub fn limit(method: Method, evidence: &Evidence, side: Side, risk: f64) -> Result<f64, MethodError> {
+pub fn limit(method: Method, evidence: &Evidence, side: Side, tail: &Tail) -> Result<f64, MethodError> {
     let Evidence { index, estimate, n, nu, squared_offset } = *evidence;
     if !(1.0..=1e6).contains(&nu.get()) {
         return Err(MethodError::DegreesOfFreedom);
     }
-    let away = match side {
-        Side::Lower => -1.0,
-        Side::Upper => 1.0,
+    let risk = tail.risk();
+    let reach = match side {
+        Side::Lower => -tail.z(),
+        Side::Upper => tail.z(),
     };
     let limit = match (method, index) {
         (Method::ChiSquare, Index::Cp) => chi_square::limit(estimate, nu.get(), side, risk),
@@ -216,11 +256,9 @@ pub fn limit(method: Method, evidence: &Evidence, side: Side, risk: f64) -> Resu
             noncentral_t::limit(estimate, n, nu, side, risk)
         }
         (Method::Bissell, Index::Cpk | Index::Cpl | Index::Cpu) => {
-            estimate + away * normal::upper_quantile(risk) * bissell::standard_error(estimate, n, nu)
+            estimate + reach * bissell::standard_error(estimate, n, nu)
         }
-        (Method::Bissell, Index::Cp) => {
-            estimate + away * normal::upper_quantile(risk) * bissell::standard_error_of_spread(estimate, nu)
-        }
+        (Method::Bissell, Index::Cp) => estimate + reach * bissell::standard_error_of_spread(estimate, nu),
         (Method::Exact, Index::Cpk) => exact::limit(estimate, n, nu, side, risk),
         (Method::Boyles, Index::Cpm) => boyles::limit(estimate, n, squared_offset, side, risk),
         (Method::Balanced, Index::Cpk) => return Err(MethodError::TwoSidedOnly),
@@ -233,23 +271,34 @@ pub fn limit(method: Method, evidence: &Evidence, side: Side, risk: f64) -> Resu
 ///
 /// # Errors
 /// As for [`limit`].
-pub fn interval(
+pub fn of(
     method: Method,
     evidence: &Evidence,
     confidence: Confidence,
     kind: Kind,
 ) -> Result<Estimate, MethodError> {
-    let risk = kind.risk_on_a_side(confidence);
-    let end = |side, wanted: bool| {
-        if wanted { limit(method, evidence, side, risk).map(Some) } else { Ok(None) }
-    };
-    let interval = if (method, evidence.index, kind) == (Method::Balanced, Index::Cpk, Kind::TwoSided) {
-        both_ends(evidence, confidence.risk())?
+    with_ends(method, evidence, &Ends::new(confidence, kind))
+}
+
+/// The same with the ends at hand, as the station keeps them between readings.
+///
+/// # Errors
+/// As for [`limit`].
+pub fn with_ends(method: Method, evidence: &Evidence, ends: &Ends) -> Result<Estimate, MethodError> {
+    let end = |side, tail: Option<Tail>| tail.map(|tail| limit(method, evidence, side, &tail)).transpose();
+    let balanced = (method, evidence.index) == (Method::Balanced, Index::Cpk);
+    let interval = if balanced && ends.low.is_some() && ends.high.is_some() {
+        both_ends(evidence, ends.risk())?
     } else {
-        Interval { low: end(Side::Lower, kind != Kind::Upper)?, high: end(Side::Upper, kind != Kind::Lower)? }
+        Interval { low: end(Side::Lower, ends.low)?, high: end(Side::Upper, ends.high)? }
     };
     let estimate = evidence.estimate;
-    Ok(Estimate { estimate, interval, half_width: interval.half_width(estimate) })
+    let half_width = interval.half_width(estimate);
+    if half_width.is_finite() {
+        Ok(Estimate { estimate, interval, half_width })
+    } else {
+        Err(IndexError::NotFinite.into())
+    }
 }
 
 /// The balanced interval, whose ends depend on each other.

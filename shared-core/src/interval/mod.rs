@@ -1,4 +1,4 @@
-//! Confidence intervals of capability indices: what they are, and the one way to compute them. One file a method.
+//! Confidence intervals of capability indices: what they are, and the one way to compute them ([`of`]). One file a method.
 
 pub mod balanced;
 pub mod bissell;
@@ -14,10 +14,11 @@ use core::str::FromStr;
 
 use serde::{Deserialize, Serialize};
 
-pub use method::{Evidence, Method, MethodError, Promise, UnknownMethod, interval as by_method, limit};
+pub use method::{Evidence, Method, MethodError, Promise, UnknownMethod, limit, of, with_ends};
 
-use crate::capability::{Index, IndexError, Sample};
-use crate::quantity::{Confidence, Count, DegreesOfFreedom};
+pub(crate) use method::bissell_if_left_out;
+
+use crate::quantity::Confidence;
 use crate::special::normal;
 
 /// What an interval bounds. Stored in plans: variants are only ever added at the end.
@@ -106,30 +107,61 @@ impl Interval {
     }
 }
 
-/// The normal quantile z that a confidence and a kind of interval ask for: computed once, used at every reading.
+/// What one end of an interval leaves beyond it: a risk, and the same as a normal quantile. Methods that approximate by the
+/// normal distribution take the one, exact ones the other.
 #[derive(Clone, Copy, Debug, PartialEq)]
-pub struct Quantile {
+pub struct Tail {
+    risk: f64,
     z: f64,
-    kind: Kind,
 }
 
-impl Quantile {
-    /// z of half the risk for a two-sided interval, of the whole risk for a bound.
+impl Tail {
+    /// A tail of so much risk, above 0 and below 1.
     #[must_use]
-    pub fn new(confidence: Confidence, kind: Kind) -> Self {
-        Self { z: normal::upper_quantile(kind.risk_on_a_side(confidence)), kind }
+    pub fn of(risk: f64) -> Self {
+        Self { risk, z: normal::upper_quantile(risk) }
     }
 
-    /// The plain number, 0 or more.
+    /// The risk.
+    #[must_use]
+    pub const fn risk(&self) -> f64 {
+        self.risk
+    }
+
+    /// The normal quantile z that has this risk above it.
     #[must_use]
     pub const fn z(&self) -> f64 {
         self.z
     }
 
-    /// The kind of interval that it is for.
+    /// The tail whose quantile lies further out by `shift`.
     #[must_use]
-    pub const fn kind(&self) -> Kind {
-        self.kind
+    pub fn moved_out(&self, shift: f64) -> Self {
+        let z = self.z + shift;
+        Self { risk: normal::upper_tail(z), z }
+    }
+}
+
+/// The ends that a confidence and a kind of interval ask for, each by its tail: computed once, used at every reading.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Ends {
+    /// Below the interval; `None` if it has no lower end.
+    pub low: Option<Tail>,
+    /// Above the interval; `None` if it has no upper end.
+    pub high: Option<Tail>,
+}
+
+impl Ends {
+    /// Half of the risk at each end of a two-sided interval, all of it at a bound.
+    #[must_use]
+    pub fn new(confidence: Confidence, kind: Kind) -> Self {
+        let tail = Tail::of(kind.risk_on_a_side(confidence));
+        Self { low: (kind != Kind::Upper).then_some(tail), high: (kind != Kind::Lower).then_some(tail) }
+    }
+
+    /// The risk of both together.
+    fn risk(&self) -> f64 {
+        self.low.map_or(0.0, |tail| tail.risk) + self.high.map_or(0.0, |tail| tail.risk)
     }
 }
 
@@ -142,94 +174,6 @@ pub struct Estimate {
     pub interval: Interval,
     /// How far the interval reaches from the estimate: see [`Interval::half_width`].
     pub half_width: f64,
-}
-
-/// Why there is no interval.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
-#[cfg_attr(feature = "defmt", derive(defmt::Format))]
-pub enum IntervalError {
-    /// There is no estimate either.
-    Index(IndexError),
-    /// No method for this index yet.
-    NoMethodYet(Index),
-}
-
-impl fmt::Display for IntervalError {
-    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        match self {
-            Self::Index(error) => error.fmt(f),
-            Self::NoMethodYet(index) => write!(f, "no interval for {index} yet; choose cpk, cpl, cpu or cp"),
-        }
-    }
-}
-
-impl core::error::Error for IntervalError {}
-
-impl From<IndexError> for IntervalError {
-    fn from(error: IndexError) -> Self {
-        Self::Index(error)
-    }
-}
-
-/// The estimate of an index and its interval.
-///
-/// # Errors
-/// The index needs something the specification lacks, or has no method yet.
-pub fn of(
-    sample: &Sample,
-    index: Index,
-    confidence: Confidence,
-    kind: Kind,
-) -> Result<Estimate, IntervalError> {
-    with_quantile(sample, index, &Quantile::new(confidence, kind))
-}
-
-/// The same with the quantile at hand, as the station keeps it between readings.
-///
-/// # Errors
-/// As for [`of`].
-pub fn with_quantile(sample: &Sample, index: Index, quantile: &Quantile) -> Result<Estimate, IntervalError> {
-    around(index, sample.estimate(index)?, sample.n(), sample.nu(), quantile)
-}
-
-/// The interval that an estimate from n pieces and ν degrees of freedom has: samples and sample sizes share it.
-pub(crate) fn around(
-    index: Index,
-    estimate: f64,
-    n: Count,
-    nu: DegreesOfFreedom,
-    quantile: &Quantile,
-) -> Result<Estimate, IntervalError> {
-    let interval = symmetric(estimate, standard_error(index, estimate, n, nu)?, quantile);
-    let half_width = interval.half_width(estimate);
-    if half_width.is_finite() {
-        Ok(Estimate { estimate, interval, half_width })
-    } else {
-        Err(IndexError::NotFinite.into())
-    }
-}
-
-/// The standard error of an index at `value`, by the method that this index has.
-pub(crate) fn standard_error(
-    index: Index,
-    value: f64,
-    n: Count,
-    nu: DegreesOfFreedom,
-) -> Result<f64, IntervalError> {
-    match index {
-        Index::Cpk | Index::Cpl | Index::Cpu => Ok(bissell::standard_error(value, n, nu)),
-        Index::Cp => Ok(bissell::standard_error_of_spread(value, nu)),
-        Index::Cpm => Err(IntervalError::NoMethodYet(index)),
-    }
-}
-
-/// Estimate ∓ z standard errors, or the one end that the kind asks for.
-fn symmetric(estimate: f64, standard_error: f64, quantile: &Quantile) -> Interval {
-    let reach = quantile.z * standard_error;
-    Interval {
-        low: (quantile.kind != Kind::Upper).then_some(estimate - reach),
-        high: (quantile.kind != Kind::Lower).then_some(estimate + reach),
-    }
 }
 
 #[cfg(test)]

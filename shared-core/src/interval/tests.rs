@@ -1,8 +1,8 @@
 use std::string::ToString;
 
 use super::*;
-use crate::capability::Specification;
-use crate::quantity::Precision;
+use crate::capability::{Index, IndexError, Sample, Specification};
+use crate::quantity::{Count, Precision};
 
 const NINETY_FIVE: Confidence = Confidence::NINETY_FIVE_PERCENT;
 
@@ -10,6 +10,10 @@ fn sample(lower: &str, upper: &str, target: &str) -> Sample {
     let number = |text: &str| (!text.is_empty()).then(|| text.parse().unwrap());
     let specification = Specification::new(number(lower), number(upper), number(target)).unwrap();
     Sample::from_summary(Count::new(50).unwrap(), 0.0, 1.0, &specification).unwrap()
+}
+
+fn bissell(sample: &Sample, index: Index, kind: Kind) -> Result<Estimate, MethodError> {
+    of(Method::Bissell, &Evidence::of(sample, index)?, NINETY_FIVE, kind)
 }
 
 #[test]
@@ -42,7 +46,7 @@ fn a_precision_is_reached_at_its_goal_and_not_above() {
 #[test]
 fn each_kind_has_the_ends_it_is_named_for_and_a_bound_lies_nearer() {
     let sample = sample("-4", "5", "");
-    let of = |kind| of(&sample, Index::Cpk, NINETY_FIVE, kind).unwrap();
+    let of = |kind| bissell(&sample, Index::Cpk, kind).unwrap();
     let (both, lower, upper) = (of(Kind::TwoSided), of(Kind::Lower), of(Kind::Upper));
     assert_eq!((lower.interval.high, upper.interval.low), (None, None));
     assert!(both.interval.low.unwrap() < lower.interval.low.unwrap());
@@ -54,18 +58,20 @@ fn each_kind_has_the_ends_it_is_named_for_and_a_bound_lies_nearer() {
 #[test]
 fn the_interval_of_cp_leaves_out_the_term_of_the_mean() {
     let sample = sample("-4", "4", "");
-    let [cp, cpk] =
-        [Index::Cp, Index::Cpk].map(|index| of(&sample, index, NINETY_FIVE, Kind::TwoSided).unwrap());
+    let [cp, cpk] = [Index::Cp, Index::Cpk].map(|index| bissell(&sample, index, Kind::TwoSided).unwrap());
     assert_eq!(cp.estimate, cpk.estimate);
-    let z = Quantile::new(NINETY_FIVE, Kind::TwoSided).z();
+    let z = Ends::new(NINETY_FIVE, Kind::TwoSided).low.unwrap().z();
     assert!((cp.half_width - z * cp.estimate / 98_f64.sqrt()).abs() < 1e-15);
     assert!((cpk.half_width.powi(2) - cp.half_width.powi(2) - z * z / 450.0).abs() < 1e-15);
 }
 
 #[test]
-fn an_index_without_estimate_or_method_has_no_interval() {
-    let of = |sample, index| of(&sample, index, NINETY_FIVE, Kind::TwoSided);
-    assert_eq!(of(sample("-4", "4", "0"), Index::Cpm), Err(IntervalError::NoMethodYet(Index::Cpm)));
+fn an_index_without_estimate_or_suited_method_has_no_interval() {
+    let of = |sample: Sample, index| bissell(&sample, index, Kind::TwoSided);
+    assert_eq!(
+        of(sample("-4", "4", "0"), Index::Cpm),
+        Err(MethodError::Unsuited { method: Method::Bissell, index: Index::Cpm })
+    );
     assert_eq!(of(sample("-4", "", ""), Index::Cp), Err(IndexError::MissingUpper.into()));
     // The estimate is a number, its square is not.
     let huge = Specification::new(None, Some("3".parse().unwrap()), None).unwrap();
@@ -76,7 +82,7 @@ fn an_index_without_estimate_or_method_has_no_interval() {
 #[test]
 fn a_negative_estimate_has_the_width_of_its_mirror_image_and_never_a_relative_precision() {
     let (above, below) = (sample("", "-3", ""), sample("", "3", ""));
-    let [above, below] = [above, below].map(|s| of(&s, Index::Cpk, NINETY_FIVE, Kind::TwoSided).unwrap());
+    let [above, below] = [above, below].map(|s| bissell(&s, Index::Cpk, Kind::TwoSided).unwrap());
     assert_eq!((above.estimate, below.estimate), (-1.0, 1.0));
     assert_eq!(above.half_width, below.half_width);
     let relative = Precision::Relative(crate::quantity::Millionths(u32::MAX));

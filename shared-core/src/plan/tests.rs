@@ -28,6 +28,7 @@ pub(crate) fn draft() -> Draft {
         gauge: LineSettings::default(),
         same_in_a_row: 8,
         sigma: Sigma::Overall,
+        method: Method::Bissell,
     }
 }
 
@@ -99,17 +100,21 @@ fn each_contradiction_is_its_own_fault() {
     assert_eq!(faults(|d| (d.index, d.lower) = (Index::Cpl, None)), [Fault::IndexNeedsLower]);
     assert_eq!(faults(|d| (d.index, d.upper) = (Index::Cpu, None)), [Fault::IndexNeedsUpper]);
     assert_eq!(faults(|d| (d.index, d.upper) = (Index::Cp, None)), [Fault::IndexNeedsUpper]);
-    assert_eq!(faults(|d| d.index = Index::Cpm), [Fault::IndexWithoutInterval]);
+    assert_eq!(faults(|d| d.index = Index::Cpm), [Fault::MethodUnsuited]);
+    assert_eq!(faults(|d| (d.index, d.method) = (Index::Cpm, Method::ChiSquare)), []);
+    assert_eq!(faults(|d| d.method = Method::Balanced), [Fault::MethodTooSlow]);
+    assert_eq!(
+        faults(|d| (d.kind, d.method) = (Kind::Lower, Method::Balanced)),
+        [Fault::MethodUnsuited, Fault::MethodTooSlow]
+    );
     assert_eq!(faults(|d| d.rule.planned = count(1)), [Fault::PlannedTooFew]);
     assert_eq!(faults(|d| d.rule.planned = count(261)), [Fault::PlannedAboveLimit]);
-    assert_eq!(
-        faults(|d| d.rule.goal = Goal::Precision(Precision::Absolute(Millionths(150_000)))),
-        [Fault::PrecisionAbsolute]
-    );
-    assert_eq!(
-        faults(|d| d.rule.goal = Goal::Precision(Precision::Relative(Millionths(0)))),
-        [Fault::PrecisionZero]
-    );
+    for zero in [Precision::Relative(Millionths(0)), Precision::Absolute(Millionths(0))] {
+        assert_eq!(faults(|d| d.rule.goal = Goal::Precision(zero)), [Fault::PrecisionZero]);
+    }
+    // However good the process is not, an absolute width can be reached.
+    let absolute = Precision::Absolute(Millionths(50_000));
+    assert_eq!(faults(|d| d.rule.goal = Goal::Precision(absolute)), []);
     assert_eq!(faults(|d| d.gauge.baud = 299), [Fault::Baud]);
     assert_eq!(faults(|d| d.gauge.baud = 115_201), [Fault::Baud]);
     assert_eq!(faults(|d| d.gauge.data_bits = 9), [Fault::DataBits]);
@@ -136,7 +141,7 @@ fn a_study_in_subgroups_is_planned_and_limited_in_whole_ones() {
     assert_eq!(within(Sigma::Total(five), 260, 300), [Fault::SigmaTotal]);
     assert_eq!(
         faults(|d| (d.index, d.sigma) = (Index::Cpm, Sigma::MovingRanges))[..2],
-        [Fault::IndexWithoutInterval, Fault::IndexNeedsOverall]
+        [Fault::MethodUnsuited, Fault::IndexNeedsOverall]
     );
 }
 
@@ -164,16 +169,20 @@ fn a_precision_beyond_the_limit_is_found_by_the_degrees_of_freedom_there() {
     }
 }
 
-/// Records of plans lie in journals and ledgers; those from before there was a choice of sigma end before it.
+/// Records of plans lie in journals and ledgers; those from before there was a choice of sigma, or of a method, end before it.
 #[test]
-fn a_plan_from_before_there_was_a_choice_of_sigma_has_the_overall_one() {
+fn a_plan_from_before_there_was_a_choice_has_overall_sigma_and_bissells_interval() {
     let mut bytes = [0; 300];
     let used = postcard::to_slice(&draft(), &mut bytes).unwrap().len();
-    let before = bytes.get(..used - 2).unwrap();
-    assert_eq!(postcard::from_bytes::<Draft>(before).unwrap(), draft());
-    assert!(postcard::from_bytes::<Draft>(&bytes[..used - 1]).is_err());
-    bytes[used - 2] = 5;
-    assert!(postcard::from_bytes::<Draft>(&bytes[..used]).is_err(), "a sigma of a newer version");
+    for left_out in [1, 3] {
+        let before = bytes.get(..used - left_out).unwrap();
+        assert_eq!(postcard::from_bytes::<Draft>(before).unwrap(), draft());
+    }
+    assert!(postcard::from_bytes::<Draft>(&bytes[..used - 2]).is_err());
+    bytes[used - 1] = 6;
+    assert!(postcard::from_bytes::<Draft>(&bytes[..used]).is_err(), "a method of a newer version");
+    bytes[used - 3] = 5;
+    assert!(postcard::from_bytes::<Draft>(&bytes[..used - 1]).is_err(), "a sigma of a newer version");
 }
 
 /// A plan that decides early, with as many looks as the longest texts leave room for.
@@ -244,13 +253,13 @@ fn bytes_of(draft: &Draft) -> std::string::String {
 }
 
 /// These bytes lie in journals and ledgers. The first ones were written by the version before claims could be decided
-/// early, but for the sigma at the end, which it did not write; the others are the same plan with another rule.
+/// early, but for sigma and method at the end, which it did not write; the others are the same plan with another rule.
 #[test]
 fn the_bytes_of_a_plan_are_these_for_ever() {
     let (before, after) = (
         "1b6573636170656d656e74206172626f722c2066697273742072756e056172626f720e7069766f74206469616d65746572026d6d01\
          0301ca0f0201d60f0201140003f0fd3900",
-        "804b080001080000",
+        "804b08000108000002",
     );
     assert_eq!(bytes_of(&draft()), std::format!("{before}d40100a08d068402{after}"));
     let looks = "0304a09c010008807de05d0cb06db06d";

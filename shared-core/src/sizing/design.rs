@@ -27,14 +27,6 @@ impl Design {
         }
     }
 
-    /// The design of the functions that name no method.
-    ///
-    /// # Errors
-    /// [`SizingError::NoMethodYet`] for Cpm.
-    pub fn by_bissell(index: Index) -> Result<Self, SizingError> {
-        Self::new(index, Method::Bissell).map_err(|_| SizingError::NoMethodYet(index))
-    }
-
     /// The same with another sigma: n is of whole subgroups, ν is [`Sigma::degrees_of_freedom`].
     ///
     /// # Errors

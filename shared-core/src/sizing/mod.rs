@@ -10,9 +10,7 @@ use core::fmt;
 pub use decision::{Span, Truth, truth};
 pub use design::Design;
 
-use crate::capability::Index;
-use crate::interval::{IntervalError, MethodError};
-use crate::quantity::{Count, DegreesOfFreedom};
+use crate::interval::MethodError;
 
 /// Why there is no sample size.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -28,10 +26,8 @@ pub enum SizingError {
     Indistinguishable,
     /// Fewer than two pieces have no sigma.
     TooFew,
-    /// More than [`Count::MAX`] pieces would be needed.
+    /// More than [`Count::MAX`](crate::quantity::Count::MAX) pieces would be needed.
     AboveLimit,
-    /// No method for this index yet.
-    NoMethodYet(Index),
     /// The method does not suit the index, or gives no limit.
     Method(MethodError),
     /// The degrees of freedom of total sigma come out with the readings.
@@ -54,9 +50,6 @@ impl fmt::Display for SizingError {
                 "more than one million pieces would be needed; accept a wider precision, a lower confidence or power, \
                  or index values further apart"
             }
-            Self::NoMethodYet(index) => {
-                return write!(f, "no sample size for {index} yet; choose cpk, cpl, cpu or cp");
-            }
             Self::Method(error) => return error.fmt(f),
             Self::SigmaTotal => {
                 "the degrees of freedom of total sigma show only in the readings, so it has no size beforehand; size \
@@ -71,15 +64,6 @@ impl fmt::Display for SizingError {
 }
 
 impl core::error::Error for SizingError {}
-
-impl From<IntervalError> for SizingError {
-    fn from(error: IntervalError) -> Self {
-        match error {
-            IntervalError::NoMethodYet(index) => Self::NoMethodYet(index),
-            IntervalError::Index(_) => Self::IndexOutOfRange,
-        }
-    }
-}
 
 impl From<MethodError> for SizingError {
     fn from(error: MethodError) -> Self {
@@ -96,17 +80,6 @@ pub const MAX_INDEX: f64 = 1000.0;
 /// An index value that a size can be computed for.
 fn in_range(index: f64) -> Result<f64, SizingError> {
     if index > 0.0 && index <= MAX_INDEX { Ok(index) } else { Err(SizingError::IndexOutOfRange) }
-}
-
-/// ν = n − 1, or too few.
-fn overall(n: Count) -> Result<DegreesOfFreedom, SizingError> {
-    DegreesOfFreedom::overall(n).ok_or(SizingError::TooFew)
-}
-
-/// The smallest n from 2 to [`Count::MAX`] that meets a demand which, once met, stays met as n grows.
-fn smallest(meets: impl Fn(Count) -> Result<bool, SizingError>) -> Result<Count, SizingError> {
-    let count = |n| Count::new(n).ok_or(SizingError::AboveLimit);
-    count(search(2, Count::MAX.get(), |n| meets(count(n)?))?)
 }
 
 /// The smallest whole number from `first` to `most` that meets a demand which, once met, stays met.

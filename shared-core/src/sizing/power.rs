@@ -6,7 +6,6 @@
 
 use super::decision::{Decision, Outcome};
 use super::{Design, SizingError, in_range};
-use crate::capability::Index;
 use crate::quantity::{Confidence, Count, Millionths};
 
 /// A sample size by power.
@@ -22,48 +21,17 @@ pub struct PowerSize {
     pub critical: f64,
 }
 
-/// The smallest n at which the claim `claim` is rejected with probability `power` or more if the index is `against`,
-/// and with probability `alpha` if the claim holds.
-///
-/// The search is right because a power of 50 % or more, once reached, grows with n: critical − c1 (towards c0) is then
-/// not negative, and grows since se(c0) falls, while it is divided by se(c1), which falls too. Below 50 % the power need
-/// not grow, but no power below 50 % can be asked for ([`Confidence`]).
-///
-/// # Errors
-/// Index values that are equal or not above zero, an index without a method, `alpha` of 0 or above 50 %, or a demand
-/// beyond [`Count::MAX`] pieces.
-pub fn smallest(
-    index: Index,
-    claim: f64,
-    against: f64,
-    alpha: Millionths,
-    power: Confidence,
-) -> Result<PowerSize, SizingError> {
-    smallest_by(&Design::by_bissell(index)?, claim, against, alpha, power)
-}
-
-/// The probability that n pieces reject the claim if the index is `against`.
-///
-/// # Errors
-/// As for [`smallest`]; fewer than two pieces.
-pub fn power_at(
-    n: Count,
-    index: Index,
-    claim: f64,
-    against: f64,
-    alpha: Millionths,
-) -> Result<f64, SizingError> {
-    power_by(n, &Design::by_bissell(index)?, claim, against, alpha)
-}
-
 /// The smallest n at which a test by the design's method rejects the claim `claim` with probability `power` or more if the
 /// index is `against`, and with probability `alpha` (by that method) if the claim holds.
 ///
-/// What the test really does, [`super::truth`] tells.
+/// The search is right because a power of 50 % or more, once reached, grows with n: critical − c1 (towards c0) is then
+/// not negative, and grows since se(c0) falls, while it is divided by se(c1), which falls too. Below 50 % the power need
+/// not grow, but no power below 50 % can be asked for ([`Confidence`]). What the test really does, [`super::truth`] tells.
 ///
 /// # Errors
-/// As for [`smallest`]; a method without a test.
-pub fn smallest_by(
+/// Index values that are equal or not above zero, a method without a test, `alpha` of 0 or above 50 %, or a demand beyond
+/// [`Count::MAX`] pieces.
+pub fn smallest(
     design: &Design,
     claim: f64,
     against: f64,
@@ -80,8 +48,8 @@ pub fn smallest_by(
 /// The probability that n pieces reject the claim by the design's method if the index is `against`.
 ///
 /// # Errors
-/// As for [`smallest_by`]; too few pieces.
-pub fn power_by(
+/// As for [`smallest`]; too few pieces.
+pub fn power_at(
     n: Count,
     design: &Design,
     claim: f64,

@@ -1,6 +1,6 @@
 use super::*;
 use crate::capability::Index;
-use crate::interval::{Evidence, by_method, limit};
+use crate::interval::{Evidence, Tail, limit, of};
 use proptest::prelude::*;
 
 const LEVELS: [u32; 4] = [900_000, 950_000, 990_000, 999_000];
@@ -76,7 +76,7 @@ fn the_balanced_interval_covers_exactly_at_both_ends_and_is_narrower_than_the_co
             }
             let evidence = Evidence { index: Index::Cpk, estimate: cpk, n, nu, squared_offset: 0.0 };
             let width = |method| {
-                let given = by_method(method, &evidence, level(950_000), Kind::TwoSided).unwrap();
+                let given = of(method, &evidence, level(950_000), Kind::TwoSided).unwrap();
                 given.interval.high.unwrap() - given.interval.low.unwrap()
             };
             let (balanced, exact) = (width(Method::Balanced), width(Method::Exact));
@@ -139,10 +139,10 @@ proptest! {
             // An exact upper limit of an estimate below zero is a little higher than need be.
             if evidence.estimate.is_finite() && (method != Method::Exact || evidence.estimate > 0.0) {
                 let met = if method == Method::Balanced {
-                    let interval = by_method(method, &evidence, confidence, Kind::TwoSided).unwrap().interval;
+                    let interval = of(method, &evidence, confidence, Kind::TwoSided).unwrap().interval;
                     (if side == Side::Lower { interval.low } else { interval.high }).unwrap()
                 } else {
-                    limit(method, &evidence, side, risk).unwrap()
+                    limit(method, &evidence, side, &Tail::of(risk)).unwrap()
                 };
                 prop_assert!((met - cpk).abs() < 1e-9 * cpk, "{method} {side:?} {evidence:?}: {met}");
             }

@@ -37,8 +37,7 @@ fn a_method_gives_an_interval_exactly_where_it_promises_one() {
     for method in Method::ALL {
         for index in INDICES {
             for kind in KINDS {
-                let given =
-                    interval(method, &evidence(index, 1.2, 30), Confidence::NINETY_FIVE_PERCENT, kind);
+                let given = of(method, &evidence(index, 1.2, 30), Confidence::NINETY_FIVE_PERCENT, kind);
                 match method.promise(index, kind) {
                     Some(_) => {
                         let given = given.unwrap();
@@ -62,11 +61,14 @@ fn degrees_of_freedom_outside_the_range_and_numbers_too_large_are_refused() {
     for nu in [0.5, 2e6] {
         let nu = DegreesOfFreedom::new(nu).unwrap();
         let evidence = Evidence { nu, ..evidence(Index::Cpk, 1.2, 30) };
-        assert_eq!(limit(Method::Exact, &evidence, Side::Lower, 0.05), Err(MethodError::DegreesOfFreedom));
+        assert_eq!(
+            limit(Method::Exact, &evidence, Side::Lower, &Tail::of(0.05)),
+            Err(MethodError::DegreesOfFreedom)
+        );
     }
     for estimate in [f64::INFINITY, f64::NAN, 1e300] {
         for method in [Method::NoncentralT, Method::Exact, Method::Bissell] {
-            let refused = limit(method, &evidence(Index::Cpk, estimate, 30), Side::Upper, 0.05);
+            let refused = limit(method, &evidence(Index::Cpk, estimate, 30), Side::Upper, &Tail::of(0.05));
             assert_eq!(refused, Err(IndexError::NotFinite.into()), "{method} {estimate}");
         }
     }
@@ -78,9 +80,7 @@ fn a_mean_outside_the_limits_has_limits_too() {
         for method in [Method::Exact, Method::NoncentralT, Method::Balanced] {
             let confidence = Confidence::NINETY_FIVE_PERCENT;
             let Interval { low, high } =
-                interval(method, &evidence(Index::Cpk, estimate, 12), confidence, Kind::TwoSided)
-                    .unwrap()
-                    .interval;
+                of(method, &evidence(Index::Cpk, estimate, 12), confidence, Kind::TwoSided).unwrap().interval;
             assert!(low.unwrap() < estimate && estimate < high.unwrap(), "{method} {estimate}");
         }
     }
@@ -98,10 +98,10 @@ proptest! {
         let nu = DegreesOfFreedom::new((f64::from(n.get() - 1) * nu_factor).max(1.0)).unwrap();
         let evidence = Evidence { n, nu, ..evidence(Index::Cpk, estimate, 2) };
         let study = |cpk, position| Study { n, nu, cpk, position };
-        let upper = limit(Method::Exact, &evidence, Side::Upper, risk).unwrap();
+        let upper = limit(Method::Exact, &evidence, Side::Upper, &Tail::of(risk)).unwrap();
         let beyond = study(upper, Position::CENTRED).tails(estimate).lower;
         prop_assert!((beyond / risk - 1.0).abs() < 1e-10, "{upper} {beyond} {risk}");
-        let lower = limit(Method::Exact, &evidence, Side::Lower, risk).unwrap();
+        let lower = limit(Method::Exact, &evidence, Side::Lower, &Tail::of(risk)).unwrap();
         let root = 3.0 * f64::from(n.get()).sqrt();
         let beyond = distribution::tails(root * estimate, nu.get(), root * lower).upper;
         prop_assert!((beyond / risk - 1.0).abs() < 1e-10, "{lower} {beyond} {risk}");
@@ -116,7 +116,7 @@ proptest! {
             (Index::Cpm, Method::Boyles),
         ] {
             for side in [Side::Lower, Side::Upper] {
-                let at = |estimate, risk| limit(method, &evidence(index, estimate, n), side, risk).unwrap();
+                let at = |estimate, risk| limit(method, &evidence(index, estimate, n), side, &Tail::of(risk)).unwrap();
                 prop_assert!(at(estimate + step, risk) > at(estimate, risk));
                 let (wide, narrow) = (at(estimate, 0.5 * risk), at(estimate, risk));
                 let outwards = if side == Side::Lower { narrow - wide } else { wide - narrow };
