@@ -435,8 +435,9 @@ impl Plan {
     /// # Errors
     /// As for [`interval::limit`].
     pub fn estimate(&self, evidence: &Evidence) -> Result<Estimate, MethodError> {
-        let ends = match self.rule.precision() {
+        let ends = match self.rule.precision().filter(|_| self.rule.planned < self.rule.limit) {
             Some(precision) => &optional::ends(precision, &self.ends, evidence),
+            // The number of pieces is fixed, or a claim is decided.
             None => &self.ends,
         };
         interval::with_ends(self.method, evidence, ends)
@@ -451,7 +452,7 @@ impl Plan {
             (self.method == Method::Bissell || self.is_near(evidence, precision))
                 && self
                     .estimate(evidence)
-                    .is_ok_and(|estimate| precision.allows(estimate.half_width, estimate.estimate))
+                    .is_ok_and(|found| precision.allows(found.half_width, found.estimate))
         })
     }
 

@@ -4,7 +4,7 @@ mod bench;
 
 use bench::Bench;
 use donelight_core::capability::Index;
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::plan::{Draft, LineSettings, Parity, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Refusal;
@@ -37,6 +37,7 @@ fn plan(gauge: LineSettings) -> Plan {
         gauge,
         same_in_a_row: 0,
         sigma: Sigma::Overall,
+        method: Method::Bissell,
     })
     .unwrap()
 }

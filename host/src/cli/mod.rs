@@ -9,7 +9,7 @@ use std::path::PathBuf;
 use clap::{Args, Parser, Subcommand};
 use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::quantity::{Confidence, Millionths, Precision};
 use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
 use donelight_core::stopping::early::Spending;
@@ -73,13 +73,15 @@ pub enum Size {
 Examples:
   donelight size precision --index cpk --at 1.5 --within 10%
   donelight size precision --index cpk --at 1.33 --within 0.1 --confidence 90% --kind lower
-  donelight size precision --index cpk --at 1.5 --within 10% --subgroups 5")]
+  donelight size precision --index cpk --at 1.5 --within 10% --subgroups 5
+  donelight size precision --index cpu --at 1.5 --within 10% --method noncentral-t")]
     Precision(SizePrecision),
     /// The smallest n that tells a claimed index from another one
     #[command(after_help = "\
 Examples:
   donelight size power --index cpk --claim 1.5 --against 1.3
   donelight size power --index cpk --claim 1.33 --against 1.67 --alpha 10% --power 90%
+  donelight size power --index cpk --claim 1.5 --against 1.3 --method exact
   donelight size power --index cpk --claim 1.5 --against 1.3 --early
 
 With --early the claim is looked at after several numbers of pieces, and the study stops as soon as one of these looks
@@ -128,6 +130,13 @@ pub struct SizePrecision {
     /// Two limits, or only a lower or an upper one
     #[arg(long, value_parser = value::kind(), ignore_case = true, default_value = "two-sided")]
     pub kind: Kind,
+    /// How the interval is computed [default: chi-square for cp and cpm, noncentral-t for cpl and cpu; of cpk bissell, noncentral-t for a lower
+    /// bound, exact for an upper one]
+    #[arg(long, value_parser = value::method(), ignore_case = true)]
+    pub method: Option<Method>,
+    /// With --method boyles: the assumed distance of the mean from the target, in standard deviations
+    #[arg(long, value_name = "SIGMAS", value_parser = value::offset, default_value = "0", hide_default_value = true)]
+    pub offset: f64,
     /// Which sigma
     #[command(flatten)]
     pub sigma: SigmaChoice,
@@ -151,6 +160,10 @@ pub struct SizePower {
     /// The chance of noticing the other index: 95% or 0.95
     #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%")]
     pub power: Confidence,
+    /// How the test is computed [default: chi-square for cp and cpm, noncentral-t for cpl and cpu, bissell for cpk; exact
+    /// holds wherever the mean lies]
+    #[arg(long, value_parser = value::method(), ignore_case = true, conflicts_with = "early")]
+    pub method: Option<Method>,
     /// Which sigma
     #[command(flatten)]
     pub sigma: SigmaChoice,
@@ -397,6 +410,10 @@ pub struct Assess {
     /// Two limits, or only a lower or an upper one
     #[arg(long, value_parser = value::kind(), ignore_case = true, default_value = "two-sided")]
     pub kind: Kind,
+    /// How the interval is computed [default: chi-square for cp and cpm, noncentral-t for cpl and cpu; of cpk balanced, noncentral-t for a lower
+    /// bound, exact for an upper one]
+    #[arg(long, value_parser = value::method(), ignore_case = true)]
+    pub method: Option<Method>,
     /// The index to be shown: exit code 1 unless the lower limit reaches it
     #[arg(long, value_name = "INDEX", value_parser = value::index_value)]
     pub require: Option<Millionths>,

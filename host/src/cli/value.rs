@@ -2,7 +2,7 @@
 
 use clap::builder::{PossibleValuesParser, TypedValueParser};
 use donelight_core::capability::Index;
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::sigma::Sigma;
 use donelight_core::stopping::early::Spending;
@@ -39,6 +39,17 @@ pub(super) fn sigma() -> PossibleValuesParser {
 
 pub(super) fn kind() -> impl TypedValueParser<Value = Kind> {
     PossibleValuesParser::new(["two-sided", "lower", "upper"]).try_map(|name| name.parse::<Kind>())
+}
+
+pub(super) fn method() -> impl TypedValueParser<Value = Method> {
+    PossibleValuesParser::new(Method::ALL.map(Method::name)).try_map(|name| name.parse::<Method>())
+}
+
+/// |μ − T|/σ, as the core takes it.
+pub(super) fn offset(text: &str) -> Result<f64, String> {
+    finite(text).and_then(|offset| {
+        if (0.0..=100.0).contains(&offset) { Ok(offset) } else { Err("not from 0 to 100".to_owned()) }
+    })
 }
 
 pub(super) fn confidence(text: &str) -> Result<Confidence, String> {

@@ -4,7 +4,7 @@ use std::fs;
 use std::path::Path;
 
 use donelight_core::capability::{IndexError, Specification, SpecificationError};
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method, MethodError};
 use donelight_core::sigma::{Sigma, SubgroupSize};
 
 use crate::cli::{Assess, Summary};
@@ -54,6 +54,8 @@ enum AssessError {
     NoEstimate(Trouble),
     #[error("neither a file with its resolution nor a summary is given")]
     NothingGiven,
+    #[error("{0}")]
+    Method(#[from] MethodError),
     #[error("the degrees of freedom of total sigma come from the readings, and a summary has none")]
     TotalOfSummary,
 }
@@ -66,6 +68,7 @@ impl Explain for AssessError {
             Self::NoEstimate(Trouble::Index(_)) => "index-not-defined",
             Self::NothingGiven => "usage",
             Self::TotalOfSummary => "sigma-options",
+            Self::Method(_) => "method-options",
         }
     }
 
@@ -73,7 +76,7 @@ impl Explain for AssessError {
         match self {
             Self::RequireWithUpper => "Use --kind lower or --kind two-sided.".to_owned(),
             // The core's message says what to do.
-            Self::NoEstimate(_) => String::new(),
+            Self::NoEstimate(_) | Self::Method(_) => String::new(),
             Self::NothingGiven => "See donelight assess --help.".to_owned(),
             Self::TotalOfSummary => "Give the readings in a file, or another sigma.".to_owned(),
         }
@@ -86,6 +89,7 @@ impl Explain for AssessError {
             Self::RequireWithUpper
             | Self::NothingGiven
             | Self::TotalOfSummary
+            | Self::Method(_)
             | Self::NoEstimate(Trouble::Index(_)) => Exit::WrongUse,
         }
     }
@@ -155,12 +159,24 @@ fn study(options: &Assess, specification: Specification) -> Result<Study, Failur
             kind: options.kind,
             required: options.require,
             sigma,
+            method: method(options)?,
         },
         data,
         planned: None,
         origin,
         incidents: Vec::new(),
     })
+}
+
+/// The method that was asked for, or the default.
+fn method(options: &Assess) -> Result<Method, AssessError> {
+    let &Assess { index, kind, .. } = options;
+    let method = options.method.unwrap_or(Method::default_for(index, kind));
+    match method.promise(index, kind) {
+        Some(_) => Ok(method),
+        None if method.promise(index, Kind::TwoSided).is_some() => Err(MethodError::TwoSidedOnly.into()),
+        None => Err(MethodError::Unsuited { method, index }.into()),
+    }
 }
 
 fn full_path(path: &Path) -> String {
@@ -199,6 +215,10 @@ pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report
         lines.push(format!("  {:<4}  {:.4}  {interval}", row.index, row.estimate));
     }
     lines.push(String::new());
+    if let Ok(asked) = &analysis.asked {
+        lines.push(words::method(study, asked));
+        lines.push(String::new());
+    }
     lines.extend(words::doubts(study, analysis));
     lines.push(String::new());
     lines.push(words::SAFETY.to_owned());

@@ -114,6 +114,7 @@ pub(super) fn reported(kept: &Kept, ledger: &Path) -> Study {
             kind: plan.kind,
             required: None,
             sigma: plan.sigma,
+            method: plan.method,
         },
         data: Data::Readings {
             resolution: plan.resolution,

@@ -1,12 +1,12 @@
 //! `donelight size`: how many pieces a study needs, by precision or by power.
 
 use donelight_core::capability::Index;
-use donelight_core::interval::{Interval, Kind};
+use donelight_core::interval::{Interval, Kind, Method, coverage};
 use donelight_core::quantity::{Confidence, Count, DegreesOfFreedom, Millionths, Precision};
 use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
 use donelight_core::sizing::power::{self, PowerSize};
 use donelight_core::sizing::precision::{self, PrecisionSize};
-use donelight_core::sizing::{Design, SizingError};
+use donelight_core::sizing::{self, Design, SizingError, Span, Truth};
 use serde_json::{Value, json};
 
 use crate::cli::{Size, SizePower, SizePrecision};
@@ -20,7 +20,6 @@ impl Explain for SizingError {
     fn kind(&self) -> &'static str {
         match self {
             Self::AboveLimit => "size-above-limit",
-            Self::NoMethodYet(_) => "no-method-yet",
             Self::SigmaTotal => "no-size-beforehand",
             _ => "size-options",
         }
@@ -32,7 +31,7 @@ impl Explain for SizingError {
 
     fn exit(&self) -> Exit {
         match self {
-            Self::AboveLimit | Self::NoMethodYet(_) | Self::SigmaTotal => Exit::Refused,
+            Self::AboveLimit | Self::SigmaTotal => Exit::Refused,
             _ => Exit::WrongUse,
         }
     }
@@ -69,13 +68,9 @@ pub(super) fn run(size: &Size) -> Result<Answer, Failure> {
     }
 }
 
-fn design(index: Index, sigma: Sigma) -> Result<Design, SizingError> {
-    Design::by_bissell(index)?.with_sigma(sigma)
-}
-
 /// How the size was come by.
-fn method(sigma: Sigma, n: Count) -> String {
-    let sigma = match sigma {
+fn about(design: &Design, kind: Kind, n: Count) -> String {
+    let sigma = match design.sigma() {
         Sigma::Overall => "sigma overall with n \u{2212} 1 degrees of freedom".to_owned(),
         sigma => {
             let nu = sigma.degrees_of_freedom(n).map_or(0.0, DegreesOfFreedom::get);
@@ -84,9 +79,19 @@ fn method(sigma: Sigma, n: Count) -> String {
         }
     };
     format!(
-        "Method: normal approximation of Bissell (1990), {sigma}.\n\
-         It supposes a stable process and readings near to normal."
+        "Method: {}; {sigma}.\nIt supposes a stable process and readings near to normal.",
+        words::about_method(design.method(), design.index(), kind),
     )
+}
+
+/// The same of a test.
+fn about_test(design: &Design, n: Count) -> String {
+    about(design, Kind::Lower, n)
+}
+
+/// From the worst or best position of the mean to the other.
+fn span(span: Span) -> Value {
+    json!({ "from": span.from, "to": span.to })
 }
 
 /// "212 pieces", "260 pieces: 52 subgroups of 5".
@@ -109,10 +114,19 @@ fn with_sigma(mut json: Value, index: Index, sigma: Sigma, n: Count) -> Value {
 }
 
 fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
-    let &SizePrecision { index, at, within, confidence, kind, ref sigma } = options;
+    let &SizePrecision { index, at, within, confidence, kind, method, offset, ref sigma } = options;
     let sigma = sigma.choose(None)?;
-    let size = precision::smallest_by(&design(index, sigma)?, at.to_f64(), within, confidence, kind)?;
+    let method = method.unwrap_or(Method::default_of_plan(index, kind));
+    let design = Design::new(index, method)?.with_sigma(sigma)?.with_offset(offset)?;
+    let size = precision::smallest(&design, at.to_f64(), within, confidence, kind)?;
     let PrecisionSize { n, achieved, achieved_before, interval } = size;
+    let coverage = coverage::range(method, &design.evidence(at.to_f64(), n)?, confidence, kind);
+    let really = coverage.map_or_else(String::new, |found| {
+        format!(
+            "If that is the true {index}, such an interval covers it in {} of studies.\n",
+            words::span(found.from, found.to)
+        )
+    });
     let before = achieved_before.map_or_else(
         || "Fewer pieces have no interval.".to_owned(),
         |before| {
@@ -122,14 +136,14 @@ fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
     );
     let text = format!(
         "Measure {}.\n\nIf {index} then comes out at {}, {} is {}.\n\
-         It reaches {} from the estimate; {} is wanted. {before}\n\n{}",
+         It reaches {} from the estimate; {} is wanted. {before}\n{really}\n{}",
         in_subgroups(sigma, n),
         level::plain(at.0),
         called(confidence, kind),
         shown(&interval),
         width(within, achieved),
         wanted(within),
-        method(sigma, n),
+        about(&design, kind, n),
     );
     Ok(Answer::done(
         text,
@@ -145,7 +159,8 @@ fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
                 "within": goal_json(within),
                 "confidence": confidence.to_f64(),
                 "kind": kind.name(),
-                "method": "bissell",
+                "method": method.name(),
+                "coverage": coverage.map(|found| json!({ "from": found.from, "to": found.to })),
             }),
             index,
             sigma,
@@ -155,10 +170,22 @@ fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
 }
 
 fn by_power(options: &SizePower) -> Result<Answer, Failure> {
-    let &SizePower { index, claim, against, alpha, power, ref sigma, .. } = options;
+    let &SizePower { index, claim, against, alpha, power, method, ref sigma, .. } = options;
     let sigma = sigma.choose(None)?;
-    let size = power::smallest_by(&design(index, sigma)?, claim.to_f64(), against.to_f64(), alpha, power)?;
+    let method = method.unwrap_or(Method::default_of_plan(index, Kind::TwoSided));
+    let design = Design::new(index, method)?.with_sigma(sigma)?;
+    let size = power::smallest(&design, claim.to_f64(), against.to_f64(), alpha, power)?;
     let PowerSize { n, achieved, achieved_before, critical } = size;
+    let truth = sizing::truth(&design, n, critical, claim.to_f64(), against.to_f64())?;
+    let really = truth.map_or_else(String::new, |Truth { size, power }| {
+        format!(
+            "By the exact distribution a true claim is rejected with a risk of {}, and {} is noticed with {}{}.\n",
+            words::span(size.from, size.to),
+            level::plain(against.0),
+            words::span(power.from, power.to),
+            if size.from < size.to { ", depending on where the mean lies" } else { "" },
+        )
+    });
     let side = if against < claim { "below" } else { "above" };
     let before = achieved_before.map_or_else(
         || "Fewer pieces have no test.".to_owned(),
@@ -169,13 +196,13 @@ fn by_power(options: &SizePower) -> Result<Answer, Failure> {
     );
     let text = format!(
         "Measure {}.\n\nReject the claim that {index} is {} if the estimate is {side} {critical:.4}.\n\
-         A true claim is then rejected with a risk of {}; an index of {} is noticed with {}.\n{before}\n\n{}",
+         A true claim is then rejected with a risk of {}; an index of {} is noticed with {}.\n{before}\n{really}\n{}",
         in_subgroups(sigma, n),
         level::plain(claim.0),
         level::percent(alpha.0),
         level::plain(against.0),
         percent(achieved, 4),
-        method(sigma, n),
+        about_test(&design, n),
     );
     Ok(Answer::done(
         text,
@@ -190,7 +217,9 @@ fn by_power(options: &SizePower) -> Result<Answer, Failure> {
                 "against": against.to_f64(),
                 "alpha": alpha.to_f64(),
                 "power": power.to_f64(),
-                "method": "bissell",
+                "method": method.name(),
+                "true_size": truth.map(|truth| span(truth.size)),
+                "true_power": truth.map(|truth| span(truth.power)),
             }),
             index,
             sigma,
@@ -229,7 +258,9 @@ fn early(options: &SizePower) -> Result<Answer, Failure> {
     let design = design::smallest(&question, layout.looks.into())?;
     let early = &design.early;
     let most = early.looks.last().map_or(0, |last| last.n.get());
-    let sized = power::smallest(index, claim.to_f64(), against.to_f64(), alpha, power).ok();
+    let sized = Design::new(index, Method::Bissell)
+        .and_then(|usual| power::smallest(&usual, claim.to_f64(), against.to_f64(), alpha, power))
+        .ok();
     let usual = sized.map(|size| {
         format!("(`size power` without --early says {}, by a normal approximation.)\n", size.n.get())
     });

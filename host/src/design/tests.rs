@@ -2,7 +2,7 @@
 
 use std::sync::LazyLock;
 
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Evidence, Kind, Method};
 use donelight_core::stopping::early::Decision;
 
 use super::*;
@@ -303,9 +303,10 @@ fn limits_after_an_early_decision_cover_what_they_promise() {
         for &(n, estimate, _) in &ends {
             let (n, confidence) = (Count::new(n).unwrap(), Confidence::NINETY_FIVE_PERCENT);
             let nu = donelight_core::quantity::DegreesOfFreedom::overall(n).unwrap();
-            let z = donelight_core::interval::Quantile::new(confidence, Kind::TwoSided);
-            let found = donelight_core::interval::bissell::interval(estimate, n, nu, &z);
-            naive += f64::from(u8::from(found.low.unwrap() <= index && index <= found.high.unwrap()));
+            let evidence = Evidence { index: Index::Cpk, estimate, n, nu, squared_offset: 0.0 };
+            let found = donelight_core::interval::of(Method::Bissell, &evidence, confidence, Kind::TwoSided);
+            let (low, high) = found.map(|found| (found.interval.low, found.interval.high)).unwrap();
+            naive += f64::from(u8::from(low.unwrap() <= index && index <= high.unwrap()));
         }
         // Why the report does not take the ordinary interval: it covers 91 % here.
         let naive = naive / STUDIES as f64;

@@ -1,9 +1,10 @@
 //! A plan in words: as a table of facts, and what it asks of the study.
 
+use donelight_core::capability::Index;
 use donelight_core::counts::Decimal;
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::plan::{Parity, Plan};
-use donelight_core::quantity::Precision;
+use donelight_core::quantity::{Count, Precision};
 use donelight_core::sigma::SubgroupSize;
 use donelight_core::sizing::{Design, precision};
 use donelight_core::stopping::Goal;
@@ -31,6 +32,9 @@ pub fn facts(plan: &Plan) -> Vec<(String, String)> {
     add("Resolution", with_unit(plan, plan.resolution.to_string()));
     add("Question", format!("{} with its {}", plan.index, words::interval_name(plan.confidence, plan.kind)));
     add("Sigma", words::sigma_name(plan.sigma));
+    if rule.precision().is_some() {
+        add("Method", plan.method.name().to_owned());
+    }
     match &rule.goal {
         Goal::Precision(precision) => {
             let planned = format!("{}, and never more than {}", rule.planned.get(), rule.limit.get());
@@ -92,18 +96,24 @@ fn wanted(plan: &Plan, precision: Precision) -> String {
 
 /// The pieces that the plan's precision takes if the index comes out at so much; `None` beyond the core's bound.
 fn needed(plan: &Plan, at: f64) -> Option<u32> {
-    let design = Design::by_bissell(plan.index).and_then(|design| design.with_sigma(plan.sigma)).ok()?;
-    precision::smallest_by(&design, at, plan.rule.precision()?, plan.confidence, plan.kind)
-        .ok()
-        .map(|size| size.n.get())
+    precision::smallest_of(plan, at).ok().map(Count::get)
 }
 
 /// Indices that the summary assumes.
 const ASSUMED: [f64; 4] = [1.0, 1.33, 1.67, 2.0];
 
-/// However large the index: the location term of the standard error is then next to nothing.
+/// However large the index: a relative precision is then a matter of sigma alone, as it is for Cp.
 fn floor(plan: &Plan) -> Option<u32> {
-    needed(plan, donelight_core::sizing::MAX_INDEX)
+    let precision = plan.rule.precision().filter(|precision| matches!(precision, Precision::Relative(_)))?;
+    let (index, method) = match plan.method {
+        Method::Bissell => (Index::Cp, Method::Bissell),
+        Method::NoncentralT | Method::Exact | Method::Balanced => (Index::Cp, Method::ChiSquare),
+        Method::ChiSquare => (plan.index, Method::ChiSquare),
+        Method::Boyles => return None,
+    };
+    let design = Design::new(index, method).and_then(|design| design.with_sigma(plan.sigma)).ok()?;
+    let size = precision::smallest(&design, 1.0, precision, plan.confidence, plan.kind).ok()?;
+    Some(size.n.get())
 }
 
 /// What the plan says and what it asks of the study.
@@ -156,9 +166,12 @@ fn remarks(plan: &Plan) -> Vec<String> {
                 .to_owned(),
         );
     }
+    let precision = plan.rule.precision();
+    let stops = precision.is_some_and(|precision| words::allows_for_the_stop(precision, plan.kind));
     remarks.push(format!(
-        "{} All of it supposes a stable process and readings near to normal.",
-        words::coverage(plan.kind)
+        "The interval is {}.{} All of it supposes a stable process and readings near to normal.",
+        words::about_method(plan.method, plan.index, plan.kind),
+        if stops { format!(" {}", words::ALLOWS_FOR_THE_STOP) } else { String::new() }
     ));
     remarks
 }
@@ -186,6 +199,7 @@ pub fn json(plan: &Plan) -> Value {
         "confidence": plan.confidence.to_f64(),
         "kind": plan.kind.name(),
         "sigma": plan.sigma.word(),
+        "method": plan.method.name(),
         "subgroup_size": plan.sigma.subgroup().map(SubgroupSize::get),
         "name": plan.index.trade_name(plan.sigma),
         "planned": plan.rule.planned.get(),

@@ -5,7 +5,7 @@ use std::str::FromStr;
 
 use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::plan::{Draft, Fault as DraftFault, Field, LineSettings, Parity, Plan};
 use donelight_core::quantity::{Confidence, Count};
 use donelight_core::sigma::{Sigma, SigmaError, SubgroupSize};
@@ -66,6 +66,7 @@ impl Reader<'_, '_> {
         let confidence = self.optional(&mut capability, "confidence", confidence);
         let kind = self.optional(&mut capability, "kind", word::<Kind>);
         let sigma_word = self.optional(&mut capability, "sigma", sigma_word);
+        let method = self.optional(&mut capability, "method", word::<Method>);
         capability.finish(self.faults);
         let sigma = self.sigma(&mut root, sigma_word);
         let subject = index.map(|index| {
@@ -94,6 +95,9 @@ impl Reader<'_, '_> {
             gauge,
             same_in_a_row: same_in_a_row.unwrap_or(0),
             sigma,
+            method: method.unwrap_or_else(|| {
+                Method::default_of_plan(index.unwrap_or(Index::Cpk), kind.unwrap_or(Kind::TwoSided))
+            }),
         }
     }
 
@@ -230,6 +234,7 @@ const fn key(field: Field) -> &'static str {
         Field::StopBits => "gauge.stop_bits",
         Field::SameInARow => "watch.same_in_a_row",
         Field::Sigma => SIGMA,
+        Field::Method => "capability.method",
         Field::Claim => "stop.early.claim",
         Field::Alpha => "stop.early.alpha",
         Field::Looks => "stop.early.looks",
@@ -255,6 +260,7 @@ fn involved(fault: DraftFault) -> Vec<&'static str> {
         }
         DraftFault::PlannedNotWhole | DraftFault::LimitNotWhole => &[SIGMA, SIZE],
         DraftFault::IndexNeedsOverall => &["capability.index"],
+        DraftFault::MethodUnsuited => &["capability.index", "capability.kind"],
         _ => &[],
     };
     others.iter().copied().chain([key(fault.field())]).collect()

@@ -175,8 +175,9 @@ fn looks(reader: &mut Reader<'_, '_>, table: &mut Table<'_>) -> Option<(usize, V
 }
 
 fn precision(taken: &Taken) -> Result<Precision, String> {
-    let level =
-        level::read(&taken.text).map_err(|_| "not a percentage; write for example \"10%\"".to_owned())?;
+    let level = level::read(&taken.text).map_err(|_| {
+        "not a precision; write for example \"10%\" of the estimate, or \"0.15\" of index".to_owned()
+    })?;
     let goal = Millionths(level.millionths);
     Ok(if level.percent { Precision::Relative(goal) } else { Precision::Absolute(goal) })
 }

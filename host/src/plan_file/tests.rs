@@ -49,14 +49,16 @@ fn each_fault_is_named_at_its_line() {
     one_fault("resolution = \"0.001\"", "resolution = true", "resolution", "not a boolean");
     one_fault("resolution = \"0.001\"", "resolution = \"0.5\"", "resolution", "less than one step");
     one_fault("target = \"12.000\"", "target = \"13\"", "specification.target", "outside");
-    one_fault("index = \"cpk\"", "index = \"cpm\"", "capability.index", "no interval method");
+    one_fault("# method = \"bissell\"", "method = \"boyles\"", "capability.method", "does not suit");
+    one_fault("# method = \"bissell\"", "method = \"balanced\"", "capability.method", "takes seconds");
+    one_fault("# method = \"bissell\"", "method = \"guess\"", "capability.method", "unknown method");
     one_fault("index = \"cpk\"", "index = \"cpz\"", "capability.index", "unknown index");
     one_fault("confidence = \"95%\"", "confidence = 95", "capability.confidence", "not between");
     one_fault("kind = \"two-sided\"", "kind = \"both\"", "capability.kind", "unknown kind");
     one_fault("planned = 212", "planned = 1", "stop.planned", "at least two");
     one_fault("planned = 212", "planned = 300", "stop.planned", "raise the limit");
     one_fault("planned = 212", "planned = 2.5", "stop.planned", "whole number");
-    one_fault("precision = \"10%\"", "precision = 0.15", "stop.precision", "relative");
+    one_fault("precision = \"10%\"", "precision = \"wide\"", "stop.precision", "not a precision");
     one_fault("precision = \"10%\"", "precision = \"0%\"", "stop.precision", "above zero");
     one_fault("baud = 9600", "baud = 200", "gauge.baud", "baud");
     one_fault("data_bits = 8", "data_bits = 9", "gauge.data_bits", "7 or 8");

@@ -2,7 +2,8 @@
 
 use donelight_core::capability::{Index, IndexError, Sample, SampleError};
 use donelight_core::counts::{Counts, Decimal, Resolution};
-use donelight_core::interval::{self, Interval, IntervalError};
+use donelight_core::interval::coverage::{self, Span};
+use donelight_core::interval::{self, Estimate, Evidence, Interval, Method, MethodError};
 use donelight_core::quantity::Count;
 use donelight_core::sigma::{Sigma, Tally};
 use donelight_core::stopping::early::EarlyDecision;
@@ -47,8 +48,13 @@ pub struct Row {
     pub index: Index,
     /// Its estimate.
     pub estimate: f64,
-    /// Its interval; `None` where there is no method yet.
+    /// Its interval; `None` where it has none.
     pub interval: Option<Interval>,
+    /// How the interval came about; `None` without one, and after an early decision.
+    pub method: Option<Method>,
+    /// How often such an interval covers, from the worst position of the mean to the best, if the true index is the
+    /// estimate and the number of pieces was fixed beforehand; `None` where that is not known.
+    pub coverage: Option<Span>,
 }
 
 /// Why there is no estimate.
@@ -151,9 +157,23 @@ fn row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> 
         } else {
             None
         };
-        return Ok(Row { index, estimate, interval });
+        return Ok(Row { index, estimate, interval, method: None, coverage: None });
     }
-    ordinary_row(study, sample, index)
+    let question = study.question;
+    let evidence = Evidence::of(sample, index)?;
+    let found = match estimate_of(study, &evidence) {
+        Ok(found) => found,
+        Err(MethodError::Index(error)) => return Err(error),
+        Err(_) => return Ok(Row { index, estimate, interval: None, method: None, coverage: None }),
+    };
+    let method = question.method_of(index);
+    Ok(Row {
+        index,
+        estimate,
+        interval: Some(found.interval),
+        method: Some(method),
+        coverage: coverage::range(method, &evidence, question.confidence, question.kind),
+    })
 }
 
 /// The ordinary interval leans to the side on which the study stopped, so it is not given for any index then.
@@ -170,15 +190,16 @@ fn after_early_decision(
     limits::interval(early, index, limits, Ending { n: sample.n(), estimate }, confidence, kind)
 }
 
-/// As for a study whose size does not depend on its estimates.
-fn ordinary_row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> {
-    let estimate = sample.estimate(index)?;
-    let interval = match interval::of(sample, index, study.question.confidence, study.question.kind) {
-        Ok(found) => Some(found.interval),
-        Err(IntervalError::NoMethodYet(_)) => None,
-        Err(IntervalError::Index(error)) => return Err(error),
-    };
-    Ok(Row { index, estimate, interval })
+/// The interval of an index: by the plan, where it is the plan's; else as for a study of fixed size.
+fn estimate_of(study: &Study, evidence: &Evidence) -> Result<Estimate, MethodError> {
+    let question = study.question;
+    match &study.planned {
+        Some((plan, _)) if evidence.index == plan.index => plan.estimate(evidence),
+        _ => {
+            let method = question.method_of(evidence.index);
+            interval::of(method, evidence, question.confidence, question.kind)
+        }
+    }
 }
 
 fn steps(study: &Study, resolution: Resolution, counted: &[Counts]) -> Vec<Step> {
@@ -194,9 +215,8 @@ fn steps(study: &Study, resolution: Resolution, counted: &[Counts]) -> Vec<Step>
             continue;
         }
         let Ok(sample) = tally.sample(resolution, &study.specification) else { continue };
-        if let Ok(Row { estimate, interval: Some(interval), .. }) =
-            ordinary_row(study, &sample, study.question.index)
-        {
+        let Ok(evidence) = Evidence::of(&sample, study.question.index) else { continue };
+        if let Ok(Estimate { estimate, interval, .. }) = estimate_of(study, &evidence) {
             steps.push(Step {
                 n: tally.moments().n().get(),
                 estimate,

@@ -1,8 +1,9 @@
 //! The report's readings as CSV and its numbers as JSON.
 
 use donelight_core::counts::Decimal;
+use donelight_core::interval::Method;
 use donelight_core::quantity::Millionths;
-use donelight_core::sigma::{Sigma, SubgroupSize};
+use donelight_core::sigma::SubgroupSize;
 use serde_json::{Value, json};
 
 use super::analysis::{Analysis, Row};
@@ -65,7 +66,8 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
         "estimate": asked.map(|row| row.estimate),
         "low": interval.and_then(|interval| interval.low),
         "high": interval.and_then(|interval| interval.high),
-        "method": interval.map(|_| if study.decided_early().is_some() { "early-decision" } else { "bissell" }),
+        "method": asked.and_then(|row| method(study, row)),
+        "coverage": asked.and_then(coverage),
         "confidence": question.confidence.to_f64(),
         "kind": question.kind.name(),
         "required": question.required.map(Millionths::to_f64),
@@ -73,7 +75,7 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
             _ if question.required.is_none() => None,
             outcome => Some(outcome == Outcome::Shown),
         },
-        "indices": analysis.rows.iter().map(|found| row(found, question.sigma)).collect::<Vec<_>>(),
+        "indices": analysis.rows.iter().map(|found| row(study, found)).collect::<Vec<_>>(),
         "lower_limit": number(specification.lower()),
         "upper_limit": number(specification.upper()),
         "target": number(specification.target()),
@@ -93,12 +95,24 @@ pub fn json(study: &Study, analysis: &Analysis) -> Value {
     })
 }
 
-fn row(row: &Row, sigma: Sigma) -> Value {
+fn method(study: &Study, row: &Row) -> Option<&'static str> {
+    row.interval?;
+    row.method.map(Method::name).or_else(|| study.decided_early().map(|_| "early-decision"))
+}
+
+/// From the worst position of the mean to the best.
+fn coverage(row: &Row) -> Option<Value> {
+    row.coverage.map(|span| json!({ "from": span.from, "to": span.to }))
+}
+
+fn row(study: &Study, row: &Row) -> Value {
     json!({
         "index": row.index.name().to_lowercase(),
-        "name": row.index.trade_name(sigma),
+        "name": row.index.trade_name(study.question.sigma),
         "estimate": row.estimate,
         "low": row.interval.and_then(|interval| interval.low),
         "high": row.interval.and_then(|interval| interval.high),
+        "method": method(study, row),
+        "coverage": coverage(row),
     })
 }

@@ -12,7 +12,7 @@ pub mod words;
 
 use donelight_core::capability::{Index, Specification};
 use donelight_core::counts::{Counts, Resolution};
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::plan::Plan;
 use donelight_core::quantity::{Confidence, Count, Millionths};
 use donelight_core::sigma::Sigma;
@@ -66,6 +66,16 @@ pub struct Question {
     pub required: Option<Millionths>,
     /// Which sigma the index takes.
     pub sigma: Sigma,
+    /// How its interval is computed. Other indices than the one asked for get their default method.
+    pub method: Method,
+}
+
+impl Question {
+    /// The method of an index's interval.
+    #[must_use]
+    pub fn method_of(&self, index: Index) -> Method {
+        if index == self.index { self.method } else { Method::default_for(index, self.kind) }
+    }
 }
 
 /// What was measured.

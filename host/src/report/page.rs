@@ -101,8 +101,7 @@ fn indices(study: &Study, analysis: &Analysis) -> Markup {
                 p {
                     "Limits: " (words::interval_name(study.question.confidence, kind))
                     ", sigma " (words::sigma_name(study.question.sigma)) ". "
-                    @if study.decided_early().is_some() { (words::AFTER_EARLY_DECISION) }
-                    @else { (words::coverage(kind)) }
+                    @if let Ok(asked) = &analysis.asked { (words::method(study, asked)) }
                     @if let Some(about) = words::about_sigma(study.question.sigma) { " " (about) }
                     " Each limit holds for its index alone."
                 }

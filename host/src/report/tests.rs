@@ -38,6 +38,7 @@ fn study() -> Study {
             kind: plan.kind,
             required: Some(Millionths(1_330_000)),
             sigma: plan.sigma,
+            method: plan.method,
         },
         data: Data::Readings { resolution: plan.resolution, readings },
         planned: Some((plan, Standing::Settled)),
@@ -208,14 +209,14 @@ fn a_study_that_is_not_finished_shows_nothing_however_good_it_looks() {
 }
 
 #[test]
-fn an_index_without_an_interval_method_shows_nothing() {
+fn an_index_without_an_interval_shows_nothing() {
     let mut study = study();
     study.question.index = Index::Cpm;
     let (analysis, page) = page_of(&study);
     let row = analysis.asked.unwrap();
     assert!(row.estimate > 1.0 && row.interval.is_none());
     assert_eq!(words::verdict(&study, &analysis::of(&study)).outcome, Outcome::NotShown);
-    assert!(page.contains("there is no interval method for it yet"));
+    assert!(page.contains("it has no interval"));
 }
 
 #[test]

@@ -2,9 +2,9 @@
 
 use donelight_core::capability::Index;
 use donelight_core::counts::{Decimal, Resolution};
-use donelight_core::interval::{Interval, Kind};
+use donelight_core::interval::{Interval, Kind, Method};
 use donelight_core::plan::Plan;
-use donelight_core::quantity::{Confidence, Count};
+use donelight_core::quantity::{Confidence, Count, Precision};
 use donelight_core::sigma::Sigma;
 use donelight_core::stopping::Standing;
 use donelight_core::stopping::early::{Decision, EarlyDecision};
@@ -144,7 +144,7 @@ fn claim(question: &Question, row: &Row) -> (Outcome, String) {
     let estimate = format!("{} is estimated at {}", row.index, number::nearest(row.estimate, 3));
     let Some(interval) = row.interval else {
         let outcome = if question.required.is_some() { Outcome::NotShown } else { Outcome::Estimate };
-        return (outcome, format!("{estimate}; there is no interval method for it yet."));
+        return (outcome, format!("{estimate}; it has no interval."));
     };
     let name = interval_name(question.confidence, question.kind);
     let shown = format!("{estimate}; its {name} is {}", interval_text(&interval));
@@ -283,11 +283,7 @@ pub fn limit(value: Decimal, resolution: Option<Resolution>) -> String {
 /// Why an index has no limits.
 #[must_use]
 pub fn no_interval(study: &Study) -> &'static str {
-    if study.decided_early().is_some() {
-        "no limits after an early decision"
-    } else {
-        "no interval method yet"
-    }
+    if study.decided_early().is_some() { "no limits after an early decision" } else { "no interval" }
 }
 
 /// How the limits come about after an early decision.
@@ -296,24 +292,88 @@ pub const AFTER_EARLY_DECISION: &str = "A study that stops where its estimate is
     for the looks: results are ordered by where the study ended, and each limit is exact or covers more, wherever the \
     process is, if it is stable and normal.";
 
-/// What the interval's method really covers; own computation, see the core's `interval::bissell`.
+/// Where the method comes from and what it promises of an index.
 #[must_use]
-pub const fn coverage(kind: Kind) -> &'static str {
-    match kind {
-        Kind::TwoSided => {
-            "The intervals are Bissell's normal approximation (1990). Of Cpk, a nominal two-sided 95 % covers 94.7 % to \
-             96.1 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
+pub const fn about_method(method: Method, index: Index, kind: Kind) -> &'static str {
+    match (method, index, kind) {
+        (Method::ChiSquare, Index::Cpm, _) => {
+            "by chi-square as if the mean were on target: it covers with the confidence or more wherever the mean lies \
+             (computed, not proven)"
         }
-        Kind::Lower => {
-            "The bounds are Bissell's normal approximation (1990). Of Cpk, a nominal lower 95 % bound covers 94.7 % to \
-             98.7 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
+        (Method::ChiSquare, ..) => "by chi-square, exact",
+        (Method::NoncentralT, Index::Cpk, Kind::Lower) => {
+            "by the noncentral t: it covers with the confidence or more wherever the mean lies"
         }
-        Kind::Upper => {
-            "The bounds are Bissell's normal approximation (1990). Of Cpk, a nominal upper 95 % bound covers 91.2 % to \
-             95.7 % in truth (n from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)."
+        (Method::NoncentralT, Index::Cpk, _) => {
+            "by the noncentral t, as if one limit mattered: an upper end covers less than the confidence if the process is \
+             centred"
+        }
+        (Method::NoncentralT, ..) => "by the noncentral t, exact",
+        (Method::Exact, ..) => {
+            "by the exact distribution, each end guarded against its worst position of the mean: it covers with the \
+             confidence or more"
+        }
+        (Method::Balanced, ..) => {
+            "by the exact distribution, the risk balanced between its ends: it covers with the confidence or more wherever \
+             the mean lies"
+        }
+        (Method::Boyles, ..) => "by Boyles' approximation (1991)",
+        (Method::Bissell, _, Kind::TwoSided) => {
+            "by Bissell's normal approximation (1990). Of Cpk, a nominal two-sided 95 % covers 94.7 % to 96.1 % in truth (n \
+             from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)"
+        }
+        (Method::Bissell, _, Kind::Lower) => {
+            "by Bissell's normal approximation (1990). Of Cpk, a nominal lower 95 % bound covers 94.7 % to 98.7 % in truth (n \
+             from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)"
+        }
+        (Method::Bissell, _, Kind::Upper) => {
+            "by Bissell's normal approximation (1990). Of Cpk, a nominal upper 95 % bound covers 91.2 % to 95.7 % in truth (n \
+             from 10 to 1000, indices from 0.8 to 2.0, a normal process at any place)"
         }
     }
 }
+
+/// "95.0 % to 96.4 %", or the one figure.
+#[must_use]
+pub fn span(from: f64, to: f64) -> String {
+    let percent = |fraction: f64| format!("{:.1} %", 100.0 * fraction);
+    let (from, to) = (percent(from), percent(to));
+    if from == to { from } else { format!("{from} to {to}") }
+}
+
+/// How the interval of the index in question came about and how often such a one really covers.
+#[must_use]
+pub fn method(study: &Study, row: &Row) -> String {
+    let Question { index, kind, .. } = study.question;
+    let Some(method) = row.method else { return AFTER_EARLY_DECISION.to_owned() };
+    let mut text = format!("The interval of {index} is {}.", about_method(method, index, kind));
+    if let Some(found) = row.coverage {
+        text.push_str(&format!(
+            " If the true {index} is the estimate, an interval from so many pieces covers it in {} of studies{}.",
+            span(found.from, found.to),
+            if found.from < found.to { ", depending on where the mean lies" } else { "" }
+        ));
+    }
+    let precision = study.planned.as_ref().and_then(|(plan, _)| plan.rule.precision());
+    if precision.is_some_and(|precision| allows_for_the_stop(precision, kind)) {
+        text.push(' ');
+        text.push_str(ALLOWS_FOR_THE_STOP);
+    }
+    text
+}
+
+/// Whether the core moves an end of the interval, since the study stops by its precision.
+#[must_use]
+pub const fn allows_for_the_stop(precision: Precision, kind: Kind) -> bool {
+    matches!(
+        (precision, kind),
+        (Precision::Relative(_), Kind::Lower) | (Precision::Absolute(_), Kind::TwoSided | Kind::Upper)
+    )
+}
+
+/// What [`allows_for_the_stop`] means.
+pub const ALLOWS_FOR_THE_STOP: &str = "It lies a little further out than that of a fixed number of pieces, since the study \
+    stops where the estimate helps it to.";
 
 /// Whatever should make the reader look twice. Not tested here, and therefore always said: stability and normality.
 #[must_use]
@@ -408,7 +468,8 @@ mod tests {
             let least = covered.iter().copied().fold(1.0, f64::min);
             let most = covered.iter().copied().fold(0.0, f64::max);
             let claim = format!("covers {:.1} % to {:.1} % in truth", 100.0 * least, 100.0 * most);
-            assert!(coverage(kind).contains(&claim), "{claim} is not in {}", coverage(kind));
+            let told = about_method(Method::Bissell, Index::Cpk, kind);
+            assert!(told.contains(&claim), "{claim} is not in {told}");
         }
     }
 

@@ -1,7 +1,7 @@
 //! Which readings cannot end a study: told cheaply and for certain, so that the interval is computed only at the others.
 //!
-//! At n pieces the relative half-width of an interval falls as the estimate grows: for Cpk, Cpl and Cpu it is
-//! z·√(1/(9nĈ²) + 1/(2ν)), for Cp it does not depend on Ĉ. So at each n there is a bar that the estimate must reach
+//! At n pieces the relative half-width of an interval falls as the estimate grows: for Cpk, Cpl and Cpu it is about
+//! z·√(1/(9nĈ²) + 1/(2ν)), for Cp it does not depend on Ĉ. (An absolute one grows; it has no bar.) So at each n there is a bar that the estimate must reach
 //! before the rule can settle. The bar is found with the core's own interval and set a little too low, and the
 //! estimate is bounded from above, by far more than rounding can matter: below the bar nothing is lost, and from the
 //! bar on the core decides. A test holds the two ways to the same end of every study.
@@ -9,15 +9,18 @@
 use std::sync::OnceLock;
 
 use donelight_core::capability::Index;
+use donelight_core::interval::Evidence;
 use donelight_core::moments::Moments;
 use donelight_core::plan::Plan;
 use donelight_core::quantity::{Count, Precision};
-use donelight_core::sizing::{MAX_INDEX, precision};
 
 use super::process::Gauged;
 
 /// Far above what rounding does to a relative half-width (10^-10 of a goal of one millionth) or to an estimate.
 const MARGIN: f64 = 1e-8;
+
+/// An index that no simulated process comes near; a bar beyond it is one at it.
+const MOST: f64 = 50.0;
 
 /// The bar at each n from the planned count to the limit, found when it is first asked for.
 pub(super) struct Bar<'a> {
@@ -45,12 +48,12 @@ impl<'a> Bar<'a> {
         // A claim that is decided early is looked at seldom, and any estimate may decide it.
         let Some(Precision::Relative(goal)) = self.plan.rule.precision() else { return f64::NEG_INFINITY };
         let widened = goal.to_f64() * (1.0 + MARGIN);
+        let Some(nu) = self.plan.sigma.degrees_of_freedom(n) else { return f64::NEG_INFINITY };
         let may_settle = |at: f64| {
-            let plan = self.plan;
-            precision::precision_at(n, plan.index, at, plan.confidence, plan.kind)
-                .map_or(true, |estimate| estimate.half_width / at <= widened)
+            let evidence = Evidence { index: self.plan.index, estimate: at, n, nu, squared_offset: 0.0 };
+            self.plan.estimate(&evidence).map_or(true, |found| found.half_width / at <= widened)
         };
-        let (mut too_low, mut open) = (0.0, MAX_INDEX);
+        let (mut too_low, mut open) = (0.0, MOST);
         if !may_settle(open) {
             return open;
         }
@@ -113,7 +116,7 @@ mod tests {
             );
         }
         // Below 1 + z²/(2r²) = 193.07 no estimate settles.
-        assert_eq!(bar.find(Count::new(193).unwrap()), MAX_INDEX);
+        assert_eq!(bar.find(Count::new(193).unwrap()), MOST);
         assert!(quick(&plan, 1.33, 0.0).n().least() >= 194);
     }
 }

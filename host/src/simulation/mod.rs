@@ -18,7 +18,7 @@ pub mod words;
 
 use donelight_core::capability::Index;
 use donelight_core::plan::Plan;
-use donelight_core::sizing::{Design, precision};
+use donelight_core::sizing::precision;
 use rayon::prelude::*;
 
 pub use outcome::{Outcome, Pieces, Share};
@@ -92,14 +92,11 @@ const READINGS: f64 = 1.5e7;
 pub fn usual_studies(plan: &Plan, processes: &[Process]) -> u32 {
     let rule = &plan.rule;
     let expected = |process: &Process| {
-        let Some(goal) = rule.precision() else {
+        if rule.precision().is_none() {
             return f64::midpoint(rule.planned.get().into(), rule.limit.get().into());
-        };
-        let size = Design::by_bissell(plan.index).and_then(|design| {
-            let design = design.with_sigma(plan.sigma)?;
-            precision::smallest_by(&design, process.true_index, goal, plan.confidence, plan.kind)
-        });
-        f64::from(size.map_or(rule.limit, |size| size.n.clamp(rule.planned, rule.limit)).get())
+        }
+        let n = precision::smallest_of(plan, process.true_index);
+        f64::from(n.map_or(rule.limit, |n| n.clamp(rule.planned, rule.limit)).get())
     };
     let pieces: f64 = processes.iter().map(expected).sum();
     (READINGS / pieces).clamp(20.0, 10_000.0) as u32

@@ -1,7 +1,7 @@
 //! One simulated study, from the first reading to the end that the plan's rule gives it, through the core's own code.
 
 use donelight_core::counts::Counts;
-use donelight_core::interval::{self, Estimate};
+use donelight_core::interval::{Estimate, Evidence};
 use donelight_core::moments::Moments;
 use donelight_core::plan::Plan;
 use donelight_core::quantity::Count;
@@ -72,13 +72,12 @@ impl<'a> Studies<'a> {
                 let counts = Counts::new(self.gauged.centre.get() + self.gauged.reading(z));
                 tally.add(counts.expect("in range")).expect("below the limit");
                 let n = tally.moments().n();
-                let mut estimate = None;
-                let standing = self.plan.judge(n, || {
-                    estimate = if can_settle(tally.moments()) { self.estimate(&tally) } else { None };
-                    estimate
-                });
+                let standing = self
+                    .plan
+                    .judge(n, || if can_settle(tally.moments()) { self.evidence(&tally) } else { None });
                 if standing != Standing::Gathering {
-                    let estimate = estimate.or_else(|| self.estimate(&tally));
+                    let estimate =
+                        self.evidence(&tally).and_then(|evidence| self.plan.estimate(&evidence).ok());
                     let decision =
                         self.plan.rule.early().and_then(|early| early.decide(n, estimate.as_ref()?.estimate));
                     return End { n, standing, estimate, decision };
@@ -88,10 +87,10 @@ impl<'a> Studies<'a> {
         unreachable!("every study ends at its limit, far before the pairs do")
     }
 
-    /// As a station gets it: see `donelight_core::station::Study::estimate`.
-    fn estimate(&self, tally: &Tally) -> Option<Estimate> {
+    /// As a station gets it: see `donelight_core::station::Study::evidence`.
+    fn evidence(&self, tally: &Tally) -> Option<Evidence> {
         let plan = self.plan;
         let sample = tally.sample(plan.resolution, plan.specification()).ok()?;
-        interval::with_quantile(&sample, plan.index, plan.quantile()).ok()
+        Evidence::of(&sample, plan.index).ok()
     }
 }

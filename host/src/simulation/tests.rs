@@ -9,11 +9,12 @@ use crate::plan_file;
 
 const FEW: Extent = Extent { seed: 3, studies: 3_000 };
 
-/// The example's limits 11.95 and 12.05, and a gauge so fine that rounding plays no part; for the rest as asked.
+/// The example's limits 11.95 and 12.05, and a gauge so fine that rounding plays no part; for the rest as asked. Intervals
+/// are Bissell's, which the reference tables are for.
 pub(crate) fn plan(index: &str, kind: &str, planned: u32, precision: &str, limit: u32) -> Plan {
     let text = plan_file::EXAMPLE
         .replace("\"0.001\"", "\"0.000001\"")
-        .replace("index = \"cpk\"", &format!("index = \"{index}\""))
+        .replace("index = \"cpk\"", &format!("index = \"{index}\"\nmethod = \"bissell\""))
         .replace("kind = \"two-sided\"", &format!("kind = \"{kind}\""))
         .replace("planned = 212", &format!("planned = {planned}"))
         .replace("precision = \"10%\"", &format!("precision = \"{precision}\""))

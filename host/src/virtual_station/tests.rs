@@ -4,7 +4,7 @@ use std::fs;
 use std::io;
 
 use donelight_core::capability::Index;
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::lamps::Call;
 use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
@@ -42,6 +42,7 @@ fn plan(planned: u32, limit: u32) -> Plan {
         gauge: LineSettings::default(),
         same_in_a_row: 4,
         sigma: Sigma::Overall,
+        method: Method::Bissell,
     };
     Plan::try_from(draft).unwrap()
 }

@@ -9,7 +9,7 @@ use donelight::link::{LinkError, Session};
 use donelight::virtual_station::flash::RamFlash;
 use donelight_core::capability::Index;
 use donelight_core::chain::Digest;
-use donelight_core::interval::Kind;
+use donelight_core::interval::{Kind, Method};
 use donelight_core::plan::{Draft, LineSettings, Plan};
 use donelight_core::quantity::{Confidence, Count, Millionths, Precision};
 use donelight_core::record::Seq;
@@ -43,6 +43,7 @@ pub(crate) fn plan(name: &str) -> Plan {
         gauge: LineSettings::default(),
         same_in_a_row: 0,
         sigma: Sigma::Overall,
+        method: Method::Bissell,
     })
     .unwrap()
 }

@@ -41,7 +41,7 @@ pub fn interval(estimate: f64, n: Count, nu: DegreesOfFreedom, risk: f64) -> Int
 fn limit(estimate: f64, n: Count, nu: DegreesOfFreedom, side: Side, risk: f64) -> f64 {
     let cpk_of = |share: f64| noncentral_t::limit(estimate, n, nu, side, share * risk);
     let halved = cpk_of(0.5);
-    if halved.is_nan() || halved <= 0.0 {
+    if halved.is_nan() || halved <= 0.0 || noncentral_t::is_far(estimate, n, nu) {
         return halved;
     }
     // A lower end takes the estimate as t_hi, an upper one as t_lo.

@@ -4,7 +4,8 @@
 //! values: the one whose upper limit is the true index, and the one whose lower limit is. The coverage is the probability
 //! between them.
 
-use super::{Kind, Method, balanced};
+use super::{Evidence, Kind, Method, balanced, noncentral_t};
+use crate::capability::Index;
 use crate::estimator::{Position, Study};
 use crate::quantity::{Confidence, Count, DegreesOfFreedom};
 use crate::special::{Side, Tails, chi_square, noncentral_chi_square, normal};
@@ -26,6 +27,52 @@ pub struct Span {
 pub fn of_cpk(method: Method, confidence: Confidence, kind: Kind, study: &Study) -> Option<f64> {
     let thresholds = Thresholds::new(method, confidence, kind, study.n, study.nu, study.cpk)?;
     Some(thresholds.coverage(study))
+}
+
+/// The least and the most, over all positions of the mean, with which an interval like that of this evidence covers, if the
+/// true index is the estimate.
+///
+/// `None` where it is not known: for [`Method::Boyles`], for an estimate that is not above zero or beyond all reason, and where [`of_cpk`] has
+/// none.
+#[must_use]
+pub fn range(method: Method, evidence: &Evidence, confidence: Confidence, kind: Kind) -> Option<Span> {
+    let Evidence { index, estimate, n, nu, .. } = *evidence;
+    let promised = Span { from: confidence.to_f64(), to: confidence.to_f64() };
+    match (method, index) {
+        _ if !(estimate > 0.0 && (1.0..=1e6).contains(&nu.get())) => None,
+        // Beyond what the distributions are made for; see there.
+        _ if noncentral_t::is_far(2.0 * estimate, n, nu) => None,
+        (Method::ChiSquare, Index::Cp) | (Method::NoncentralT, Index::Cpl | Index::Cpu) => Some(promised),
+        (Method::ChiSquare, Index::Cpm) => {
+            // Far from the target the distribution narrows to a point, and everything is covered.
+            let covered = (0..=60).map(|step| of_cpm(confidence, kind, n, 0.05 * f64::from(step)));
+            let from = covered.fold(1.0, f64::min);
+            Some(Span { from, to: 1.0 })
+        }
+        (Method::Bissell, Index::Cp) => of_cp_by_bissell(confidence, kind, nu),
+        (Method::Bissell, Index::Cpl | Index::Cpu) => {
+            let one_limit = Study { n, nu, cpk: estimate, position: Position::OneLimit };
+            let covered = of_cpk(method, confidence, kind, &one_limit)?;
+            Some(Span { from: covered, to: covered })
+        }
+        (_, Index::Cpk) => range_of_cpk(method, confidence, kind, n, nu, estimate),
+        _ => None,
+    }
+}
+
+/// Ĉp(1 ∓ z/√(2ν)) covers Cp where ν(Cp/Ĉp)², a chi-square, lies between ν(1 ∓ z/√(2ν))²: the same for every index.
+fn of_cp_by_bissell(confidence: Confidence, kind: Kind, nu: DegreesOfFreedom) -> Option<Span> {
+    let reach = normal::upper_quantile(kind.risk_on_a_side(confidence)) / libm::sqrt(2.0 * nu.get());
+    let tails = |factor: f64| chi_square::tails(nu.get() * factor * factor, nu.get());
+    // A lower end below zero covers every Cp.
+    let missed_below = if reach < 1.0 { tails(1.0 - reach).lower } else { 0.0 };
+    let missed_above = tails(1.0 + reach).upper;
+    let covered = match kind {
+        Kind::TwoSided => 1.0 - missed_below - missed_above,
+        Kind::Lower => 1.0 - missed_below,
+        Kind::Upper => 1.0 - missed_above,
+    };
+    Some(Span { from: covered, to: covered })
 }
 
 /// The least and the most of [`of_cpk`] over all positions of the mean.

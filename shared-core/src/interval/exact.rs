@@ -27,8 +27,9 @@ pub fn limit(estimate: f64, n: Count, nu: DegreesOfFreedom, side: Side, risk: f6
 /// Newton's method on the normal scale. The start counts draws beyond both limits twice: 3 or 4 integrals.
 fn upper(estimate: f64, n: Count, nu: DegreesOfFreedom, risk: f64) -> f64 {
     let start = noncentral_t::limit(estimate, n, nu, Side::Upper, 0.5 * risk);
-    // Then no draw is beyond both limits, and the start is exact; a limit below zero is a little too high.
-    if estimate <= 0.0 || !start.is_finite() {
+    // Then no draw is beyond both limits, and the start is exact; a limit below zero is a little too high. Far out the
+    // mean is next to nothing, and with it its position.
+    if estimate <= 0.0 || !start.is_finite() || noncentral_t::is_far(estimate, n, nu) {
         return start;
     }
     let goal = normal::upper_quantile(risk);

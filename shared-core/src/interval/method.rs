@@ -93,6 +93,16 @@ impl Method {
         }
     }
 
+    /// The method that a plan gets if it names none, and a sample size: the same, but for a two-sided Cpk Bissell's formula,
+    /// which costs a station next to nothing.
+    #[must_use]
+    pub const fn default_of_plan(index: Index, kind: Kind) -> Self {
+        match Self::default_for(index, kind) {
+            Self::Balanced => Self::Bissell,
+            method => method,
+        }
+    }
+
     /// What the method promises of an index and a kind of interval; `None` if it does not suit the index.
     #[must_use]
     pub const fn promise(self, index: Index, kind: Kind) -> Option<Promise> {

@@ -78,7 +78,10 @@ impl Design {
     }
 
     /// What n pieces would say if the estimate came out at `estimate`.
-    pub(super) fn evidence(&self, estimate: f64, n: Count) -> Result<Evidence, SizingError> {
+    ///
+    /// # Errors
+    /// [`SizingError::TooFew`] if they give sigma no degrees of freedom.
+    pub fn evidence(&self, estimate: f64, n: Count) -> Result<Evidence, SizingError> {
         Ok(Evidence {
             index: self.index,
             estimate,
