@@ -407,9 +407,9 @@ pub struct Assess {
     /// The interval's confidence: 95% or 0.95
     #[arg(long, value_name = "LEVEL", value_parser = value::confidence, default_value = "95%")]
     pub confidence: Confidence,
-    /// Two limits, or only a lower or an upper one
-    #[arg(long, value_parser = value::kind(), ignore_case = true, default_value = "two-sided")]
-    pub kind: Kind,
+    /// Two limits, or only a lower or an upper one [default: two-sided; with --require: lower]
+    #[arg(long, value_parser = value::kind(), ignore_case = true)]
+    pub kind: Option<Kind>,
     /// How the interval is computed [default: chi-square for cp and cpm, noncentral-t for cpl and cpu; of cpk balanced, noncentral-t for a lower
     /// bound, exact for an upper one]
     #[arg(long, value_parser = value::method(), ignore_case = true)]
@@ -423,6 +423,15 @@ pub struct Assess {
     /// The page's title [default: the file's name]
     #[arg(long)]
     pub title: Option<String>,
+}
+
+impl Assess {
+    /// The kind of interval: what is claimed to be at least so much is asked for its lower limit.
+    #[must_use]
+    pub fn kind(&self) -> Kind {
+        let claimed = if self.require.is_some() { Kind::Lower } else { Kind::TwoSided };
+        self.kind.unwrap_or(claimed)
+    }
 }
 
 /// `donelight report …`

@@ -22,7 +22,7 @@ use crate::report::{Data, Fact, Question, Reading, Study, export, number, page};
 /// written.
 pub(super) fn run(options: &Assess) -> Result<Answer, Failure> {
     let specification = Specification::new(options.lsl, options.usl, options.target)?;
-    if options.require.is_some() && options.kind == Kind::Upper {
+    if options.require.is_some() && options.kind() == Kind::Upper {
         return Err(AssessError::RequireWithUpper.into());
     }
     if let (Some(report), Some(file)) = (&options.report, &options.file) {
@@ -156,7 +156,7 @@ fn study(options: &Assess, specification: Specification) -> Result<Study, Failur
         question: Question {
             index: options.index,
             confidence: options.confidence,
-            kind: options.kind,
+            kind: options.kind(),
             required: options.require,
             sigma,
             method: method(options)?,
@@ -170,7 +170,7 @@ fn study(options: &Assess, specification: Specification) -> Result<Study, Failur
 
 /// The method that was asked for, or the default.
 fn method(options: &Assess) -> Result<Method, AssessError> {
-    let &Assess { index, kind, .. } = options;
+    let (index, kind) = (options.index, options.kind());
     let method = options.method.unwrap_or(Method::default_for(index, kind));
     match method.promise(index, kind) {
         Some(_) => Ok(method),

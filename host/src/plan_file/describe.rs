@@ -169,8 +169,13 @@ fn remarks(plan: &Plan) -> Vec<String> {
     let precision = plan.rule.precision();
     let stops = precision.is_some_and(|precision| words::allows_for_the_stop(precision, plan.kind));
     remarks.push(format!(
-        "The interval is {}.{} All of it supposes a stable process and readings near to normal.",
+        "The interval is by {}.{}{} All of it supposes a stable process and readings near to normal.",
         words::about_method(plan.method, plan.index, plan.kind),
+        if plan.method == Method::Bissell {
+            format!(" {}", words::bissell_covers(plan.kind))
+        } else {
+            String::new()
+        },
         if stops { format!(" {}", words::ALLOWS_FOR_THE_STOP) } else { String::new() }
     ));
     remarks

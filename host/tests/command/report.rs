@@ -82,7 +82,7 @@ fn a_finished_study_is_reported_as_page_csv_and_json_that_agree() {
         .map(|line| format!("{line}\n"))
         .collect();
     fs::write(folder.path().join("counted.csv"), counted).unwrap();
-    let line = "assess counted.csv --column value --lsl 11.95 --usl 12.05 --target 12 --resolution 0.001 --unit mm --json";
+    let line = "assess counted.csv --column value --lsl 11.95 --usl 12.05 --target 12 --resolution 0.001 --unit mm --method bissell --json";
     let again = run(&line.split(' ').collect::<Vec<_>>(), folder.path()).ends_with(0).json();
     for key in ["n", "mean", "sd", "estimate", "low", "high", "indices"] {
         assert_eq!(json[key], again[key], "{key}");
