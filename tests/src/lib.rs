@@ -5,6 +5,7 @@ pub mod budgets;
 pub mod command;
 pub mod emulator;
 pub mod nist;
+pub mod sequences;
 pub mod study;
 #[cfg(unix)]
 pub mod virtual_bench;
