@@ -4,6 +4,7 @@ use std::vec::Vec;
 
 use super::*;
 use crate::{
+    chain::Digest,
     counts::ReadingError,
     flash_model::Flash,
     plan::{Plan, tests as plans},
@@ -304,4 +305,154 @@ fn a_held_study_calls_until_the_button_is_pressed() {
     bench.recorder.press(Millis(bench.now), Button::Seen);
     assert_eq!(bench.status().held, None);
     assert_eq!(bench.n(), 4);
+}
+
+/// Where page `number` begins in the model's flash, for the ring's first round.
+fn page_at(number: usize) -> usize {
+    2 * 4096 + 256 * number
+}
+
+/// A station with so many readings whose flash `damage` has got at while it was off.
+fn damaged(readings: usize, damage: impl FnOnce(&mut [u8])) -> Bench {
+    let mut bench = loaded();
+    for i in 0..readings {
+        bench.line(LINES[i % LINES.len()]);
+    }
+    let mut flash = bench.recorder.journal().flash().clone();
+    damage(&mut flash.bytes);
+    boot(flash)
+}
+
+fn lost_on_record(bench: &mut Bench) -> Vec<Gap> {
+    let lost = |(_, event)| match event {
+        Event::Lost(gap) => Some(gap),
+        _ => None,
+    };
+    bench.pull().into_iter().filter_map(lost).collect()
+}
+
+#[test]
+fn records_that_cannot_be_read_call_for_help_in_a_rhythm_of_their_own_until_seen() {
+    let mut bench = damaged(60, |bytes| bytes[page_at(2) + 9] ^= 4);
+    // The patrol comes by within a second of quiet.
+    bench.wait(1_000);
+    let gaps = lost_on_record(&mut bench);
+    assert_eq!(gaps.len(), 1, "{gaps:?}");
+    let numbers: Vec<u32> = bench.pull().iter().map(|(seq, _)| seq.0).collect();
+    assert!(numbers.iter().all(|n| !(gaps[0].first.0..=gaps[0].last.0).contains(n)));
+    let status = bench.status();
+    assert_eq!((status.gaps, status.lost, status.journal), (1, Some(gaps[0]), JournalHealth::Well));
+    assert_eq!(bench.recorder.call(Millis(bench.now)), Some(Call::Lost));
+    let lit = |t| Call::Lost.lit(Millis(t));
+    assert_eq!((0..2_000).filter(|t| lit(*t) && !lit(t + 1)).count(), 2, "two flashes in two seconds");
+
+    bench.recorder.press(Millis(bench.now), Button::Seen);
+    assert_eq!(bench.recorder.call(Millis(bench.now)), None);
+    let mut bench = bench.power_cut();
+    bench.wait(1_000);
+    assert_eq!(bench.recorder.call(Millis(bench.now)), None, "seen is on record");
+    assert_eq!(lost_on_record(&mut bench), gaps, "and the gap is not told twice");
+    bench.wait(PATROL_EVERY_MS + 2_000);
+    assert_eq!(lost_on_record(&mut bench), gaps, "nor by the next round");
+}
+
+#[test]
+fn a_newest_page_that_cannot_be_read_is_told_at_once_and_its_numbers_are_not_given_again() {
+    let mut bench = damaged(40, |bytes| {
+        let newest = (0..).take_while(|page| bytes[page_at(*page)] != 0xff).last().unwrap();
+        bytes[page_at(newest)..page_at(newest + 1)].fill(0);
+    });
+    let gap = lost_on_record(&mut bench)[0];
+    assert!(gap.first > Seq(20) && gap.last >= Seq(42), "{gap:?}");
+    assert_eq!(bench.recorder.call(Millis(bench.now)), Some(Call::Lost));
+    assert!(bench.pull().iter().any(|(seq, event)| *event == Event::Boot { boot: 2 } && *seq > gap.last));
+    bench.line("10.001");
+    assert!(bench.recorder.lamps(Millis(bench.now)).taken, "it measures on");
+}
+
+#[test]
+fn a_write_that_the_power_cut_off_is_on_record_as_a_refusal_and_is_no_gap() {
+    let mut bench = loaded();
+    for line in &LINES[..5] {
+        bench.line(line);
+    }
+    bench.recorder.journal().flash().fuel = 9;
+    bench.line(LINES[5]);
+    let mut bench = bench.power_cut();
+    bench.wait(1_500);
+    let refused = |(_, event): &(Seq, Event)| {
+        matches!(event, Event::Refused { reason: Refusal::PowerFailed, times: 1 })
+    };
+    assert_eq!(bench.pull().iter().filter(|record| refused(record)).count(), 1);
+    assert_eq!((bench.n(), bench.status().gaps), (5, 0));
+    let mut bench = bench.power_cut();
+    bench.wait(1_500);
+    assert_eq!(bench.pull().iter().filter(|record| refused(record)).count(), 1, "told once");
+}
+
+#[test]
+fn the_chain_by_the_link_is_that_of_the_records() {
+    let mut bench = loaded();
+    for line in LINES.iter().cycle().take(150) {
+        bench.line(line);
+    }
+    let mut digest = Digest::origin(ID);
+    let mut from = Seq::FIRST;
+    loop {
+        let (before, records) = bench.ask(&Request::Records { from }, |reply| match reply {
+            Reply::Records { before, records } => (before, records.to_vec()),
+            other => panic!("{other:?}"),
+        });
+        assert_eq!(before, digest, "before {from}");
+        let mut rest = &records[..];
+        while let Ok((sealed, behind)) = Sealed::split(rest) {
+            digest = digest.then(sealed.bytes());
+            from = from.next();
+            rest = behind;
+        }
+        if records.is_empty() {
+            break;
+        }
+    }
+    let head = bench.ask(&Request::Hello, |reply| match reply {
+        Reply::Hello(hello) => hello.head,
+        other => panic!("{other:?}"),
+    });
+    assert_eq!(head, digest);
+}
+
+#[test]
+fn a_host_that_sets_the_clock_without_end_cannot_keep_boots_from_being_recorded() {
+    let mut bench = loaded();
+    let mut refused = false;
+    for unix_ms in 0..20_000 {
+        refused = bench.ask(&Request::SetClock { unix_ms }, |reply| matches!(reply, Reply::Refused(_)));
+        if refused {
+            break;
+        }
+    }
+    assert!(refused, "the journal is not for clocks alone");
+    for boots in 2..6 {
+        bench = bench.power_cut();
+        assert_eq!(bench.status().boots, boots);
+    }
+}
+
+#[test]
+fn the_room_that_is_told_is_there() {
+    let mut bench = loaded();
+    let told = bench.status().room;
+    let mut taken = 0;
+    loop {
+        bench.now += 130;
+        bench.recorder.tick(Millis(bench.now));
+        bench.recorder.gauge_bytes(Millis(bench.now), b"10.001\n10.002\n");
+        let n = bench.recorder.station().study().unwrap();
+        let n = n.moments().n().get() + n.progress().surplus;
+        if n == taken {
+            break;
+        }
+        taken = n;
+    }
+    assert!(taken >= told && taken < told + told / 3, "{told} told, {taken} taken");
 }
