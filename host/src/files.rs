@@ -115,6 +115,22 @@ pub fn write(path: &Path, content: &[u8]) -> Result<(), WriteError> {
     staged.persist(path).map(drop).map_err(|error| refused(error.error))
 }
 
+/// Moves a finished file to where it belongs, on the same disk: it is there whole or not at all, also when the computer
+/// stops. `replace`: also where there is one.
+///
+/// # Errors
+/// It exists, or the system refuses.
+pub fn move_whole(from: &Path, to: &Path, replace: bool) -> Result<(), WriteError> {
+    let refused = |error: io::Error| match error.kind() {
+        io::ErrorKind::AlreadyExists => WriteError::Exists { path: to.to_owned() },
+        _ => WriteError::Refused { path: to.to_owned(), error },
+    };
+    fs::File::open(from).and_then(|file| file.sync_all()).map_err(refused)?;
+    let staged = tempfile::TempPath::try_from_path(from).map_err(refused)?;
+    let moved = if replace { staged.persist(to) } else { staged.persist_noclobber(to) };
+    moved.map_err(|error| refused(error.error))
+}
+
 /// The content in a file beside the one that it is to become.
 fn stage(path: &Path, content: &[u8]) -> io::Result<tempfile::NamedTempFile> {
     let folder = match path.parent() {

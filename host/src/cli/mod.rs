@@ -52,7 +52,7 @@ pub enum Command {
     /// Talk to a station on a serial port
     #[command(subcommand, arg_required_else_help = true)]
     Station(Station),
-    /// Verify what is kept
+    /// Verify what is kept, back it up, restore it
     #[command(subcommand, arg_required_else_help = true)]
     Ledger(Ledger),
     /// A station without hardware: the station's own code, its journal in a folder
@@ -310,6 +310,33 @@ Examples:
 Exit code 1 if a record does not fit. The digest of the last record is the one that `donelight report` prints: a ledger
 that was changed as a whole, and not only in part, shows by another digest than a report that was printed before.")]
     Verify {
+        /// The ledger [default: in the user's data folder]
+        #[arg(long, value_name = "FILE")]
+        ledger: Option<PathBuf>,
+    },
+    /// Copy the ledger into one file, whole or not at all; a pull may go on meanwhile
+    #[command(after_help = "Example:\n  donelight ledger backup friday.sqlite")]
+    Backup {
+        /// The file to write
+        out: PathBuf,
+        /// Replace the file if there is one
+        #[arg(long)]
+        force: bool,
+        /// The ledger [default: in the user's data folder]
+        #[arg(long, value_name = "FILE")]
+        ledger: Option<PathBuf>,
+    },
+    /// Make the ledger what a backup is; refused if it has records that the backup lacks
+    #[command(after_help = "\
+Examples:
+  donelight ledger restore friday.sqlite
+  donelight ledger restore friday.sqlite --ledger again.sqlite")]
+    Restore {
+        /// The backup
+        backup: PathBuf,
+        /// Give up what the ledger has and the backup lacks, or what can no longer be read of it
+        #[arg(long)]
+        discard: bool,
         /// The ledger [default: in the user's data folder]
         #[arg(long, value_name = "FILE")]
         ledger: Option<PathBuf>,

@@ -1,4 +1,4 @@
-//! `donelight ledger`: verify what is kept.
+//! `donelight ledger`: verify what is kept, back it up, restore it.
 
 use std::path::Path;
 
@@ -16,7 +16,50 @@ use crate::output::{Answer, Exit, Failure};
 pub(super) fn run(options: &cli::Ledger) -> Result<Answer, Failure> {
     match options {
         cli::Ledger::Verify { ledger } => verify(ledger.as_deref()),
+        cli::Ledger::Backup { out, force, ledger } => backup(out, *force, ledger.as_deref()),
+        cli::Ledger::Restore { backup, discard, ledger } => restore(backup, *discard, ledger.as_deref()),
     }
+}
+
+fn backup(out: &Path, force: bool, path: Option<&Path>) -> Result<Answer, Failure> {
+    let ledger = Ledger::open_to_read(path)?;
+    let saved = ledger.backup(out, force)?;
+    let fits = saved.stations.iter().all(Verified::fits);
+    let mut text = format!(
+        "{} records of {} stations, from {}, are in {}",
+        saved.records(),
+        saved.stations.len(),
+        ledger.path().display(),
+        out.display()
+    );
+    if !fits {
+        text.push_str("\nNot all of them fit, in the ledger as in the copy:\n");
+        text.push_str(&saved.stations.iter().flat_map(lines).collect::<Vec<_>>().join("\n"));
+    }
+    Ok(Answer {
+        text,
+        json: json!({
+            "ledger": ledger.path().to_string_lossy(),
+            "backup": out.to_string_lossy(),
+            "records": saved.records(),
+            "fits": fits,
+            "stations": saved.stations.iter().map(station_json).collect::<Vec<_>>(),
+        }),
+        exit: if fits { Exit::Done } else { Exit::Refused },
+    })
+}
+
+fn restore(backup: &Path, discard: bool, path: Option<&Path>) -> Result<Answer, Failure> {
+    let (path, saved) = Ledger::restore(backup, path, discard)?;
+    Ok(Answer::done(
+        format!("{} holds what {} holds: {} records", path.display(), backup.display(), saved.records()),
+        json!({
+            "ledger": path.to_string_lossy(),
+            "backup": backup.to_string_lossy(),
+            "records": saved.records(),
+            "stations": saved.stations.iter().map(station_json).collect::<Vec<_>>(),
+        }),
+    ))
 }
 
 fn verify(path: Option<&Path>) -> Result<Answer, Failure> {

@@ -6,6 +6,7 @@ use std::path::{Path, PathBuf};
 use std::time::{Duration, Instant};
 
 use etcetera::BaseStrategy;
+use rusqlite::backup::Backup;
 use rusqlite::{Connection, ErrorCode, OpenFlags, TransactionBehavior};
 
 use super::LedgerError;
@@ -103,6 +104,20 @@ pub(super) fn open(path: &Path) -> Result<Connection, LedgerError> {
     Ok(connection)
 }
 
+/// Opens the ledger to replace all of it; makes it if there is none. What it holds is not looked at: it may be damaged.
+pub(super) fn open_to_replace(path: &Path) -> Result<Connection, LedgerError> {
+    let folder = path.parent().filter(|folder| !folder.as_os_str().is_empty());
+    if folder.is_some_and(|folder| !folder.is_dir()) {
+        return Err(LedgerError::NoFolder(path.to_owned()));
+    }
+    refuse_unknown(path, head(path)?)?;
+    let failed = |error: rusqlite::Error| LedgerError::sqlite(path, &error);
+    let connection = Connection::open(path).map_err(failed)?;
+    connection.busy_timeout(BUSY).map_err(failed)?;
+    connection.pragma_update(None, "synchronous", "FULL").map_err(failed)?;
+    Ok(connection)
+}
+
 /// Opens the ledger to read it; it, and the folder around it, may be read-only.
 pub(super) fn open_to_read(path: &Path) -> Result<Connection, LedgerError> {
     match head(path)? {
@@ -116,12 +131,25 @@ pub(super) fn open_to_read(path: &Path) -> Result<Connection, LedgerError> {
     connection.pragma_update(None, "query_only", "ON").map_err(failed)?;
     match version(&connection) {
         Ok(version) if version > VERSION => Err(newer(path, version)),
-        Ok(_) => Ok(connection),
+        Ok(VERSION) => Ok(connection),
+        Ok(_) => brought_up(path, &connection),
         // The folder cannot take the index file that readers of a write-ahead log share. Without such a log the file
         // alone is the whole ledger.
         Err(error) if cannot_share(&error) && !has_log(path) => immutable(path).map_err(failed),
         Err(error) => Err(failed(error)),
     }
+}
+
+/// An earlier version's ledger, brought up in memory; the file stays as it is.
+fn brought_up(path: &Path, connection: &Connection) -> Result<Connection, LedgerError> {
+    let failed = |error: rusqlite::Error| LedgerError::sqlite(path, &error);
+    let mut copy = Connection::open_in_memory().map_err(failed)?;
+    let copying = Backup::new(connection, &mut copy).map_err(failed)?;
+    // All pages in one step.
+    copying.step(-1).map_err(failed)?;
+    drop(copying);
+    migrate(path, &mut copy, &failed)?;
+    Ok(copy)
 }
 
 fn cannot_share(error: &rusqlite::Error) -> bool {
@@ -194,7 +222,7 @@ fn write_ahead(connection: &Connection) -> rusqlite::Result<()> {
 }
 
 /// Looks through all pages, so that nothing is committed to a file that could not give it back.
-fn check(path: &Path, connection: &Connection) -> Result<(), LedgerError> {
+pub(super) fn check(path: &Path, connection: &Connection) -> Result<(), LedgerError> {
     let first: String = connection
         .pragma_query_value(None, "quick_check", |row| row.get(0))
         .map_err(|error| LedgerError::sqlite(path, &error))?;

@@ -5,6 +5,7 @@
 //! never written twice: the same bytes again change nothing, other bytes are kept aside as a conflict. Each record is kept
 //! with the chain's digest behind it, so that [`verify`] finds the first one that does not fit.
 
+mod backup;
 mod commit;
 mod error;
 mod file;
@@ -21,6 +22,7 @@ use donelight_core::record::{Event, Record, Seq};
 use donelight_core::wire::{Hello, StationId};
 use rusqlite::{Connection, TransactionBehavior, params};
 
+pub use backup::{BackupError, Lack, Saved};
 pub use error::LedgerError;
 pub use studies::{Fate, Happening, Incident, Kept, Reading, SelectError, StudyKey};
 pub use time::{Bounds, UnixMillis, WallTime};

@@ -1,5 +1,7 @@
 //! Link and ledger: a station in memory, a faulty line to it, and ledgers in all states.
 
+mod backups;
+mod chain;
 #[cfg(unix)]
 mod command;
 mod faults;
@@ -12,4 +14,5 @@ mod pulling;
 mod support;
 #[cfg(unix)]
 mod terminal;
+mod times;
 mod worn;
