@@ -14,6 +14,7 @@ use donelight_core::{
 use embassy_futures::{
     join::join,
     select::{Either, select},
+    yield_now,
 };
 use embedded_hal::digital::{InputPin, OutputPin};
 use embedded_io_async::{Read, Write};
@@ -162,6 +163,8 @@ async fn answer<F: MultiwriteNorFlash, C: Clock>(
             // Too late or not at all: the host asks again, and each frame begins with the byte that ends a torn one.
             let _ = select(sent, clock.pause(REPLY_WITHIN_MS)).await;
         }
+        // A host that sends without a pause must not keep the gauge waiting.
+        yield_now().await;
     }
 }
 

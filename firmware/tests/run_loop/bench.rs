@@ -73,6 +73,8 @@ struct World {
     from_station: RefCell<VecDeque<u8>>,
     /// The host takes what the station sends.
     fetching: Cell<bool>,
+    /// The host sends rubbish without a pause: the state of its generator.
+    flood: Cell<Option<u32>>,
     fed_at: Cell<u64>,
     longest_unfed: Cell<u64>,
 }
@@ -135,6 +137,16 @@ impl embedded_io_async::ErrorType for HostEnd {
 impl Read for HostEnd {
     async fn read(&mut self, buffer: &mut [u8]) -> Result<usize, Infallible> {
         poll_fn(|_| {
+            if let Some(noise) = self.0.flood.get() {
+                let mut noise = noise;
+                for place in buffer.iter_mut() {
+                    noise = noise.wrapping_mul(1_664_525).wrapping_add(1_013_904_223);
+                    // Zeros end frames; with an even distribution they would be few.
+                    *place = if noise >> 29 == 0 { 0 } else { (noise >> 16) as u8 };
+                }
+                self.0.flood.set(Some(noise));
+                return Poll::Ready(Ok(buffer.len()));
+            }
             let mut waiting = self.0.to_station.borrow_mut();
             let length = waiting.len().min(buffer.len());
             for (place, byte) in buffer.iter_mut().zip(waiting.drain(..length)) {
@@ -270,6 +282,11 @@ impl Bench {
     /// Whether the host takes what the station sends.
     pub(crate) fn fetch(&self, fetching: bool) {
         self.world.fetching.set(fetching);
+    }
+
+    /// Whether the host sends rubbish without a pause.
+    pub(crate) fn flood(&self, on: bool) {
+        self.world.flood.set(on.then_some(1));
     }
 
     /// The longest time without the watchdog's food, in milliseconds.

@@ -126,6 +126,22 @@ fn a_host_that_fetches_nothing_delays_neither_readings_nor_the_next_host() {
 }
 
 #[test]
+fn a_host_that_sends_rubbish_for_a_minute_delays_neither_readings_nor_the_next_host() {
+    let mut bench = bench_with_plan();
+    bench.flood(true);
+    for line in ["5.00", "5.01", "4.99"] {
+        assert!(bench.measure(line));
+        bench.pass(20_000);
+    }
+    assert!(bench.done.is_on());
+    assert!(bench.longest_unfed() <= 10, "{} ms", bench.longest_unfed());
+    bench.flood(false);
+    bench.send(&Request::Hello);
+    assert_eq!(bench.answer(|reply| matches!(reply, Reply::Hello(_))), Some(true));
+    assert_eq!(pieces(&mut bench), 3);
+}
+
+#[test]
 fn the_watchdog_is_fed_every_few_milliseconds_whatever_happens() {
     let mut bench = bench_with_plan();
     for _ in 0..5 {

@@ -5,13 +5,14 @@ mod status;
 use std::path::Path;
 use std::time::Duration;
 
-use donelight_core::wire::Hello;
+use donelight_core::wire::{Hello, StationId};
 use indicatif::{ProgressBar, ProgressStyle};
 use serde_json::{Value, json};
 
 use crate::cli::Station;
 use crate::ledger::{Gap, Ledger, UnixMillis};
-use crate::link::pull::{self, Cause, Progress, PullError, Pulled};
+use crate::link::pull::{Cause, Progress, PullError, Pulled};
+use crate::link::resume::{self, Resumed};
 use crate::link::{LinkError, Session, Transport, discover, serial};
 use crate::output::{Answer, Console, Failure};
 use crate::plan_file;
@@ -125,23 +126,29 @@ fn load(file: &Path, replace: bool, port: Option<&str>) -> Result<Answer, Failur
 fn pull(ledger: Option<&Path>, port: Option<&str>, console: &Console) -> Result<Answer, Failure> {
     // The ledger first: a station whose records could not be kept is not even asked.
     let mut ledger = Ledger::open(ledger)?;
-    let mut met = Met::at(port)?;
+    let met = Met::at(port)?;
     let bar = if console.json() { ProgressBar::hidden() } else { progress_bar() };
     let mut show = |progress: Progress| {
         bar.set_length(progress.total.into());
         bar.set_position(progress.done.into());
     };
-    let outcome = pull::pull(&mut met.session, &mut ledger, &mut show);
+    let Met { port, hello, session } = met;
+    let mut find = |station| resume::find_again(station, &port);
+    let patience = resume::RETURN_WITHIN;
+    let outcome = resume::pull_resumed(session, hello.station, &mut ledger, &mut show, &mut find, patience);
     bar.finish_and_clear();
-    let pulled = outcome.map_err(|error| broken_off(&met.port, error))?;
+    let Resumed { pulled, breaks } = outcome.map_err(|error| broken_off(&port, error))?;
     let json = json!({
+        "port": port,
+        "station": hello.station.to_string(),
         "ledger": ledger.path().to_string_lossy(),
         "new": pulled.new,
+        "breaks": breaks,
         "through": pulled.through.0,
         "gaps": pulled.gaps.iter().map(|gap| json!({ "first": gap.first.0, "last": gap.last.0 })).collect::<Vec<_>>(),
         "clock_refused": pulled.clock_refused.map(|reason| reason.to_string()),
     });
-    Ok(Answer::done(pulled_text(&met, &ledger, &pulled), met.json(json)))
+    Ok(Answer::done(pulled_text(hello.station, &ledger, &pulled, breaks), json))
 }
 
 /// On a terminal only; shown after the first tenth of a second.
@@ -161,8 +168,7 @@ fn broken_off(port: &str, error: PullError) -> Failure {
     failure
 }
 
-fn pulled_text(met: &Met, ledger: &Ledger, pulled: &Pulled) -> String {
-    let station = met.hello.station;
+fn pulled_text(station: StationId, ledger: &Ledger, pulled: &Pulled, breaks: u32) -> String {
     let new = match pulled.new {
         0 => "no new record".to_owned(),
         1 => "1 new record".to_owned(),
@@ -173,6 +179,11 @@ fn pulled_text(met: &Met, ledger: &Ledger, pulled: &Pulled) -> String {
         pulled.through,
         ledger.path().display()
     )];
+    if breaks > 0 {
+        lines.push(format!(
+            "The station had gone in between and was found again ({breaks}x); nothing is lost or doubled."
+        ));
+    }
     for Gap { first, last } in &pulled.gaps {
         lines.push(format!(
             "Records {first} to {last} are missing: the station no longer has them. Readings may be among them; they may \

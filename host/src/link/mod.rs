@@ -1,12 +1,14 @@
 //! The host's end of the link to a station: one request at a time, each harmless to repeat, each with an end.
 //!
 //! [`Session`] asks and waits over any [`Transport`]: a serial port ([`serial`]), a socket, or a station in this very
-//! process ([`memory`]). [`discover`] finds the ports; [`pull`] fetches the records and keeps them.
+//! process ([`memory`]). [`discover`] finds the ports; [`pull`] fetches the records and keeps them, [`resume`]
+//! also when the station was unplugged meanwhile.
 
 pub mod discover;
 pub mod error;
 pub mod memory;
 pub mod pull;
+pub mod resume;
 pub mod serial;
 pub mod session;
 

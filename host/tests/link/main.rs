@@ -11,6 +11,9 @@ mod peers;
 #[cfg(unix)]
 mod ports;
 mod pulling;
+#[cfg(unix)]
+mod resuming;
+mod shared;
 mod support;
 #[cfg(unix)]
 mod terminal;
