@@ -435,12 +435,15 @@ impl Plan {
     /// # Errors
     /// As for [`interval::limit`].
     pub fn estimate(&self, evidence: &Evidence) -> Result<Estimate, MethodError> {
-        let ends = match self.rule.precision().filter(|_| self.rule.planned < self.rule.limit) {
-            Some(precision) => &optional::ends(precision, &self.ends, evidence),
+        interval::with_ends(self.method, evidence, &self.ends_at_the_stop(evidence))
+    }
+
+    fn ends_at_the_stop(&self, evidence: &Evidence) -> Ends {
+        match self.rule.precision().filter(|_| self.rule.planned < self.rule.limit) {
+            Some(precision) => optional::ends(precision, &self.ends, evidence),
             // The number of pieces is fixed, or a claim is decided.
-            None => &self.ends,
-        };
-        interval::with_ends(self.method, evidence, ends)
+            None => self.ends,
+        }
     }
 
     /// Judges a study of `n` pieces by the rule, at whole subgroups only: see [`StoppingRule::judge`].
@@ -449,10 +452,19 @@ impl Plan {
             return Standing::Gathering;
         }
         self.rule.judge(n, evidence, |evidence, precision| {
-            (self.method == Method::Bissell || self.is_near(evidence, precision))
-                && self
-                    .estimate(evidence)
-                    .is_ok_and(|found| precision.allows(found.half_width, found.estimate))
+            let reach = match precision {
+                Precision::Relative(goal) => goal.to_f64() * evidence.estimate,
+                Precision::Absolute(goal) => goal.to_f64(),
+            };
+            // No estimate at or below zero has a relative precision.
+            reach > 0.0
+                && (self.method == Method::Bissell || self.is_near(evidence, precision))
+                && interval::reaches_no_further(
+                    self.method,
+                    evidence,
+                    &self.ends_at_the_stop(evidence),
+                    reach,
+                )
         })
     }
 

@@ -6,7 +6,7 @@ use std::time::Duration;
 
 use donelight_tests::budgets::at_most;
 use donelight_tests::emulator::study::plan;
-use donelight_tests::emulator::{Board, Event, What, image};
+use donelight_tests::emulator::{Board, Event, Lamp, What, image};
 use donelight_tests::nist::Set;
 use donelight_tests::study::Study;
 
@@ -17,6 +17,7 @@ fn main() -> ExitCode {
     }
     let size = image::size();
     let (readings, stack) = measure();
+    let (judged, limit) = measure_noncentral_t();
     let mut cycles: Vec<u64> = readings.iter().map(|reading| reading.cycles).collect();
     cycles.sort_unstable();
     let longest = readings.iter().map(|reading| reading.time).max().unwrap_or_default();
@@ -27,6 +28,8 @@ fn main() -> ExitCode {
         at_most("device.cycles_a_reading_median_max", cycles[cycles.len() / 2] as f64),
         at_most("device.cycles_a_reading_max", cycles[cycles.len() - 1] as f64),
         at_most("device.microseconds_a_reading_max", longest.as_secs_f64() * 1e6),
+        at_most("device.cycles_a_judged_reading_max", judged as f64),
+        at_most("device.cycles_a_limit_max", limit as f64),
     ];
     if verdicts.iter().all(|verdict| *verdict == ExitCode::SUCCESS) {
         ExitCode::SUCCESS
@@ -39,6 +42,37 @@ fn main() -> ExitCode {
 struct Cost {
     cycles: u64,
     time: Duration,
+}
+
+/// A lower bound by the noncentral t, whose relative precision of 7 % is near from about the 195th reading on and reached
+/// behind the 300th: the most cycles that a reading between took to be judged, and those of a whole limit at 5 to 300 pieces, as a status
+/// asks for it.
+fn measure_noncentral_t() -> (u64, u64) {
+    let set = Set::named("Lottery");
+    let text = Study::of(&set, 2, 7).toml();
+    let text = text.replace("index = \"cpk\"", "index = \"cpk\"\nkind = \"lower\"");
+    let mut board = Board::start();
+    board.load(&plan(&text.replace("limit = 218", "limit = 400"))).expect("the plan is taken");
+    board.run(Duration::from_millis(300));
+    let (mut judged, mut limit) = (0, 0);
+    for (i, reading) in set.readings().iter().cycle().take(300).enumerate() {
+        let from = board.events().len();
+        let told = board.measure(reading);
+        if i >= 200 {
+            let is_line_end = |event: &&Event| event.what == What::LineEnd;
+            let line = board.events()[from..].iter().find(is_line_end).expect("a line feed");
+            judged = judged.max(told.cycles - line.cycles);
+        }
+        if [5, 10, 30, 100, 300].contains(&(i + 1)) {
+            let from = board.cycles();
+            let study = board.status().study.expect("a study");
+            assert_eq!(study.progress.n.get() as usize, i + 1);
+            assert!(study.low.is_some_and(|low| low > 0.3), "{study:?}");
+            limit = limit.max(board.cycles() - from);
+        }
+    }
+    assert!(!board.is_lit(Lamp::Done), "the study is still under way");
+    (judged, limit)
 }
 
 /// Measures a study whose interval is computed at every reading from the second on, pulls it, and gives the most stack

@@ -14,7 +14,9 @@ use core::str::FromStr;
 
 use serde::{Deserialize, Serialize};
 
-pub use method::{Evidence, Method, MethodError, Promise, UnknownMethod, limit, of, with_ends};
+pub use method::{
+    Evidence, Method, MethodError, Promise, UnknownMethod, limit, of, reaches_no_further, with_ends,
+};
 
 pub(crate) use method::bissell_if_left_out;
 

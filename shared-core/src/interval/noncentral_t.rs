@@ -24,6 +24,14 @@ pub fn limit(estimate: f64, n: Count, nu: DegreesOfFreedom, side: Side, risk: f6
     }
 }
 
+/// The probability of an estimate at least as far from `end` as this one, if `end` is the true index: the risk with which
+/// `end` is the limit on this side.
+#[must_use]
+pub fn beyond(estimate: f64, n: Count, nu: DegreesOfFreedom, side: Side, end: f64) -> f64 {
+    let root = 3.0 * libm::sqrt(f64::from(n.get()));
+    noncentral_t::tails(root * estimate, nu.get(), root * end).on(side.other())
+}
+
 /// Whether the noncentrality exceeds 100 √ν: an index above some 33, which is a mistake in the limits or the unit rather
 /// than a process. The integral would take time in proportion to it.
 #[must_use]

@@ -113,6 +113,25 @@ proptest! {
     }
 
     #[test]
+    fn one_integral_tells_what_the_whole_interval_would(
+        n in 3_u32..600, estimate in 0.05..4.0, level in 600_000_u32..999_900,
+        factor in prop_oneof![0.5..0.999_999, 1.000_001..2.0],
+    ) {
+        let confidence = Confidence::from_millionths(level).unwrap();
+        for kind in KINDS {
+            for (index, method) in
+                [(Index::Cpu, Method::NoncentralT), (Index::Cpk, Method::Bissell), (Index::Cp, Method::ChiSquare)]
+            {
+                let evidence = evidence(index, estimate, n);
+                let found = of(method, &evidence, confidence, kind).unwrap();
+                let (ends, reach) = (Ends::new(confidence, kind), factor * found.half_width);
+                let told = reaches_no_further(method, &evidence, &ends, reach);
+                prop_assert_eq!(told, factor > 1.0, "{} {} {}", index, kind, factor);
+            }
+        }
+    }
+
+    #[test]
     fn a_higher_estimate_or_a_lower_risk_moves_every_guaranteed_limit_its_way(
         n in 5_u32..500, estimate in 0.1..3.0, step in 0.01..0.5, risk in 0.001..0.4,
     ) {
