@@ -7,5 +7,6 @@ pub mod emulator;
 pub mod nist;
 pub mod sequences;
 pub mod study;
+pub mod twin;
 #[cfg(unix)]
 pub mod virtual_bench;

@@ -130,12 +130,13 @@ fn replay(memory: &Memory, number: u64, tally: &mut Tally) {
 
 #[test]
 fn the_live_state_is_the_replayed_one_and_the_hosts_after_any_sequence() {
-    let tally = on_all_cores(numbers(SHORT, LONG), |mine| {
+    let tallies = on_all_cores(numbers(SHORT, LONG), |mine| {
         let memory = Memory::blank();
         let mut tally = Tally::default();
         mine.for_each(|number| replay(&memory, number, &mut tally));
         tally
     });
+    let tally = Tally::sum(&tallies);
     println!("{tally}");
     tally.assert_reached();
 }

@@ -63,29 +63,27 @@ pub fn is_long() -> bool {
     std::env::var_os(LONG_VARIABLE).is_some_and(|value| value == "1")
 }
 
-/// Has `work` done on every core, each on its share of the numbers, and adds up what was reached.
+/// Has `work` done on every core, each on its share of the numbers, and gives what came of each share.
 ///
 /// # Panics
 /// If `work` does.
-pub fn on_all_cores(
+pub fn on_all_cores<T: Send>(
     numbers: std::ops::Range<u64>,
-    work: impl Fn(std::iter::StepBy<std::ops::Range<u64>>) -> Tally + Sync,
-) -> Tally {
+    work: impl Fn(std::iter::StepBy<std::ops::Range<u64>>) -> T + Sync,
+) -> Vec<T> {
     let cores = std::thread::available_parallelism().map_or(1, std::num::NonZero::get);
-    let mut tally = Tally::default();
     std::thread::scope(|scope| {
         let work = &work;
-        let share = |core| (numbers.start + core as u64..numbers.end).step_by(cores);
         let start = |core| {
-            let mine = share(core);
+            let mine = (numbers.start + core as u64..numbers.end).step_by(cores);
             scope.spawn(move || work(mine))
         };
         let workers: Vec<_> = (0..cores).map(start).collect();
-        for worker in workers {
-            tally.merge(&worker.join().unwrap_or_else(|panic| std::panic::resume_unwind(panic)));
-        }
-    });
-    tally
+        let join = |worker: std::thread::ScopedJoinHandle<'_, T>| {
+            worker.join().unwrap_or_else(|panic| std::panic::resume_unwind(panic))
+        };
+        workers.into_iter().map(join).collect()
+    })
 }
 
 impl Sequence {
@@ -144,7 +142,7 @@ impl Writer {
 
     fn write(mut self) -> Sequence {
         self.pass();
-        if self.random.chance(1, 400) {
+        if self.random.chance(1, 200) {
             self.fill();
         }
         if !self.random.chance(1, 50) {
@@ -165,14 +163,13 @@ impl Writer {
     /// Plan after plan, since they fill a journal soonest: to its end, or round it again if the host pulls.
     fn fill(&mut self) {
         let pulls = self.random.chance(1, 2);
-        let most = if pulls { 120 } else { 60 };
+        let most = if pulls { 150 } else { 60 };
         for loads in 1..=self.random.between(most / 2, most) as u32 {
             self.load(true);
             self.lines();
-            if pulls && self.random.chance(1, 6) {
-                // About as far as the records go by now.
-                self.happenings
-                    .push(Happening::Asks(Request::Received { through: Seq(loads * 3 / 2) }.into()));
+            if pulls && self.random.chance(1, 3) {
+                // There are more records than this, as a rule.
+                self.happenings.push(Happening::Asks(Request::Received { through: Seq(loads) }.into()));
             }
         }
     }

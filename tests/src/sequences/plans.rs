@@ -15,7 +15,7 @@ use donelight_core::text::Text;
 
 use super::random::Random;
 
-const INDICES: [Index; 5] = [Index::Cp, Index::Cpl, Index::Cpu, Index::Cpk, Index::Cpm];
+const INDICES: [Index; 4] = [Index::Cp, Index::Cpl, Index::Cpu, Index::Cpk];
 
 /// So many pieces at most, so that a short sequence comes to the end.
 const PIECES_MAX: i64 = 24;
@@ -59,7 +59,7 @@ fn draft(random: &mut Random) -> (Draft, Scale) {
     draft.characteristic = text(random, 0, 24);
     draft.unit = Text::new(random.one(&["", "", "mm", "um", "in", "N", "degrees"])).expect("short");
     draft.resolution = resolution(random);
-    draft.index = random.one(&INDICES);
+    draft.index = if random.chance(1, 32) { Index::Cpm } else { random.one(&INDICES) };
     let scale = limits(random, &mut draft);
     draft.confidence = confidence(random);
     draft.kind = random.one(&[Kind::TwoSided, Kind::Lower, Kind::Upper]);
@@ -134,13 +134,13 @@ fn confidence(random: &mut Random) -> Confidence {
     Confidence::from_millionths(millionths).expect("within bounds")
 }
 
-/// Nine in ten have a method that a core without floating point computes in no time; one that does not suit is refused with the
+/// Most have a method that a core without floating point computes in no time; one that does not suit is refused with the
 /// draft.
 fn method(random: &mut Random, index: Index) -> Method {
     match index {
         Index::Cpm => Method::Boyles,
         Index::Cp if random.chance(1, 2) => Method::ChiSquare,
-        Index::Cpl | Index::Cpu | Index::Cpk if random.chance(1, 10) => {
+        Index::Cpl | Index::Cpu | Index::Cpk if random.chance(1, 32) => {
             random.one(&[Method::NoncentralT, Method::NoncentralT, Method::Exact])
         }
         _ => Method::Bissell,

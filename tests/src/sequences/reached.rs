@@ -63,8 +63,8 @@ impl Reached {
             station.refused() > 0,
             matches!(call, Some(Call::Refused { .. })),
             boots > 1,
-            // Each sector is erased once before its first use.
-            bench.erases() > 5,
+            // Before their first use: three sectors of records and one of checkpoints.
+            bench.erases() > 4,
             call == Some(Call::Act) && !held,
         ];
         for (reached, now) in self.reached.iter_mut().zip(now) {
@@ -91,19 +91,18 @@ impl Tally {
         }
     }
 
-    /// Adds what another has counted.
-    pub fn merge(&mut self, other: &Self) {
-        self.sequences += other.sequences;
-        self.steps += other.steps;
-        for (count, other) in self.reached.iter_mut().zip(other.reached) {
-            *count += other;
-        }
-    }
-
-    /// Sequences counted.
+    /// What all these have counted.
     #[must_use]
-    pub fn sequences(&self) -> u64 {
-        self.sequences
+    pub fn sum(tallies: &[Self]) -> Self {
+        let mut sum = Self::default();
+        for tally in tallies {
+            sum.sequences += tally.sequences;
+            sum.steps += tally.steps;
+            for (count, more) in sum.reached.iter_mut().zip(tally.reached) {
+                *count += more;
+            }
+        }
+        sum
     }
 
     /// Everything was reached as often as it must; a single sequence, run again, need not.
