@@ -8,6 +8,7 @@ pub mod event;
 pub mod image;
 pub mod log;
 mod node;
+pub mod sequence;
 pub mod study;
 #[cfg(unix)]
 pub mod terminal;
