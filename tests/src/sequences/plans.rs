@@ -15,6 +15,7 @@ use donelight_core::text::Text;
 
 use super::random::Random;
 
+/// The indices of most plans; beside them Cpm, which takes twice as long.
 const INDICES: [Index; 4] = [Index::Cp, Index::Cpl, Index::Cpu, Index::Cpk];
 
 /// So many pieces at most, so that a short sequence comes to the end.
@@ -209,5 +210,57 @@ fn early(random: &mut Random) -> EarlyDecision {
         power: confidence(random),
         spending: random.one(&[Spending::ObrienFleming, Spending::Pocock]),
         looks,
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use std::collections::BTreeSet;
+
+    use super::*;
+
+    #[test]
+    fn plans_of_every_index_kind_sigma_size_method_goal_and_resolution_come_up() {
+        let mut seen = BTreeSet::new();
+        let mut random = Random::new(1);
+        for _ in 0..30_000 {
+            let (plan, _) = plan(&mut random);
+            let goal = match &plan.rule.goal {
+                Goal::Precision(Precision::Relative(_)) => "relative",
+                Goal::Precision(Precision::Absolute(_)) => "absolute",
+                Goal::Decision(_) => "decision",
+            };
+            let limits = [plan.lower.is_some(), plan.upper.is_some(), plan.target.is_some()];
+            let size = plan.sigma.subgroup().map_or(0, SubgroupSize::get);
+            seen.insert(format!("{} {} {limits:?}", plan.index, plan.kind));
+            seen.insert(format!("{} of {size}", plan.sigma.word()));
+            seen.insert(format!("{} by {}", plan.index, plan.method));
+            seen.insert(format!("{} decimals", plan.resolution.decimals()));
+            seen.insert(goal.to_owned());
+            seen.insert(format!("{} %", plan.confidence.to_f64() * 100.0).replace("99.9999", "all but 100"));
+        }
+        let wanted = |words: &str| words.split(", ").map(str::to_owned).collect::<Vec<_>>();
+        let sizes = |word: &'static str, most| (2..=most).map(move |size| format!("{word} of {size}"));
+        let both = "[true, true, false]";
+        let all =
+            wanted("relative, absolute, decision, overall of 0, moving-ranges of 0, 50 %, all but 100 %")
+                .into_iter()
+                .chain(sizes("pooled", 25))
+                // Too seldom for the larger ones to come up in so few plans.
+                .chain(sizes("ranges", 5))
+                .chain((0..=9).map(|decimals| format!("{decimals} decimals")))
+                .chain(["Cp", "Cpl", "Cpu", "Cpk"].into_iter().flat_map(move |index| {
+                    ["two-sided", "lower", "upper"].map(|kind| format!("{index} {kind} {both}"))
+                }))
+                .chain(["Cpk lower [true, false, false]", "Cpk lower [false, true, true]"].map(String::from))
+                .chain(
+                    ["Cpm two-sided [true, true, true]", "Cpl upper [true, false, false]"].map(String::from),
+                )
+                .chain(wanted(
+                    "Cp by chi-square, Cp by bissell, Cpl by noncentral-t, Cpk by exact, Cpm by boyles",
+                ));
+        for one in all {
+            assert!(seen.contains(&one), "never: {one}");
+        }
     }
 }

@@ -118,8 +118,8 @@ impl<'m> Bench<'m> {
     /// The state's bytes.
     fn stored(&mut self) {
         let mut space = [0; STATE_MAX];
-        let used = self.recorder.station().store(&mut space);
-        self.digest.bytes(used.and_then(|used| space.get(..used)).unwrap_or_default());
+        let used = self.recorder.station().store(&mut space).expect("room for a state");
+        self.digest.bytes(&space[..used]);
     }
 
     /// Lamps, counts and where the study stands.

@@ -12,4 +12,4 @@ mod step;
 pub use bench::{Bench, STATION, run};
 pub use digest::Digest;
 pub use flash::{Chip, Memory};
-pub use step::{SEQUENCE_MAX, Step, Steps, push};
+pub use step::{NoStep, SEQUENCE_MAX, Step, Steps, push};
