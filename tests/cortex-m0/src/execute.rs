@@ -101,7 +101,7 @@ impl Core {
     }
 }
 
-/// `None` is a fault.
+/// `None` is a fault. One flat `match`, long as it is: each instruction costs one jump.
 #[inline(always)]
 fn execute(
     instruction: Instruction,
@@ -374,5 +374,102 @@ impl Registers {
             Condition::Gt => !zero && negative == self.overflow,
             Condition::Le => zero || negative != self.overflow,
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    const EDGES: [u32; 9] =
+        [0, 1, 2, 0x1234_5678, 0x7fff_ffff, 0x8000_0000, 0x8000_0001, 0xffff_fffe, 0xffff_ffff];
+
+    /// A core with these instructions behind a vector table, and R0 and R1 set.
+    fn core(instructions: &[u16], r0: u32, r1: u32) -> Core {
+        let table = [memory_end(), 9].into_iter().flat_map(u32::to_le_bytes);
+        let code = table.chain(instructions.iter().flat_map(|bits| bits.to_le_bytes())).collect();
+        let mut core = Core::new(code, 0).expect("a vector table");
+        core.set_register(0, r0);
+        core.set_register(1, r1);
+        core
+    }
+
+    fn memory_end() -> u32 {
+        super::super::memory::RAM + 0x1000
+    }
+
+    /// N, Z, C and V.
+    fn flags(core: &Core) -> [bool; 4] {
+        let r = &core.registers;
+        [r.holds(Condition::Mi), r.holds(Condition::Eq), r.carry, r.overflow]
+    }
+
+    /// The definitions of AddWithCarry in the ARMv6-M manual (from memory): carry if the unsigned sum does not fit, overflow if
+    /// the signed one does not.
+    #[test]
+    fn sums_and_differences_have_the_flags_of_wide_arithmetic() {
+        for a in EDGES {
+            for b in EDGES {
+                // ADDS R0, R0, R1 and SUBS R0, R0, R1; then ADCS and SBCS with the carry that they leave.
+                for (first, second, inverts) in [(0x1840, 0x4148, false), (0x1a40, 0x4188, true)] {
+                    let mut core = core(&[first, second], a, b);
+                    let mut accumulator = a;
+                    let mut carry = inverts;
+                    for _ in 0..2 {
+                        assert_eq!(core.run(1), Stop::Limit);
+                        let b = if inverts { !b } else { b };
+                        let wide = u64::from(accumulator) + u64::from(b) + u64::from(carry);
+                        let signed = i64::from(accumulator as i32) + i64::from(b as i32) + i64::from(carry);
+                        accumulator = wide as u32;
+                        carry = wide > u32::MAX.into();
+                        assert_eq!(core.register(0), accumulator);
+                        let overflow = i32::try_from(signed).is_err();
+                        assert_eq!(flags(&core), [accumulator >> 31 == 1, accumulator == 0, carry, overflow]);
+                    }
+                }
+            }
+        }
+    }
+
+    /// Shifted one bit after the other, the last bit that falls out being the carry.
+    #[test]
+    fn shifts_by_a_register_go_bit_by_bit() {
+        type Shift = fn(u32) -> (u32, bool);
+        let shifts: [(u16, Shift); 4] = [
+            (0x4088, |value| (value << 1, value >> 31 == 1)),
+            (0x40c8, |value| (value >> 1, value & 1 == 1)),
+            (0x4108, |value| (((value as i32) >> 1) as u32, value & 1 == 1)),
+            (0x41c8, |value| (value.rotate_right(1), value & 1 == 1)),
+        ];
+        for (bits, shift) in shifts {
+            for value in EDGES {
+                for by in (0..70).chain([128, 255, 256, 0xffff_ff01]) {
+                    let mut core = core(&[bits], value, by);
+                    assert_eq!(core.run(1), Stop::Limit);
+                    let (expected, carry) = (0..by & 0xff).fold((value, false), |(value, _), _| shift(value));
+                    assert_eq!(core.register(0), expected, "{bits:#x} {value:#x} by {by}");
+                    assert_eq!(core.registers.carry, carry, "{bits:#x} {value:#x} by {by}");
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn a_call_returns_behind_it_and_a_breakpoint_stops() {
+        // BL to the third instruction; BKPT #7; BX LR.
+        let mut core = core(&[0xf000, 0xf801, 0xbe07, 0x4770], 0, 0);
+        assert_eq!(core.run(10), Stop::Breakpoint(7));
+        assert_eq!(core.executed(), 3);
+    }
+
+    #[test]
+    fn what_memory_cannot_do_is_a_fault_and_changes_nothing() {
+        // LDR R0, [R1]: not aligned, and beyond RAM; STR R0, [R1]: into the code.
+        for (bits, address) in [(0x6808, memory_end() + 2), (0x6808, 0x3000_0000), (0x6008, 0)] {
+            let mut core = core(&[bits], 5, address);
+            assert_eq!(core.run(1), Stop::Fault(8));
+            assert_eq!(core.register(0), 5);
+        }
+        assert_eq!(core(&[0xde00], 0, 0).run(1), Stop::Fault(8), "UDF");
     }
 }
