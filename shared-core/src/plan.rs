@@ -8,7 +8,7 @@ use serde::{Deserialize, Serialize};
 use crate::{
     capability::{Index, Specification},
     counts::{Decimal, Resolution},
-    interval::{self, Ends, Estimate, Evidence, Kind, Method, MethodError, bissell, chi_square},
+    interval::{self, Ends, Estimate, Evidence, Interval, Kind, Method, MethodError, bissell, chi_square},
     quantity::{Confidence, Count, DegreesOfFreedom, Precision},
     record::RECORD_MAX,
     sigma::{self, Sigma},
@@ -430,11 +430,16 @@ impl Plan {
     }
 
     /// The index with its interval, by the plan's method: with a precision as the goal, one that allows for the stop
-    /// ([`optional`]).
+    /// ([`optional`]). With a claim to be decided early it has no ends: those of a fixed size would cover less than they say,
+    /// and those that allow for the looks are the host's to compute.
     ///
     /// # Errors
     /// As for [`interval::limit`].
     pub fn estimate(&self, evidence: &Evidence) -> Result<Estimate, MethodError> {
+        if self.rule.early().is_some() {
+            let interval = Interval { low: None, high: None };
+            return Ok(Estimate { estimate: evidence.estimate, interval, half_width: f64::INFINITY });
+        }
         interval::with_ends(self.method, evidence, &self.ends_at_the_stop(evidence))
     }
 

@@ -212,12 +212,15 @@ pub(super) fn text(study: &Study, analysis: &Analysis, verdict: &Verdict, report
     let none = words::no_interval(study);
     for row in &analysis.rows {
         let interval = row.interval.map_or_else(|| none.to_owned(), |i| words::interval_text(&i));
-        lines.push(format!("  {:<4}  {:.4}  {interval}", row.index, row.estimate));
+        let estimate = format!("{:.4}", row.estimate).replace('-', "\u{2212}");
+        lines.push(format!("  {:<4}  {estimate}  {interval}", row.index));
     }
     lines.push(String::new());
     if let Ok(asked) = &analysis.asked {
-        lines.push(words::method(study, asked));
-        lines.push(String::new());
+        let method = words::method(study, asked);
+        if !method.is_empty() {
+            lines.extend([method, String::new()]);
+        }
     }
     lines.extend(words::doubts(study, analysis));
     lines.push(String::new());

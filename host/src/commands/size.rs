@@ -71,6 +71,9 @@ pub(super) fn run(size: &Size) -> Result<Answer, Failure> {
 /// How the size was come by.
 fn about(design: &Design, kind: Kind, n: Count) -> String {
     let sigma = match design.sigma() {
+        _ if design.index() == Index::Cpm => {
+            "the spread about the target, with n degrees of freedom or more".to_owned()
+        }
         Sigma::Overall => "sigma overall with n \u{2212} 1 degrees of freedom".to_owned(),
         sigma => {
             let nu = sigma.degrees_of_freedom(n).map_or(0.0, DegreesOfFreedom::get);
@@ -123,8 +126,9 @@ fn by_precision(options: &SizePrecision) -> Result<Answer, Failure> {
     let coverage = coverage::range(method, &design.evidence(at.to_f64(), n)?, confidence, kind);
     let really = coverage.map_or_else(String::new, |found| {
         format!(
-            "If that is the true {index}, such an interval covers it in {} of studies.\n",
-            words::span(found.from, found.to)
+            "If that is the true {index}, such an interval covers it in {} of studies{}.\n",
+            words::span(found.from, found.to),
+            words::depending(found.from, found.to)
         )
     });
     let before = achieved_before.map_or_else(
@@ -183,7 +187,7 @@ fn by_power(options: &SizePower) -> Result<Answer, Failure> {
             words::span(size.from, size.to),
             level::plain(against.0),
             words::span(power.from, power.to),
-            if size.from < size.to { ", depending on where the mean lies" } else { "" },
+            words::depending(size.from, size.to),
         )
     });
     let side = if against < claim { "below" } else { "above" };

@@ -166,6 +166,9 @@ fn row(study: &Study, sample: &Sample, index: Index) -> Result<Row, IndexError> 
         Err(MethodError::Index(error)) => return Err(error),
         Err(_) => return Ok(Row { index, estimate, interval: None, method: None, coverage: None }),
     };
+    if found.interval.low.is_none() && found.interval.high.is_none() {
+        return Ok(Row { index, estimate, interval: None, method: None, coverage: None });
+    }
     let method = question.method_of(index);
     Ok(Row {
         index,

@@ -268,11 +268,16 @@ fn distribution(study: &Study, analysis: &Analysis) -> Markup {
 fn narrowed(study: &Study, analysis: &Analysis) -> Markup {
     let planned = study.planned.as_ref().map(|(plan, _)| plan.rule.planned.get());
     let index = study.question.index;
-    let title = format!("How the interval of {index} narrowed");
-    let name = words::interval_name(study.question.confidence, study.question.kind);
+    let (title, name) = if study.planned.as_ref().is_some_and(|(plan, _)| plan.rule.early().is_some()) {
+        (format!("How the estimate of {index} went"), None)
+    } else {
+        let name = words::interval_name(study.question.confidence, study.question.kind);
+        (format!("How the interval of {index} narrowed"), Some(name))
+    };
     let description = match analysis.steps.last() {
         Some(end) => {
-            format!("{index} with its {name} after each reading; after {}: {:.3}.", end.n, end.estimate)
+            let with = name.as_ref().map_or_else(String::new, |name| format!(" with its {name}"));
+            format!("{index}{with} after each reading; after {}: {:.3}.", end.n, end.estimate)
         }
         None => String::new(),
     };
@@ -289,8 +294,13 @@ fn narrowed(study: &Study, analysis: &Analysis) -> Markup {
             figure {
                 div class="scroll" { (narrowing::draw(&caption, &narrowing)) }
                 figcaption {
-                    "Estimate (strong line) and " (name) " as the readings came in. Its limits are meant for the end \
-                     of the study; looking for the first moment at which they please would not keep their confidence."
+                    @if let Some(name) = &name {
+                        "Estimate (strong line) and " (name) " as the readings came in. Its limits are meant for the end \
+                         of the study; looking for the first moment at which they please would not keep their confidence."
+                    } @else {
+                        "The estimate as the readings came in. It has limits once a look has decided, which allow for the \
+                         looks."
+                    }
                 }
             }
         }

@@ -216,7 +216,7 @@ fn an_index_without_an_interval_shows_nothing() {
     let row = analysis.asked.unwrap();
     assert!(row.estimate > 1.0 && row.interval.is_none());
     assert_eq!(words::verdict(&study, &analysis::of(&study)).outcome, Outcome::NotShown);
-    assert!(page.contains("it has no interval"));
+    assert!(page.contains("there is no interval"));
 }
 
 #[test]

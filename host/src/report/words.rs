@@ -144,7 +144,7 @@ fn claim(question: &Question, row: &Row) -> (Outcome, String) {
     let estimate = format!("{} is estimated at {}", row.index, number::nearest(row.estimate, 3));
     let Some(interval) = row.interval else {
         let outcome = if question.required.is_some() { Outcome::NotShown } else { Outcome::Estimate };
-        return (outcome, format!("{estimate}; it has no interval."));
+        return (outcome, format!("{estimate}; there is no interval."));
     };
     let name = interval_name(question.confidence, question.kind);
     let shown = format!("{estimate}; its {name} is {}", interval_text(&interval));
@@ -283,7 +283,13 @@ pub fn limit(value: Decimal, resolution: Option<Resolution>) -> String {
 /// Why an index has no limits.
 #[must_use]
 pub fn no_interval(study: &Study) -> &'static str {
-    if study.decided_early().is_some() { "no limits after an early decision" } else { "no interval" }
+    if study.decided_early().is_some() {
+        "no limits after an early decision"
+    } else if study.planned.as_ref().is_some_and(|(plan, _)| plan.rule.early().is_some()) {
+        "no limits before the decision"
+    } else {
+        "no interval"
+    }
 }
 
 /// How the limits come about after an early decision.
@@ -349,17 +355,26 @@ pub fn span(from: f64, to: f64) -> String {
     if from == to { from } else { format!("{from} to {to}") }
 }
 
+/// What a span of two figures is a span of.
+#[must_use]
+pub fn depending(from: f64, to: f64) -> &'static str {
+    if span(from, to).contains(" to ") { ", depending on where the mean lies" } else { "" }
+}
+
 /// How the interval of the index in question came about and how often such a one really covers.
 #[must_use]
 pub fn method(study: &Study, row: &Row) -> String {
     let Question { index, kind, .. } = study.question;
-    let Some(method) = row.method else { return AFTER_EARLY_DECISION.to_owned() };
+    let Some(method) = row.method else {
+        let told = if study.decided_early().is_some() { AFTER_EARLY_DECISION } else { "" };
+        return told.to_owned();
+    };
     let mut text = format!("The interval of {index} is by {}.", about_method(method, index, kind));
     if let Some(found) = row.coverage {
         text.push_str(&format!(
             " If the true {index} is the estimate, an interval from so many pieces covers it in {} of studies{}.",
             span(found.from, found.to),
-            if found.from < found.to { ", depending on where the mean lies" } else { "" }
+            depending(found.from, found.to)
         ));
     }
     let precision = study.planned.as_ref().and_then(|(plan, _)| plan.rule.precision());

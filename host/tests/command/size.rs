@@ -97,7 +97,7 @@ fn the_words_name_the_pieces_the_interval_and_what_one_piece_fewer_would_do() {
          \n\
          If Cpk then comes out at 1.5, its two-sided 95 % interval is 1.3500 to 1.6500.\n\
          It reaches 9.9989 % from the estimate; at most 10 % is wanted. With 211 pieces it would be 10.0227 %, which is too far.\n\
-         If that is the true Cpk, such an interval covers it in 94.9 % to 95.4 % of studies.\n\
+         If that is the true Cpk, such an interval covers it in 94.9 % to 95.4 % of studies, depending on where the mean lies.\n\
          \n\
          Method: Bissell's normal approximation (1990); sigma overall with n \u{2212} 1 degrees of freedom.\n\
          It supposes a stable process and readings near to normal.\n"

@@ -9,7 +9,7 @@ use super::SizingError;
 use super::design::Design;
 use crate::capability::Index;
 use crate::estimator::{Position, Study};
-use crate::interval::{Method, MethodError, bissell};
+use crate::interval::{Method, bissell};
 use crate::quantity::{Count, DegreesOfFreedom};
 use crate::special::{Side, chi_square, noncentral_t, normal};
 
@@ -43,7 +43,7 @@ impl Decision {
             (Method::NoncentralT, _) => Ok(self.by_noncentral_t(n, nu.get())),
             (Method::Exact, _) => Ok(self.exactly(n, nu)),
             (method @ (Method::Boyles | Method::Balanced), index) => {
-                Err(MethodError::Unsuited { method, index }.into())
+                Err(SizingError::NoTest { method, index })
             }
         }
     }

@@ -10,7 +10,8 @@ use core::fmt;
 pub use decision::{Span, Truth, truth};
 pub use design::Design;
 
-use crate::interval::MethodError;
+use crate::capability::Index;
+use crate::interval::{Method, MethodError};
 
 /// Why there is no sample size.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -30,6 +31,13 @@ pub enum SizingError {
     AboveLimit,
     /// The method does not suit the index, or gives no limit.
     Method(MethodError),
+    /// The method has intervals only, and no test of this index.
+    NoTest {
+        /// The method asked for.
+        method: Method,
+        /// The index asked for.
+        index: Index,
+    },
     /// The degrees of freedom of total sigma come out with the readings.
     SigmaTotal,
     /// Cpm has the overall sigma only.
@@ -51,6 +59,10 @@ impl fmt::Display for SizingError {
                  or index values further apart"
             }
             Self::Method(error) => return error.fmt(f),
+            Self::NoTest { method, index } => {
+                let choose = if *index == Index::Cpm { "chi-square" } else { "exact, noncentral-t or bissell" };
+                return write!(f, "the method {method} has intervals of {index} and no test; choose {choose}");
+            }
             Self::SigmaTotal => {
                 "the degrees of freedom of total sigma show only in the readings, so it has no size beforehand; size \
                  the study with sigma overall, which is the least that total sigma takes"

@@ -201,7 +201,7 @@ fn methods_that_do_not_fit_are_refused_by_name() {
     assert_eq!(Design::new(Index::Cp, Method::Exact), unsuited(Method::Exact, Index::Cp));
     let boyles = design(Index::Cpm, Method::Boyles);
     let refused = power::smallest(&boyles, 1.5, 1.3, FIVE_PERCENT, NINETY_FIVE).map(|size| size.n);
-    assert_eq!(refused, Err(MethodError::Unsuited { method: Method::Boyles, index: Index::Cpm }.into()));
+    assert_eq!(refused, Err(SizingError::NoTest { method: Method::Boyles, index: Index::Cpm }));
     for offset in [-0.1, 101.0, f64::NAN] {
         assert_eq!(boyles.with_offset(offset), Err(SizingError::OffsetOutOfRange));
     }
