@@ -207,9 +207,13 @@ fn up_to<T: Transport>(
     progress: &mut dyn FnMut(Progress),
     kept: &mut Pulled,
 ) -> Result<(), Cause> {
-    let Hello { station, next, .. } = *hello;
+    let Hello { station, mut next, .. } = *hello;
     let begin = ledger.last(station)?;
     kept.through = begin;
+    if next <= begin {
+        // Another host may have pulled further into the same ledger since that hello.
+        next = session.hello()?.next;
+    }
     if next <= begin {
         return Err(Cause::BegunAgain { station, next, last: begin });
     }
