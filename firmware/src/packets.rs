@@ -55,9 +55,9 @@ impl<S: PacketSource> Read for PacketReader<S> {
             self.length = 0;
             self.length = self.source.receive(&mut self.packet).await?.min(PACKET_SIZE);
         }
-        let waiting = &self.packet[self.taken..self.length];
+        let waiting = self.packet.get(self.taken..self.length).unwrap_or_default();
         let count = waiting.len().min(buffer.len());
-        buffer[..count].copy_from_slice(&waiting[..count]);
+        buffer.iter_mut().zip(waiting).for_each(|(place, byte)| *place = *byte);
         self.taken += count;
         Ok(count)
     }

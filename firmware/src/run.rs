@@ -116,7 +116,7 @@ async fn measure<F: MultiwriteNorFlash>(
         let now = clock.now();
         let mut recorder = recorder.borrow_mut();
         match heard {
-            Either::First(Ok(length)) => recorder.gauge_bytes(now, &chunk[..length]),
+            Either::First(Ok(length)) => recorder.gauge_bytes(now, chunk.get(..length).unwrap_or_default()),
             Either::First(Err(LineFault::Garbled)) => recorder.gauge_garbled(now),
             Either::First(Err(LineFault::Lapped(_) | LineFault::Overrun)) => recorder.gauge_overrun(now),
             Either::Second(()) => {}
@@ -148,16 +148,16 @@ async fn answer<F: MultiwriteNorFlash, C: Clock>(
             clock.pause(TICK_MS).await;
             continue;
         };
-        for byte in &request[..length] {
+        for byte in request.get(..length).unwrap_or_default() {
             let length = match recorder.borrow_mut().host_byte(clock.now(), *byte) {
                 Some(frame) => {
-                    reply[..frame.len()].copy_from_slice(frame);
+                    reply.iter_mut().zip(frame).for_each(|(place, byte)| *place = *byte);
                     frame.len()
                 }
                 None => continue,
             };
             let sent = async {
-                to_host.write_all(&reply[..length]).await?;
+                to_host.write_all(reply.get(..length).unwrap_or_default()).await?;
                 to_host.flush().await
             };
             // Too late or not at all: the host asks again, and each frame begins with the byte that ends a torn one.

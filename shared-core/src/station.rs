@@ -254,15 +254,15 @@ impl Station {
     fn lose(&mut self, gap: Gap) {
         self.gaps = self.gaps.saturating_add(1);
         self.lost_unseen = true;
-        if self.lost.is_full()
-            && let [first, second, ..] = self.lost.as_mut_slice()
-        {
-            // Together from now on, with what lies between them.
-            *second = Gap { first: first.first.min(second.first), last: first.last.max(second.last) };
-            self.lost.remove(0);
+        match self.lost.as_mut_slice() {
+            [first, second, third, fourth] => {
+                // The oldest two together from now on, with what lies between them.
+                *first = Gap { first: first.first.min(second.first), last: first.last.max(second.last) };
+                (*second, *third, *fourth) = (*third, *fourth, gap);
+            }
+            // There is room for a fourth.
+            _ => drop(self.lost.push(gap)),
         }
-        // There is room now.
-        let _ = self.lost.push(gap);
     }
 
     /// Writes the state at the front of `space` and says how much it took; `None` if it does not fit.

@@ -5,6 +5,7 @@ pub mod budgets;
 pub mod command;
 pub mod emulator;
 pub mod nist;
+pub mod panics;
 pub mod sequences;
 pub mod study;
 pub mod twin;

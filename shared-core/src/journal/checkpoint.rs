@@ -138,12 +138,12 @@ impl Checkpoints {
         let number = self.latest.map_or(1, |l| l.number.saturating_add(1));
         let Some(used) = encode(buffer, number, marks, state) else { return Ok(false) };
         let slot = self.next_slot;
-        if slot.is_multiple_of(self.slots_in_sector) {
-            let begin = slot / self.slots_in_sector * self.sector;
+        if slot == 0 || slot == self.slots_in_sector {
+            let begin = slot * SLOT_U32;
             flash.erase(begin, begin + self.sector)?;
         }
         // Whatever comes of the write, this slot is used up.
-        self.next_slot = (slot + 1) % (2 * self.slots_in_sector);
+        self.next_slot = if slot + 1 < 2 * self.slots_in_sector { slot + 1 } else { 0 };
         for (page, offset) in buffer.get(..used).unwrap_or_default().chunks(256).zip((0u32..).step_by(256)) {
             flash.write(slot * SLOT_U32 + offset, page)?;
         }

@@ -20,6 +20,8 @@ mod salvage;
 #[cfg(test)]
 mod tests;
 
+use core::num::NonZeroU32;
+
 use embedded_storage::nor_flash::MultiwriteNorFlash;
 
 pub use self::{checkpoint::STATE_MAX, open::Opened, read::Patrol, salvage::Salvage};
@@ -88,8 +90,10 @@ pub struct Journal<F> {
     checkpoints: Checkpoints,
     /// Bytes of a sector, as a flash address.
     sector: u32,
+    /// Pages of a sector.
+    sector_pages: NonZeroU32,
     /// Pages of the ring, a whole number of sectors.
-    places: u32,
+    places: NonZeroU32,
     /// The latest page that was begun.
     newest: Option<PageNumber>,
     /// The next page to begin.
@@ -175,7 +179,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             return Ok(Prepared::Enough);
         }
         let begin = self.ready_end;
-        if let Some(occupant) = begin.0.checked_sub(self.places).filter(|p| *p >= self.tail.0) {
+        if let Some(occupant) = begin.0.checked_sub(self.places.get()).filter(|p| *p >= self.tail.0) {
             let end = PageNumber(occupant).plus(self.sector_pages());
             if !self.all_released_below(end).map_err(AppendError::Flash)? {
                 return Ok(Prepared::Full);
@@ -205,7 +209,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         {
             kept = self.sector_begin(header.number);
         }
-        Ok(kept.plus(self.places).0.saturating_sub(self.head.0))
+        Ok(kept.plus(self.places.get()).0.saturating_sub(self.head.0))
     }
 
     /// Whether more than `reserve` pages are left. Cheap but where the journal is nearly full.
@@ -213,7 +217,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     /// # Errors
     /// The flash's own.
     pub fn has_room(&mut self, reserve: u32) -> Result<bool, F::Error> {
-        let without_erasing = self.tail.plus(self.places).0.saturating_sub(self.head.0);
+        let without_erasing = self.tail.plus(self.places.get()).0.saturating_sub(self.head.0);
         Ok(without_erasing > reserve || self.pages_left()? > reserve)
     }
 
@@ -232,7 +236,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     /// Pages of the whole ring.
     #[must_use]
     pub fn places(&self) -> u32 {
-        self.places
+        self.places.get()
     }
 
     // ---- writing ----
@@ -303,11 +307,11 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     // ---- places ----
 
     fn sector_pages(&self) -> u32 {
-        self.sector / PAGE_U32
+        self.sector_pages.get()
     }
 
     fn sector_begin(&self, page: PageNumber) -> PageNumber {
-        PageNumber(page.0 - page.0 % self.sector_pages())
+        PageNumber(page.0 - page.0 % self.sector_pages)
     }
 
     fn address(&self, page: PageNumber) -> u32 {

@@ -4,6 +4,8 @@
 //! held; a page that was begun in a sector whose erase was itself cut off cannot have held any, and the checkpoint before
 //! each erase tells which sector that is.
 
+use core::num::NonZeroU32;
+
 use embedded_storage::nor_flash::MultiwriteNorFlash;
 
 use super::{
@@ -39,9 +41,10 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         let sector = u32::try_from(F::ERASE_SIZE).map_err(|_| OpenError::Geometry)?;
         let sectors = u32::try_from(flash.capacity() / F::ERASE_SIZE).map_err(|_| OpenError::Geometry)?;
         let fits = F::WRITE_SIZE == 1 && F::READ_SIZE == 1 && F::ERASE_SIZE.is_multiple_of(2 * SLOT);
-        if !fits || sectors < 4 {
-            return Err(OpenError::Geometry);
-        }
+        let sector_pages = NonZeroU32::new(sector / PAGE_U32).filter(|_| fits).ok_or(OpenError::Geometry)?;
+        let data_sectors =
+            sectors.checked_sub(2).filter(|sectors| *sectors >= 2).ok_or(OpenError::Geometry)?;
+        let places = NonZeroU32::new(data_sectors * sector_pages.get()).ok_or(OpenError::Geometry)?;
         let mut slot: Slot = [0; SLOT];
         let checkpoints = Checkpoints::find(&mut flash, &mut slot)?;
         let mut length = None;
@@ -57,7 +60,8 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             flash,
             checkpoints,
             sector,
-            places: (sectors - 2) * (sector / PAGE_U32),
+            sector_pages,
+            places,
             newest: None,
             head: PageNumber(0),
             offset: PAGE,
@@ -77,7 +81,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
     fn scan(&mut self, checkpoint: Option<Found>) -> Result<Salvage, OpenError<F::Error>> {
         let mut newest: Option<Header> = None;
         let mut other = None;
-        for place in 0..self.places {
+        for place in 0..self.places.get() {
             let bytes = self.bytes_at_place(place)?;
             match Header::decode(&bytes).filter(|header| header.number.0 % self.places == place) {
                 Some(header) if newest.is_none_or(|n| header.number > n.number) => newest = Some(header),
@@ -100,7 +104,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         self.head = self.head.min(self.ready_end);
         // Where nothing can be read, nothing is kept.
         self.tail = match self.newest {
-            Some(_) => PageNumber(self.ready_end.0.saturating_sub(self.places)),
+            Some(_) => PageNumber(self.ready_end.0.saturating_sub(self.places.get())),
             None => self.sector_begin(self.head),
         };
         if let Some(oldest) = self.next_page(self.tail)? {
