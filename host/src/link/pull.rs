@@ -207,13 +207,12 @@ fn up_to<T: Transport>(
     progress: &mut dyn FnMut(Progress),
     kept: &mut Pulled,
 ) -> Result<(), Cause> {
-    let Hello { station, mut next, .. } = *hello;
+    let station = hello.station;
     let begin = ledger.last(station)?;
     kept.through = begin;
-    if next <= begin {
-        // Another host may have pulled further into the same ledger since that hello.
-        next = session.hello()?.next;
-    }
+    // Another host may have pulled further into the same ledger since that hello.
+    let again = if hello.next <= begin { session.hello()? } else { hello.clone() };
+    let Hello { next, head, .. } = again;
     if next <= begin {
         return Err(Cause::BegunAgain { station, next, last: begin });
     }
@@ -247,7 +246,7 @@ fn up_to<T: Transport>(
     }
     // The whole chain once more, by its end.
     match ledger.head(station)? {
-        Some((seq, Some(digest))) if seq.next() == next && digest != hello.head => {
+        Some((seq, Some(digest))) if seq.next() == next && digest != head => {
             Err(Cause::Misfit { station, seq })
         }
         _ => Ok(()),
