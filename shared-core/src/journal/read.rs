@@ -121,13 +121,23 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             self.patrol = None;
             return Ok(Gap::between(expected, self.next).map_or(Patrol::Done, Patrol::Missing));
         };
+        if let Some(gap) = Gap::between(expected, header.first) {
+            self.patrol = Some(Round { page: header.number, expected: header.first });
+            return Ok(Patrol::Missing(gap));
+        }
         let behind = self.next_page(header.number.plus(1))?;
         let end = behind.map_or(self.next, |next| next.first);
         let mut bytes = [0; PAGE];
         self.flash.read(self.address(header.number), &mut bytes)?;
         let whole = Records::of(&bytes, header, end).last().map_or(header.first, |(seq, _)| seq.next());
-        self.patrol = Some(Round { page: header.number.plus(1), expected: expected.max(whole) });
-        Ok(Gap::between(expected, header.first).map_or(Patrol::Going, Patrol::Missing))
+        let expected = expected.max(whole);
+        if behind.is_some() {
+            self.patrol = Some(Round { page: header.number.plus(1), expected });
+            return Ok(Patrol::Going);
+        }
+        // The round ends with the newest page: records that are written into it later are none of its business.
+        self.patrol = None;
+        Ok(Gap::between(expected, self.next).map_or(Patrol::Done, Patrol::Missing))
     }
 
     // ---- finding ----

@@ -165,6 +165,18 @@ fn records_are_read_in_windows_from_any_number() {
     assert_eq!((from, digest), (Seq(201), journal.digest()));
 }
 
+#[test]
+fn records_written_in_mid_round_are_not_missing_from_it() {
+    let mut journal = open(Flash::blank());
+    for mark in 0..3_000 {
+        if !append(&mut journal, mark).unwrap() {
+            break;
+        }
+        // A round's step behind each record: its end falls before, into and behind every page.
+        assert!(matches!(journal.patrol().unwrap(), Patrol::Going | Patrol::Done), "behind record {mark}");
+    }
+}
+
 /// One session until the power goes: appends with marks from `mark` on, confirming all but `behind` records. Gives the
 /// marks acknowledged, and the one that was under way.
 fn session(journal: &mut Journal<Flash>, mark: u64, appends: u64, behind: u32) -> (Vec<u64>, Option<u64>) {
