@@ -1,17 +1,18 @@
 //! The integrand of a tail of the noncentral t distribution, and its trapezoidal rule.
 
+use super::flank::Flank;
 use super::{PI, SQRT_2, Side, gamma};
 
 /// √(ν/π) e^−δ(ν/2) exp(ν g(u)) Φ(±(δ − t e^u)), with g(u) = u − (e^2u − 1)/2: over all u, it sums to a tail at t > 0.
 pub(super) struct Integrand {
-    side: Side,
-    t: f64,
-    nu: f64,
-    delta: f64,
+    pub(super) side: Side,
+    pub(super) t: f64,
+    pub(super) nu: f64,
+    pub(super) delta: f64,
     /// Where the sum starts: near the peak.
     centre: f64,
     /// The distance of two nodes.
-    step: f64,
+    pub(super) step: f64,
     /// ln δ/t, where the normal integral is 1/2; `None` for a δ too small for that, or below zero.
     crossing: Option<f64>,
 }
@@ -37,7 +38,7 @@ pub(super) struct Sums {
 /// −ln of the rule's relative error: 10^-15, with a factor 4 for what the bound of the growth leaves out.
 const QUALITY: f64 = 36.0;
 
-/// Nodes on either side. Only ν of 1 or 2 with δ of hundreds come near it: the density falls slowly, the step is small.
+/// Nodes on either side, far more than any tail takes.
 const MOST_NODES: u32 = 100_000;
 
 impl Integrand {
@@ -103,9 +104,14 @@ impl Integrand {
     pub(super) fn sums<const SLOPES: bool>(&self) -> Sums {
         let scale = self.step * libm::sqrt(self.nu / PI) * libm::exp(-gamma::stirling_error(0.5 * self.nu));
         let mut sums = Sums::default();
+        let flank = Flank::of(self);
         for (direction, first) in [(1.0, 0), (-1.0, 1)] {
             for k in first..MOST_NODES {
                 let u = self.centre + direction * f64::from(k) * self.step;
+                if direction < 0.0 && u < flank.begin {
+                    flank.add::<SLOPES>(u, self, &mut sums);
+                    break;
+                }
                 let term = self.add::<SLOPES>(u, &mut sums);
                 if term <= 5e-18 * sums.tail {
                     break;
@@ -160,13 +166,13 @@ struct Node {
 
 impl Integrand {
     fn node(&self, u: f64) -> Node {
-        // ts − δ = δ(e^(u − ln δ/t) − 1): no difference of two large numbers.
+        // Near there, ts − δ = δ(e^(u − ln δ/t) − 1): no difference of two large numbers.
         let (s, x) = match self.crossing {
-            Some(crossing) => {
+            Some(crossing) if u - crossing > -0.7 => {
                 let x = self.delta * libm::expm1(u - crossing);
                 ((x + self.delta) / self.t, x)
             }
-            None => {
+            _ => {
                 let s = libm::exp(u);
                 (s, self.t * s - self.delta)
             }
