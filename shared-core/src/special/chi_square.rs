@@ -15,6 +15,9 @@ mod uniform;
 use super::gamma::Poisson;
 use super::{Side, Tails, normal};
 
+/// A smaller tail than this is taken as this by quantiles.
+const SMALLEST_TAIL: f64 = 1e-300;
+
 /// No series or continued fraction within the stated range needs more terms.
 const MOST_TERMS: u32 = 50_000;
 
@@ -27,10 +30,20 @@ pub fn tails(x: f64, nu: f64) -> Tails {
     if x <= 0.0 {
         return Tails::from_lower(0.0);
     }
-    if x == f64::INFINITY {
+    if x > 2.0 * nu + 4000.0 {
+        // Less than the smallest double: see `most`.
         return Tails::from_upper(0.0);
     }
     Distribution::new(nu).at(x).tails
+}
+
+/// Both tails at `x`, and x times the density; for ν and x above 0 in range.
+pub(super) fn tails_and_density(x: f64, nu: f64) -> (Tails, f64) {
+    if x <= 0.0 || x > 2.0 * nu + 4000.0 {
+        return (tails(x, nu), 0.0);
+    }
+    let at = Distribution::new(nu).at(x);
+    (at.tails, at.x_density)
 }
 
 /// The x that a fraction `p` lies below. For a `p` near 1 take [`upper_quantile`] of what is missing.
@@ -121,9 +134,10 @@ impl Distribution {
             -z * (q * (3.0 * q + 40.0) + 45.0) / 96.0,
             (q * (q * (q + 90.0) + 402.0) + 363.0) / 315.0,
         ];
-        let root = terms.iter().rev().fold(0.0, |sum, term| sum * s + term).max(0.1);
-        let x = 2.0 * a * root * root * root;
-        if z > 4.0 { x.min(self.most(tail)) } else { x }
+        let root = terms.iter().rev().fold(0.0, |sum, term| sum * s + term);
+        // Far out the series goes astray.
+        let root = if z * s > 1.0 { 1.0 + s * (z - s) } else { root.max(0.1) };
+        2.0 * a * root * root * root
     }
 }
 
@@ -206,16 +220,25 @@ fn from_tail(side: Side, tail: f64, nu: f64) -> f64 {
     if nu == 2.0 {
         return if side == Side::Lower { -2.0 * libm::log1p(-tail) } else { -2.0 * libm::log(tail) };
     }
+    let tail = tail.max(SMALLEST_TAIL);
     let distribution = Distribution::new(nu);
     let mut x = distribution.start(side, tail);
     for _ in 0..60 {
         let at = distribution.at(x);
-        // Next to the smallest double there may be nothing left.
-        let reached = at.tails.on(side).max(f64::MIN_POSITIVE);
+        let reached = at.tails.on(side);
+        if reached < f64::MIN_POSITIVE {
+            // Too far out for any double.
+            x *= if side == Side::Upper { 0.95 } else { 2.0 };
+            continue;
+        }
         let step = Step::new(side, tail, reached, at.x_density, distribution.a, 0.5 * x);
         x += x * libm::expm1(step.log_x);
         if step.settles {
             break;
+        }
+        if side == Side::Upper {
+            // From above, steps along the logarithms never pass the point.
+            x = x.min(distribution.most(tail));
         }
     }
     x

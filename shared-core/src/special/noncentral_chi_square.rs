@@ -17,8 +17,13 @@ pub fn tails(x: f64, nu: f64, lambda: f64) -> Tails {
     if x <= 0.0 {
         return Tails::from_lower(0.0);
     }
-    if x == f64::INFINITY {
+    if x > 20.0 * (nu + lambda) + 5000.0 {
+        // Less than the smallest double.
         return Tails::from_upper(0.0);
+    }
+    if x * (1.0 + lambda) < 1e-20 {
+        // Only the first term of the mixture counts.
+        return Tails::from_lower(libm::exp(-0.5 * lambda) * chi_square::tails(x, nu).lower);
     }
     if x < nu + lambda {
         Tails::from_lower(mixture(Side::Lower, x, nu, lambda).tail)
@@ -47,6 +52,9 @@ pub fn upper_quantile(risk: f64, nu: f64, lambda: f64) -> f64 {
     }
 }
 
+/// A smaller tail than this is taken as this by quantiles.
+const SMALLEST_TAIL: f64 = 1e-100;
+
 fn in_range(nu: f64, lambda: f64) -> bool {
     (1.0..=1e6).contains(&nu) && (0.0..=1e6).contains(&lambda)
 }
@@ -60,11 +68,12 @@ struct Mixture {
 fn mixture(side: Side, x: f64, nu: f64, lambda: f64) -> Mixture {
     // A mean below 10^-30 changes no digit of any tail.
     let (a, half, mean) = (0.5 * nu, 0.5 * x, if lambda < 2e-30 { 0.0 } else { 0.5 * lambda });
-    // The mode of the terms, or for the lower tail a bound above it: terms fall beyond where mean · half = k (a + k), since
-    // P(a + 1, x) ≤ P(a, x) x/(a + 1), term by term of the series.
+    // Near the largest term, on the side where the sum ends. Lower terms fall beyond where mean · half = k (a + k), since
+    // P(a + 1, x) ≤ P(a, x) x/(a + 1), term by term of the series; upper ones rise up to there, for a like reason.
+    let balance = 0.5 * (libm::sqrt(a * a + 4.0 * mean * half) - a);
     let mode = match side {
-        Side::Lower => libm::ceil(0.5 * (libm::sqrt(a * a + 4.0 * mean * half) - a)).min(libm::floor(mean)),
-        Side::Upper => libm::floor(mean),
+        Side::Lower => libm::ceil(balance).min(libm::floor(mean)),
+        Side::Upper => libm::floor(balance).max(libm::floor(mean)),
     };
     let mut k = start(side, mode, mean, a, half);
     let mut weight = gamma::poisson(k, mean);
@@ -78,7 +87,8 @@ fn mixture(side: Side, x: f64, nu: f64, lambda: f64) -> Mixture {
             Side::Lower => k <= mode,
             Side::Upper => k >= mode,
         };
-        if past && weight * tail <= 1e-18 * sum.tail {
+        let counts = weight * tail > 1e-18 * sum.tail;
+        if past && !counts {
             return sum;
         }
         match side {
@@ -111,7 +121,7 @@ fn start(side: Side, mode: f64, mean: f64, a: f64, half: f64) -> f64 {
                 ratio *= mean / k * (half / (a + k)).min(1.0);
             }
             Side::Upper if k > 0.0 => {
-                ratio *= k / mean;
+                ratio *= k / mean * ((a + k) / half).min(1.0);
                 k -= 1.0;
             }
             Side::Upper => break,
@@ -128,6 +138,7 @@ fn from_tail(side: Side, tail: f64, nu: f64, lambda: f64) -> f64 {
     if tail == 0.0 {
         return if side == Side::Lower { 0.0 } else { f64::INFINITY };
     }
+    let tail = tail.max(SMALLEST_TAIL);
     let goal = libm::log(tail);
     // The chi-square of equal mean and variance: Patnaik (1949).
     let equivalent = (nu + lambda) * (nu + lambda) / (nu + 2.0 * lambda);
@@ -137,10 +148,12 @@ fn from_tail(side: Side, tail: f64, nu: f64, lambda: f64) -> f64 {
     };
     let mut x = start * (nu + lambda) / equivalent;
     for _ in 0..60 {
+        x = x.min(20.0 * (nu + lambda) + 5000.0);
         let Mixture { tail: reached, x_density } = mixture(side, x, nu, lambda);
+        let reached = reached.max(f64::MIN_POSITIVE);
         let miss = libm::log(reached) - goal;
-        let slope = -side.sign() * x_density / reached;
-        x *= libm::exp(halley_step(miss, slope, 0.0).clamp(-1.0, 1.0));
+        let slope = -side.sign() * x_density.max(f64::MIN_POSITIVE) / reached;
+        x *= libm::exp(halley_step(miss, slope, 0.0).clamp(-50.0, 1.0));
         if miss.abs() < 1e-9 {
             break;
         }

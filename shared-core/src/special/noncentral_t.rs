@@ -1,5 +1,6 @@
 //! The noncentral t distribution, T = (Z + δ)/S with Z standard normal and νS² chi-square: tails, quantiles, and the
-//! noncentrality that a tail asks for. ν from 1 to 10⁶, fractions allowed; δ from −1000 to 1000; tails down to 10^-300.
+//! noncentrality that a tail asks for. ν from 1 to 10⁶, fractions allowed; δ from −1000 to 1000, and any to 10^50 with an error
+//! that grows with it; tails down to 10^-300, and a smaller one that is asked for is taken as that.
 //!
 //! Two methods. For whole ν of up to 400 and δ of the sign of t, a finite sum ([`whole`]): the usual case, ν = n − 1.
 //! Otherwise P(T > t) = E Φ(δ − tS), an integral over u = ln S by the trapezoidal rule, which converges geometrically
@@ -14,6 +15,7 @@
 
 mod flank;
 mod integrand;
+mod sharp;
 mod whole;
 
 use core::f64::consts::{PI, SQRT_2};
@@ -64,17 +66,21 @@ pub fn upper_quantile(risk: f64, nu: f64, delta: f64) -> f64 {
 /// (Cornish & Fisher 1938), Halley's method on the normal scale the rest: 1 or 2 integrals for ν ≥ 10.
 #[must_use]
 pub fn noncentrality(side: Side, tail: f64, t: f64, nu: f64) -> (f64, u32) {
-    if !((1.0..=1e6).contains(&nu) && tail > 0.0 && tail < 1.0 && t.is_finite()) {
+    if !((1.0..=1e6).contains(&nu) && tail > 0.0 && tail < 1.0 && t.abs() <= LARGEST_DELTA) {
         return (f64::NAN, 0);
+    }
+    if tail > 0.5 {
+        return noncentrality(side.other(), 1.0 - tail, t, nu);
     }
     if t < 0.0 {
         let (mirrored, integrals) = noncentrality(side.other(), tail, -t, nu);
         return (-mirrored, integrals);
     }
-    let goal = normal::upper_quantile(tail);
+    let goal = normal::upper_quantile(tail.max(SMALLEST_TAIL));
     if t < SMALLEST_T {
         return (-side.sign() * goal, 0);
     }
+    let settled = settled(goal);
     let mut bracket = Bracket::OPEN;
     let (centre, mut delta) = noncentrality_start(-side.sign() * goal, t, nu);
     let mut integrals = 0;
@@ -86,7 +92,7 @@ pub fn noncentrality(side: Side, tail: f64, t: f64, nu: f64) -> (f64, u32) {
         let at = NormalScale::new(sums.tail, sign * sums.density, sign * sums.density_x);
         let miss = at.z - goal;
         let step = at.halley(miss, centre - delta);
-        if miss.abs() < SETTLED {
+        if miss.abs() < settled {
             return (delta + step, integrals);
         }
         delta = bracket.step(delta, (miss > 0.0) == (side == Side::Upper), step);
@@ -100,12 +106,23 @@ const SMALLEST_T: f64 = 1e-100;
 /// A miss on the normal scale so small that Halley's step, which cubes it, leaves nothing that a double could hold.
 const SETTLED: f64 = 1e-5;
 
+/// The same at a goal's z; at tails below 10^-150 steps are Newton's, as second derivatives fall below the smallest double.
+fn settled(goal: f64) -> f64 {
+    if goal > 26.0 { 1e-4 * SETTLED } else { SETTLED }
+}
+
 /// Far more than the solvers need (4 at ν ≥ 3, 15 for ν = 1 and tails of 10^-12), so that they end on any input.
 const MOST_STEPS: u32 = 100;
 
 fn in_range(nu: f64, delta: f64) -> bool {
-    (1.0..=1e6).contains(&nu) && delta.is_finite()
+    (1.0..=1e6).contains(&nu) && delta.abs() <= LARGEST_DELTA
 }
+
+/// Far beyond what any index asks for; squares of it are still finite.
+const LARGEST_DELTA: f64 = 1e50;
+
+/// A smaller tail than this is taken as this.
+const SMALLEST_TAIL: f64 = 1e-300;
 
 /// The tail on one side, for any t.
 pub(super) fn tail(side: Side, t: f64, nu: f64, delta: f64) -> f64 {
@@ -118,13 +135,45 @@ pub(super) fn tail(side: Side, t: f64, nu: f64, delta: f64) -> f64 {
 
 /// By whichever method is the quicker; for t above zero.
 fn sums<const SLOPES: bool>(side: Side, t: f64, nu: f64, delta: f64) -> Sums {
-    whole::sums(side, t, nu, delta).unwrap_or_else(|| Integrand::new(side, t, nu, delta).sums::<SLOPES>())
+    if delta < LEAST_DELTA {
+        // P(T > t) is below Φ(δ), less than the smallest double.
+        let tail = if side == Side::Lower { 1.0 } else { 0.0 };
+        return Sums { tail, ..Sums::default() };
+    }
+    if t > LARGEST_T {
+        return far_out(side, t, nu, delta);
+    }
+    whole::sums(side, t, nu, delta)
+        .or_else(|| sharp::sums(side, t, nu, delta))
+        .unwrap_or_else(|| Integrand::new(side, t, nu, delta).sums::<SLOPES>())
+}
+
+/// Φ is zero to a double from here down.
+const LEAST_DELTA: f64 = -39.0;
+
+/// From here on P(T > t) goes with t^−ν to the last digit.
+const LARGEST_T: f64 = 1e100;
+
+/// For a t whose square might be infinite: from the tail where it is not.
+fn far_out(side: Side, t: f64, nu: f64, delta: f64) -> Sums {
+    let shrink = LARGEST_T / t;
+    let at = sums::<true>(Side::Upper, LARGEST_T, nu, delta);
+    let power = libm::exp(nu * libm::log(shrink));
+    let tail = at.tail * power;
+    Sums {
+        tail: if side == Side::Lower { 1.0 - tail } else { tail },
+        density: at.density * power,
+        density_x: at.density_x * power,
+        density_ts: at.density_ts * power,
+        density_ttssx: at.density_ttssx * power,
+        ..at
+    }
 }
 
 /// Tail, density and derivatives by the sum and by the integral.
 #[cfg(test)]
 pub(super) fn both_ways(side: Side, t: f64, nu: f64, delta: f64) -> Option<([f64; 5], [f64; 5])> {
-    let all = |sums: Sums| [sums.tail, sums.density, sums.density_s, sums.density_x, sums.density_ssx];
+    let all = |sums: Sums| [sums.tail, sums.density, sums.density_ts, sums.density_x, sums.density_ttssx];
     let sum = whole::sums(side, t, nu, delta)?;
     Some((all(sum), all(Integrand::new(side, t, nu, delta).sums::<true>())))
 }
@@ -144,7 +193,8 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
     if goal_tail == 0.0 {
         return side.sign() * f64::INFINITY;
     }
-    let goal = normal::upper_quantile(goal_tail);
+    let goal = normal::upper_quantile(goal_tail.max(SMALLEST_TAIL));
+    let settled = settled(goal);
     let (root, double_root) = (libm::sqrt(nu), libm::sqrt(2.0 * nu));
     // The scale of T is √(1 + t²/2ν), hence arsinh(t/√2ν) √2ν has a scale near 1.
     let centre = libm::asinh(delta / double_root);
@@ -154,13 +204,14 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
     let mut bracket = Bracket::OPEN;
     for _ in 0..MOST_STEPS {
         let t = root * libm::sinh(y / root);
+        let t = if t.abs() < SMALLEST_T { SMALLEST_T } else { t };
         let (reached, slope, bend) = tail_along_t(side, t, nu, delta);
         // dt/dy and the second derivative.
-        let (stretch, curve) = (libm::sqrt(1.0 + t * t / nu), t / nu);
-        let at = NormalScale::new(reached, slope, bend).along(stretch, curve);
+        let (stretch, curve) = (libm::hypot(1.0, t / root), t / nu);
+        let at = NormalScale::new(reached, slope, bend).along(stretch / t, curve / t);
         let miss = at.z - goal;
         let step = at.halley(miss, centre - y);
-        if miss.abs() < SETTLED {
+        if miss.abs() < settled {
             // From the very t of the tail, not from a rounded y.
             return t + step * (stretch + 0.5 * step * curve);
         }
@@ -169,12 +220,11 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
     root * libm::sinh(y / root)
 }
 
-/// A tail and its first two derivatives by t.
+/// A tail, its derivative by t, times t, and its second derivative, times t².
 fn tail_along_t(side: Side, t: f64, nu: f64, delta: f64) -> (f64, f64, f64) {
-    let t = if t.abs() < SMALLEST_T { SMALLEST_T } else { t };
-    let (mirror, own_side) = if t < 0.0 { (-1.0, side.other()) } else { (1.0, side) };
-    let Sums { tail, density_s, density_ssx, .. } = sums::<true>(own_side, mirror * t, nu, mirror * delta);
-    (tail, -mirror * own_side.sign() * density_s, own_side.sign() * density_ssx)
+    let (own_side, t, delta) = if t < 0.0 { (side.other(), -t, -delta) } else { (side, t, delta) };
+    let Sums { tail, density_ts, density_ttssx, .. } = sums::<true>(own_side, t, nu, delta);
+    (tail, -own_side.sign() * density_ts, own_side.sign() * density_ttssx)
 }
 
 /// The mean of tS − Z and its quantile w (on the normal scale), by Cornish & Fisher with the skewness.

@@ -1,4 +1,5 @@
-//! Laws: closed forms that hold at special parameters, recurrences, round trips. The tables are in `tests/accuracy.rs`.
+//! Laws: closed forms that hold at special parameters, recurrences, round trips. The tables are in `tests/accuracy`, laws over
+//! all ranges in `tests/properties.rs`.
 
 use proptest::prelude::*;
 
@@ -178,17 +179,17 @@ proptest! {
         let t = (delta + z * (1.0 + delta * delta / (2.0 * nu)).sqrt()).abs().max(1e-3);
         let side = if above { Side::Upper } else { Side::Lower };
         if let Some((sum, integral)) = noncentral_t::both_ways(side, t, nu, delta) {
-            let [tail, density, density_s, ..] = integral;
+            let [tail, density, density_ts, ..] = integral;
             prop_assert!(close(sum[0], tail, 1e-12), "{} {}", sum[0], tail);
             // The integral's nodes go where the tail is: they miss the density beside a tail next to 1.
             if tail > 0.9 {
                 return Ok(());
             }
             // The sum's derivatives are those beside the point, which is enough for slopes.
-            prop_assert!(close(sum[1], density, 1e-9) && close(sum[2], density_s, 1e-9));
-            // Differences of the others: E xφ(x) = tE Sφ(x) − δE φ(x).
-            prop_assert!((sum[3] - integral[3]).abs() <= 1e-9 * (t * density_s + delta * density));
-            prop_assert!((sum[4] - integral[4]).abs() <= 1e-9 * (integral[4].abs() + (t + delta) * density_s));
+            prop_assert!(close(sum[1], density, 1e-9) && close(sum[2], density_ts, 1e-9));
+            // Differences of the others: E xφ(x) = E tSφ(x) − δE φ(x).
+            prop_assert!((sum[3] - integral[3]).abs() <= 1e-9 * (density_ts + delta * density));
+            prop_assert!((sum[4] - integral[4]).abs() <= 1e-9 * (integral[4].abs() + t * (t + delta) * density_ts));
         }
     }
 

@@ -52,11 +52,11 @@ impl Flank {
         while power < MOST_POWERS {
             sums.tail += tail[1] / falls.fall;
             if SLOPES {
-                let [zeroth, first, second, third] = falls.moments(density[1], s);
+                let [zeroth, first, second, third] = falls.moments(density[1], t * s);
                 sums.density += zeroth;
-                sums.density_s += first;
-                sums.density_x += t * first - delta * zeroth;
-                sums.density_ssx += t * third - delta * second;
+                sums.density_ts += first;
+                sums.density_x += first - delta * zeroth;
+                sums.density_ttssx += third - delta * second;
             }
             let left = tail[0].abs() + tail[1].abs() + density[1].abs();
             if power > self.least_powers && left <= 1e-18 * sums.tail {
@@ -85,15 +85,15 @@ impl Falls {
         Self { fall: self.fall + self.one * (1.0 - self.fall), ..self }
     }
 
-    /// The sums over the nodes of a density's power, and of it times s, s² and s³.
-    fn moments(self, density: f64, s: f64) -> [f64; 4] {
+    /// The sums over the nodes of a density's power, and of it times ts, its square and its cube.
+    fn moments(self, density: f64, ts: f64) -> [f64; 4] {
         let (first, second) = (self.next(), self.next().next());
         let third = second.next();
         [
             density / self.fall,
-            density * s / first.fall,
-            density * s * s / second.fall,
-            density * s * s * s / third.fall,
+            density * ts / first.fall,
+            density * ts * ts / second.fall,
+            density * ts * ts * ts / third.fall,
         ]
     }
 }

@@ -27,10 +27,10 @@ pub(super) struct Sums {
     pub(super) density: f64,
     /// E x φ(x).
     pub(super) density_x: f64,
-    /// E S φ(x).
-    pub(super) density_s: f64,
-    /// E S² x φ(x).
-    pub(super) density_ssx: f64,
+    /// E tS φ(x).
+    pub(super) density_ts: f64,
+    /// E t²S² x φ(x).
+    pub(super) density_ttssx: f64,
     /// How many nodes it took, each an expm1, an erfc and one exp, or two with slopes.
     pub(super) nodes: u32,
 }
@@ -121,11 +121,12 @@ impl Integrand {
         Sums {
             nodes: sums.nodes,
             lost: 0.0,
-            tail: scale * 0.5 * sums.tail,
+            // Rounding may take it above.
+            tail: (scale * 0.5 * sums.tail).min(1.0),
             density: scale * INVERSE_ROOT * sums.density,
             density_x: scale * INVERSE_ROOT * sums.density_x,
-            density_s: scale * INVERSE_ROOT * sums.density_s,
-            density_ssx: scale * INVERSE_ROOT * sums.density_ssx,
+            density_ts: scale * INVERSE_ROOT * sums.density_ts,
+            density_ttssx: scale * INVERSE_ROOT * sums.density_ttssx,
         }
     }
 
@@ -144,8 +145,9 @@ impl Integrand {
             let density = libm::exp(log_density - 0.5 * x * x);
             sums.density += density;
             sums.density_x += density * x;
-            sums.density_s += density * s;
-            sums.density_ssx += density * s * s * x;
+            let ts = self.t * s;
+            sums.density_ts += density * ts;
+            sums.density_ttssx += density * ts * ts * x;
         }
         term
     }

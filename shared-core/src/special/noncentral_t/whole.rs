@@ -51,19 +51,17 @@ pub(super) fn sums(side: Side, t: f64, nu: f64, delta: f64) -> Option<Sums> {
     let scale = far * norm;
     let rise = scale * libm::sqrt(at.rest);
     let sum = ladder.climb(nu);
-    let root_b = libm::sqrt(at.b);
-    // E φ(x) and E χ φ(x) to E χ³ φ(x), x = tS − δ.
-    let along = nu * scale * root_b;
-    let root = libm::sqrt(nu);
-    let next = ladder.next_own();
-    let density = along * root * ladder.before;
-    let first = along * ladder.own;
-    let second = along * (nu + 2.0) * root * ladder.other;
-    let third = along * (nu + 2.0) * next;
-    let density_s = first / root;
+    // E φ(x) and E tS φ(x) to E t³S³ φ(x), x = tS − δ.
+    let (root, root_b) = (libm::sqrt(nu), libm::sqrt(at.b));
+    let density = nu * scale * root_b * root * ladder.before;
+    let along = nu * scale * (t * root_b);
+    let density_ts = along * ladder.own / root;
+    let second = along * t * (nu + 2.0) * ladder.other / root;
+    let third = along * t * t * (nu + 2.0) * ladder.next_own() / (nu * root);
+    let (t_short, delta_short) = (at.t_short / t, at.delta_short);
 
     let of_base = if odd { 0.0 } else { libm::exp(-0.5 * delta * delta) / libm::sqrt(2.0 * PI) };
-    let lower = base + (rise * sum + (density_s * at.t_short - (density - of_base) * at.delta_short));
+    let lower = base + (rise * sum + (density_ts * t_short - (density - of_base) * delta_short));
     let tail = match side {
         Side::Lower => lower,
         Side::Upper if 1.0 - lower > LARGE => 1.0 - lower,
@@ -71,15 +69,15 @@ pub(super) fn sums(side: Side, t: f64, nu: f64, delta: f64) -> Option<Sums> {
             if ladder.degrees_above(t, nu, delta) > MOST_ABOVE {
                 return None;
             }
-            rise * ladder.remainder() - (density_s * at.t_short - density * at.delta_short)
+            rise * ladder.remainder() - (density_ts * t_short - density * delta_short)
         }
     };
     (tail > 1e-280).then(|| Sums {
         tail,
         density,
-        density_x: t * density_s - delta * density,
-        density_s,
-        density_ssx: (t / root * third - delta * second) / nu,
+        density_x: density_ts - delta * density,
+        density_ts,
+        density_ttssx: third - delta * second,
         ..Sums::default()
     })
 }
@@ -222,7 +220,7 @@ impl Ladder {
             let last = self.own;
             self.step();
             sum += self.own;
-            if self.own * self.own <= 1e-17 * sum * (last - self.own) {
+            if self.own * (self.own / (last - self.own)) <= 1e-17 * sum {
                 break;
             }
         }
