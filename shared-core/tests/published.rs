@@ -129,7 +129,7 @@ fn one_sided_factor(content: f64, confidence: f64, n: f64) -> f64 {
 fn degrees_of_freedom_of_a_test() -> f64 {
     let design = Design::new(Index::Cp, Method::ChiSquare).unwrap();
     let power = Confidence::from_millionths(990_000).unwrap();
-    let size = power::smallest_by(&design, 1.0, (100_f64 / 155.0).sqrt(), Millionths(50_000), power);
+    let size = power::smallest(&design, 1.0, (100_f64 / 155.0).sqrt(), Millionths(50_000), power);
     f64::from(size.unwrap().n.get()) - 1.0
 }
 

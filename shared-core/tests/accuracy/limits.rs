@@ -40,7 +40,7 @@ fn limits(line: &str) -> Vec<Point> {
     let ends = ways.iter().flat_map(|(index, method)| {
         let evidence =
             Evidence { index: *index, estimate: number(4), n, nu, squared_offset: offset * offset };
-        let computed = interval::by_method(*method, &evidence, confidence, kind).unwrap().interval;
+        let computed = interval::of(*method, &evidence, confidence, kind).unwrap().interval;
         [(computed.low, 8), (computed.high, 9)].map(|(end, column)| (*index, *method, end, column))
     });
     let point = |(index, method, end, column): (Index, Method, Option<f64>, usize)| {

@@ -30,11 +30,11 @@ fn row(line: &str) -> Vec<Point> {
     let (what, n, achieved, before) = if fields[0] == "precision" {
         let goal = Precision::Relative(Millionths(millionths(7)));
         let kind: Kind = fields[3].parse().unwrap();
-        let size = precision::smallest_by(&design, number(5), goal, confidence(4), kind).unwrap();
+        let size = precision::smallest(&design, number(5), goal, confidence(4), kind).unwrap();
         ("width", size.n, size.achieved, size.achieved_before)
     } else {
         let alpha = Millionths(millionths(4));
-        let size = power::smallest_by(&design, number(5), number(6), alpha, confidence(8)).unwrap();
+        let size = power::smallest(&design, number(5), number(6), alpha, confidence(8)).unwrap();
         ("power", size.n, size.achieved, size.achieved_before)
     };
     assert_eq!(f64::from(n.get()), number(9), "{line}");

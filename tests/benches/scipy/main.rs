@@ -17,7 +17,7 @@ use donelight_core::capability::Index;
 use donelight_core::interval::Method;
 use donelight_core::quantity::{Confidence, Millionths};
 use donelight_core::sizing::Design;
-use donelight_core::sizing::power::smallest_by;
+use donelight_core::sizing::power::smallest;
 use points::{Group, Point, ours};
 use python::Peer;
 use serde_json::{Value, json};
@@ -175,10 +175,7 @@ fn search(peer: &mut Peer) {
             answer = peer.ask(&question);
             theirs = theirs.min(answer["microseconds"].as_f64().expect("a number"));
             own = own.min(best(|| {
-                n = smallest_by(&design, black_box(claim), against, risk, goal)
-                    .expect("there is one")
-                    .n
-                    .get();
+                n = smallest(&design, black_box(claim), against, risk, goal).expect("there is one").n.get();
             }));
         }
         println!(
