@@ -35,7 +35,8 @@ none: of Cpk Bissell's two-sided interval, the noncentral t below, the exact dis
 Cp and Cpm chi-square. Every study runs reading by reading through
 the core's own code, as on the station, until its plan's rule ends it. Lowest and highest over true indices of 0.5, 1,
 1.33, 2 and 3, each (Cpk, Cpm) with the mean 0, 0.25 and 1 standard deviation off the middle or the target; the process is normal and
-stable, the gauge so fine that rounding plays no part. A lowest value more than 0.3 points below the promise is set in bold.
+stable, the gauge so fine that rounding plays no part. A lowest value that lies, beyond two
+standard errors of the simulation, more than 0.3 points below the promise is set in bold.
 ";
 
 fn main() -> ExitCode {
@@ -119,7 +120,8 @@ fn range(outcomes: &[Outcome]) -> String {
         outcome.map_or_else(String::new, |outcome| {
             let Process { true_index, offset } = outcome.process();
             let percent = 100.0 * outcome.coverage().value;
-            let mark = if percent < 95.0 - SHORTFALL { "**" } else { "" };
+            let error = 100.0 * outcome.coverage().standard_error;
+            let mark = if percent + 2.0 * error < 95.0 - SHORTFALL { "**" } else { "" };
             format!("{mark}{percent:.2} %{mark} at {true_index}, {offset} off")
         })
     };
