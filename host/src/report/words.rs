@@ -395,8 +395,8 @@ pub const fn allows_for_the_stop(precision: Precision, kind: Kind) -> bool {
 }
 
 /// What [`allows_for_the_stop`] means.
-pub const ALLOWS_FOR_THE_STOP: &str = "It lies a little further out than that of a fixed number of pieces, since the study \
-    stops where the estimate helps it to.";
+pub const ALLOWS_FOR_THE_STOP: &str = "One end lies a little further out than it would for a fixed number of pieces, since \
+    the study stops where the estimate helps it to.";
 
 /// Whatever should make the reader look twice. Not tested here, and therefore always said: stability and normality.
 #[must_use]

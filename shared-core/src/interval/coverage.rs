@@ -4,6 +4,10 @@
 //! values: the one whose upper limit is the true index, and the one whose lower limit is. The coverage is the probability
 //! between them.
 
+mod boyles;
+
+pub use boyles::of_cpm as of_cpm_by_boyles;
+
 use super::{Evidence, Kind, Method, balanced, noncentral_t};
 use crate::capability::Index;
 use crate::estimator::{Position, Study};
@@ -32,7 +36,7 @@ pub fn of_cpk(method: Method, confidence: Confidence, kind: Kind, study: &Study)
 /// The least and the most, over all positions of the mean, with which an interval like that of this evidence covers, if the
 /// true index is the estimate.
 ///
-/// `None` where it is not known: for [`Method::Boyles`], for an estimate that is not above zero or beyond all reason, and where [`of_cpk`] has
+/// `None` where it is not known: for an estimate that is not above zero or beyond all reason, and where [`of_cpk`] has
 /// none.
 #[must_use]
 pub fn range(method: Method, evidence: &Evidence, confidence: Confidence, kind: Kind) -> Option<Span> {
@@ -48,6 +52,12 @@ pub fn range(method: Method, evidence: &Evidence, confidence: Confidence, kind: 
             let covered = (0..=60).map(|step| of_cpm(confidence, kind, n, 0.05 * f64::from(step)));
             let from = covered.fold(1.0, f64::min);
             Some(Span { from, to: 1.0 })
+        }
+        (Method::Boyles, Index::Cpm) => {
+            let covered =
+                [0.0, 0.25, 0.5, 1.0, 2.0].map(|offset| of_cpm_by_boyles(confidence, kind, n, offset));
+            let covered = || covered.iter().flatten().copied();
+            Some(Span { from: covered().fold(1.0, f64::min), to: covered().fold(0.0, f64::max) })
         }
         (Method::Bissell, Index::Cp) => of_cp_by_bissell(confidence, kind, nu),
         (Method::Bissell, Index::Cpl | Index::Cpu) => {
