@@ -124,6 +124,10 @@ proptest! {
             {
                 let evidence = evidence(index, estimate, n);
                 let found = of(method, &evidence, confidence, kind).unwrap();
+                // At 60 % a bound from a few pieces may lie on the near side of the estimate.
+                if found.half_width <= 0.0 {
+                    continue;
+                }
                 let (ends, reach) = (Ends::new(confidence, kind), factor * found.half_width);
                 let told = reaches_no_further(method, &evidence, &ends, reach);
                 prop_assert_eq!(told, factor > 1.0, "{} {} {}", index, kind, factor);
