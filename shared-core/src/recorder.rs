@@ -4,6 +4,8 @@
 //! It is the one place where *durable first* is enforced: an event changes the station's state, and so the lamps, only
 //! after [`Journal::append`] returned.
 
+mod answer;
+
 use core::ops::ControlFlow;
 
 use embedded_storage::nor_flash::MultiwriteNorFlash;
@@ -20,8 +22,8 @@ use crate::{
     stopping::Standing,
     text::Text,
     wire::{
-        self, FRAME_MAX, FrameError, FrameReader, Hello, JournalHealth, RECORDS_MAX, Reason, Reply, Request,
-        StationId, Status, StudyStatus,
+        self, FRAME_MAX, FrameError, FrameReader, JournalHealth, RECORDS_MAX, Reason, Reply, Request,
+        StationId,
     },
 };
 
@@ -33,10 +35,6 @@ const RESERVED_FOR_BOOTS: u32 = 10;
 const NEARLY_FULL: u32 = 8;
 /// The patrol begins a new round so long after the last one.
 const PATROL_EVERY_MS: u64 = 60 * 60 * 1_000;
-/// Room is told for readings as wide as the widest so far, and at least of six digits.
-const SIX_DIGITS: i64 = 999_999;
-/// … and for stations that are on for so long: two bits short of five bytes, a hundred days.
-const LONG_UP: Millis = Millis(1 << 33);
 /// The erase ahead of need waits until the gauge was silent for so long.
 const QUIET_MS: u64 = 200;
 /// Refusals are collected for so long before they are recorded, so that rubbish does not fill the journal.
@@ -120,7 +118,7 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             minded: now,
             taken: None,
             blinking: None,
-            widest: SIX_DIGITS,
+            widest: answer::SIX_DIGITS,
             patrolled: None,
         };
         recorder.look_at_journal();
@@ -390,114 +388,6 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             Ok(left) if left <= self.journal.places() / NEARLY_FULL => JournalHealth::NearlyFull,
             Ok(_) => JournalHealth::Well,
         };
-    }
-
-    // ---- answering ----
-
-    fn answer<'r>(&mut self, now: Millis, request: Request, records: &'r mut [u8; RECORDS_MAX]) -> Reply<'r> {
-        match request {
-            Request::Hello => Reply::Hello(Hello {
-                station: self.id,
-                firmware: self.firmware.clone(),
-                next: self.journal.next(),
-                oldest: self.journal.oldest().unwrap_or(self.journal.next()),
-                head: self.journal.digest(),
-            }),
-            Request::Status => Reply::Status(self.status(now)),
-            Request::Load { plan, replace } => recorded(self.load(now, plan, replace)),
-            Request::Records { from } if from > self.journal.next() => Reply::Refused(Reason::BeyondJournal),
-            Request::Records { from } => match self.journal.window(from, records) {
-                Ok((before, used)) => {
-                    Reply::Records { before, records: records.get(..used).unwrap_or_default() }
-                }
-                Err(_) => Reply::Refused(Reason::NotRecorded(Refusal::FlashFault)),
-            },
-            Request::Received { through } if through >= self.journal.next() => {
-                Reply::Refused(Reason::BeyondJournal)
-            }
-            Request::Received { through } => {
-                self.journal.release(through);
-                self.look_at_journal();
-                Reply::Done
-            }
-            Request::SetClock { unix_ms } => {
-                let event = Event::Clock { unix_ms };
-                recorded(self.record_leaving(RESERVED_FOR_BOOTS, now, &event).map_err(Reason::NotRecorded))
-            }
-            Request::Blink => {
-                self.blinking = Some(now);
-                Reply::Done
-            }
-        }
-    }
-
-    fn load(&mut self, now: Millis, plan: crate::plan::Plan, replace: bool) -> Result<Seq, Reason> {
-        if let Some(study) = self.station.study() {
-            let untouched = study.moments().n() == Count::ZERO && study.progress().taken_back == 0;
-            // Asked again because the answer was lost: the study is there already.
-            if untouched && *study.plan() == plan {
-                return Ok(study.began());
-            }
-            if !untouched && study.standing() == Standing::Gathering && !replace {
-                return Err(Reason::StudyUnfinished);
-            }
-        }
-        let before = self.line_settings();
-        let event = Event::Plan(plan);
-        let seq = self.record_leaving(RESERVED_FOR_BOOTS, now, &event).map_err(Reason::NotRecorded)?;
-        if self.line_settings() != before {
-            self.gauge = LineAssembler::new(now);
-        }
-        Ok(seq)
-    }
-
-    fn status(&mut self, now: Millis) -> Status {
-        self.look_at_journal();
-        let last = self.journal.next().0.saturating_sub(1);
-        Status {
-            study: self.station.study().map(|study| {
-                let sample = study.sample();
-                let estimate = study.estimate();
-                StudyStatus {
-                    began: study.began(),
-                    name: study.plan().name.clone(),
-                    progress: study.progress(),
-                    mean: study.moments().mean(study.plan().resolution),
-                    // That of all readings, whichever sigma the index takes.
-                    standard_deviation: sample
-                        .and_then(|_| study.moments().standard_deviation(study.plan().resolution)),
-                    estimate: estimate.map(|e| e.estimate),
-                    low: estimate.and_then(|e| e.interval.low),
-                    high: estimate.and_then(|e| e.interval.high),
-                }
-            }),
-            held: self.station.study().and_then(|study| study.held()),
-            boots: self.station.boots(),
-            up: now,
-            room: self.room(now),
-            unconfirmed: last.saturating_sub(self.journal.released().0),
-            refused: self.station.refused().saturating_add(self.refused_unrecorded),
-            last_refusal: self.last_refusal.map(|(_, refusal)| refusal),
-            journal: self.health,
-            gaps: self.station.gaps(),
-            lost: self.station.latest_lost(),
-        }
-    }
-
-    /// Readings that surely can still be taken; see [`Journal::readings_in`].
-    fn room(&mut self, now: Millis) -> u32 {
-        let left = self.journal.pages_left().unwrap_or(0).saturating_sub(RESERVED_PAGES);
-        let at = Millis(now.0.saturating_mul(2)).max(LONG_UP);
-        // Within range, since it was read as a reading.
-        let widest = Counts::new(self.widest).unwrap_or_default();
-        self.journal.readings_in(left, at, widest)
-    }
-}
-
-fn recorded<'r>(outcome: Result<Seq, Reason>) -> Reply<'r> {
-    match outcome {
-        Ok(seq) => Reply::Recorded(seq),
-        Err(reason) => Reply::Refused(reason),
     }
 }
 

@@ -16,6 +16,7 @@ use core::{cell::UnsafeCell, fmt::Write as _};
 use cortex_m_rt::{ExceptionFrame, exception};
 use defmt_rtt as _;
 use donelight_core::{
+    journal::OpenError,
     plan::{LineSettings, Parity},
     record::Millis,
     recorder::Recorder,
@@ -102,8 +103,14 @@ async fn main(spawner: Spawner) {
     let host = connect_usb(spawner, usb::Driver::new(board.USB, Irqs), id);
     match recorder {
         Ok(recorder) => run::run(recorder, gauge, host, panel, BoardClock, Feeder(watchdog)).await,
-        Err(_) => {
-            defmt::error!("the journal cannot be read: exchange the board");
+        Err(error) => {
+            match error {
+                OpenError::Format { found } => defmt::error!(
+                    "the journal has format {=u8}: pull it with the image that wrote it, then erase the flash",
+                    found
+                ),
+                _ => defmt::error!("the journal cannot be read: exchange the board"),
+            }
             run::show_failure(panel, BoardClock, Feeder(watchdog)).await;
         }
     }

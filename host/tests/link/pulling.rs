@@ -6,6 +6,7 @@ use donelight::ledger::Fate;
 use donelight::link::Session;
 use donelight::link::memory::MemoryLink;
 use donelight::link::pull::pull;
+use donelight::virtual_station::flash::RamFlash;
 use donelight_core::plan::{Draft, Plan};
 use donelight_core::recorder::Button;
 use donelight_core::sigma::{Sigma, SubgroupSize};
@@ -105,4 +106,12 @@ fn progress_reaches_its_end() {
     assert!(told.windows(2).all(|pair| pair[0].total != pair[1].total || pair[0].done < pair[1].done));
     let whole = told.iter().rfind(|progress| progress.total == hello.next.0 - 1).unwrap();
     assert_eq!(whole.done, whole.total);
+}
+
+#[test]
+fn an_empty_station_with_the_picos_flash_says_that_more_than_fifty_thousand_readings_fit() {
+    let mut station = MemoryLink::start(RamFlash::blank(256), STATION).unwrap();
+    station.pass(1_000);
+    let room = Session::open(&mut station).unwrap().0.status().unwrap().room;
+    assert_eq!(room, 52_559);
 }

@@ -9,6 +9,7 @@ use crate::{
     flash_model::Flash,
     plan::{Plan, tests as plans},
     record::Sealed,
+    wire::Status,
 };
 
 const ID: StationId = StationId([1, 2, 3, 4, 5, 6, 7, 8]);
