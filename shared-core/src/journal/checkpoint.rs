@@ -157,6 +157,12 @@ impl Checkpoints {
         }
     }
 
+    /// Whether the next checkpoint erases its sector first.
+    #[cfg(test)]
+    pub(super) fn next_is_fresh(&self) -> bool {
+        self.next_slot == 0 || self.next_slot == self.slots_in_sector
+    }
+
     /// Notes with the latest checkpoint that its sector is erased.
     pub(super) fn erased<F: NorFlash>(&mut self, flash: &mut F) -> Result<(), F::Error> {
         let Some(found) = &mut self.latest else { return Ok(()) };

@@ -392,6 +392,52 @@ fn no_number_is_given_twice_whichever_bit_of_the_newest_page_turns() {
     }
 }
 
+/// What a cut erase leaves can be anything; no record was ever written there, so it is no gap, and no write that was cut.
+#[test]
+fn a_sector_whose_erase_was_cut_off_is_no_gap_whatever_it_reads_like() {
+    for appends in [250, 1_000, 1_400] {
+        for noise in 0..40u32 {
+            let mut journal = open(Flash::blank());
+            let mut mark = 0;
+            loop {
+                match journal.append(Millis(mark), &event(mark)) {
+                    Ok(seq) => {
+                        journal.release(seq);
+                        mark += 1;
+                    }
+                    Err(AppendError::NotPrepared) if mark >= appends => break,
+                    Err(AppendError::NotPrepared) => {
+                        assert_eq!(journal.prepare(|_| Some(0)), Ok(Prepared::Erased))
+                    }
+                    Err(error) => panic!("{error:?}"),
+                }
+            }
+            // The checkpoint is written, and the power goes within the erase.
+            let spared = if journal.checkpoints.next_is_fresh() { 4096 } else { 0 };
+            journal.flash().fuel = spared + 700;
+            assert!(append(&mut journal, mark).is_err());
+            let sector = journal.address(journal.ready_end) as usize;
+            let mut flash = journal.flash().clone();
+            flash.fuel = usize::MAX;
+            let mut state = noise;
+            for byte in &mut flash.bytes[sector..sector + 4096] {
+                state = state.wrapping_mul(1_664_525).wrapping_add(1_013_904_223);
+                *byte = match noise % 4 {
+                    0 => 0,
+                    1 => *byte | (state >> 24) as u8,
+                    _ => (state >> 24) as u8,
+                };
+            }
+            let (mut again, salvage) = opened(flash);
+            assert_eq!(salvage, Salvage::default(), "{appends} {noise}");
+            assert_eq!(again.next(), journal.next());
+            assert!(append(&mut again, mark).unwrap());
+            assert_eq!(content(&mut again).last().unwrap().1, event(mark));
+            assert_eq!(missing(&mut again), []);
+        }
+    }
+}
+
 #[test]
 fn a_journal_of_another_format_is_refused_and_left_as_it_is() {
     let mut flash = Flash::blank();
