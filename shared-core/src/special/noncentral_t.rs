@@ -108,8 +108,11 @@ const SETTLED: f64 = 1e-5;
 
 /// The same at a goal's z; at tails below 10^-150 steps are Newton's, as second derivatives fall below the smallest double.
 fn settled(goal: f64) -> f64 {
-    if goal > 26.0 { 1e-4 * SETTLED } else { SETTLED }
+    if goal > FAR { 1e-4 * SETTLED } else { SETTLED }
 }
+
+/// The z of such a tail.
+const FAR: f64 = 26.0;
 
 /// Far more than the solvers need (4 at ν ≥ 3, 15 for ν = 1 and tails of 10^-12), so that they end on any input.
 const MOST_STEPS: u32 = 100;
@@ -208,7 +211,10 @@ fn point(side: Side, goal_tail: f64, nu: f64, delta: f64) -> f64 {
         let (reached, slope, bend) = tail_along_t(side, t, nu, delta);
         // dt/dy and the second derivative.
         let (stretch, curve) = (libm::hypot(1.0, t / root), t / nu);
-        let at = NormalScale::new(reached, slope, bend).along(stretch / t, curve / t);
+        let mut at = NormalScale::new(reached, slope, bend).along(stretch / t, curve / t);
+        if goal > FAR {
+            at.bend = 0.0;
+        }
         let miss = at.z - goal;
         let step = at.halley(miss, centre - y);
         if miss.abs() < settled {

@@ -22,8 +22,9 @@ use points::{Group, Point, ours};
 use python::Peer;
 use serde_json::{Value, json};
 
-/// How many of a group's points are computed to 52 digits, which takes up to seconds each.
-const EXACT_POINTS: usize = 10;
+/// How many of a group's points are computed to 52 digits, which takes up to seconds each; quantiles longer than tails.
+const EXACT_TAILS: usize = 10;
+const EXACT_QUANTILES: usize = 5;
 
 /// Rounds in which both sides are timed in turn; the best of each counts.
 const ROUNDS: usize = 3;
@@ -74,7 +75,8 @@ fn compare(peer: &mut Peer, function: &str, groups: &[Group]) {
 /// The worst and the median error of each side.
 fn errors(peer: &mut Peer, function: &str, points: &[Point]) -> ((f64, f64), (f64, f64)) {
     let known = points[0].exact.is_some();
-    let step = if known { 1 } else { points.len().div_ceil(EXACT_POINTS) };
+    let exact = if function.ends_with("cdf") { EXACT_TAILS } else { EXACT_QUANTILES };
+    let step = if known { 1 } else { points.len().div_ceil(exact) };
     let points: Vec<Point> = points.iter().step_by(step).cloned().collect();
     let mut question = question("errors", function, &points);
     let one_or_both = |values: Vec<Value>| if values.len() == 1 { values[0].clone() } else { json!(values) };
