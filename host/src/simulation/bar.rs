@@ -1,7 +1,7 @@
 //! Which readings cannot end a study: told cheaply and for certain, so that the interval is computed only at the others.
 //!
 //! At n pieces the relative half-width of an interval falls as the estimate grows: for Cpk, Cpl and Cpu it is about
-//! z·√(1/(9nĈ²) + 1/(2ν)), for Cp it does not depend on Ĉ. (An absolute one grows; it has no bar.) So at each n there is a bar that the estimate must reach
+//! z·√(1/(9nĈ²) + 1/(2ν)), for Cp it does not depend on Ĉ; an absolute one grows with it. So at each n there is a bar that the estimate must reach
 //! before the rule can settle. The bar is found with the core's own interval and set a little too low, and the
 //! estimate is bounded from above, by far more than rounding can matter: below the bar nothing is lost, and from the
 //! bar on the core decides. A test holds the two ways to the same end of every study.
@@ -39,42 +39,53 @@ impl<'a> Bar<'a> {
         let n = moments.n();
         let look = n.get().checked_sub(self.plan.rule.planned.get());
         let Some(bar) = look.and_then(|look| self.at.get(look as usize)) else { return false };
-        estimate_at_most(self.plan.index, moments, gauged) < *bar.get_or_init(|| self.find(n))
+        let bar = *bar.get_or_init(|| self.find(n));
+        let (at_least, at_most) = estimate_between(self.plan.index, moments, gauged);
+        match self.plan.rule.precision() {
+            Some(Precision::Relative(_)) => at_most < bar,
+            Some(Precision::Absolute(_)) => at_least > bar,
+            // A claim that is decided early is looked at seldom, and any estimate may decide it.
+            None => false,
+        }
     }
 
-    /// An estimate that is too low to settle at n pieces, and nearly the largest such: by halving between an estimate
-    /// that is too low and one that may not be.
+    /// An estimate that is too low to settle at n pieces (too high, if the precision is absolute), and nearly the last such:
+    /// by halving between one that does not settle and one that may.
     fn find(&self, n: Count) -> f64 {
-        // A claim that is decided early is looked at seldom, and any estimate may decide it.
-        let Some(Precision::Relative(goal)) = self.plan.rule.precision() else { return f64::NEG_INFINITY };
-        let widened = goal.to_f64() * (1.0 + MARGIN);
+        let Some(precision) = self.plan.rule.precision() else { return f64::NEG_INFINITY };
+        let widened = precision.goal() * (1.0 + MARGIN);
         let Some(nu) = self.plan.sigma.degrees_of_freedom(n) else { return f64::NEG_INFINITY };
         let may_settle = |at: f64| {
             let evidence = Evidence { index: self.plan.index, estimate: at, n, nu, squared_offset: 0.0 };
-            self.plan.estimate(&evidence).map_or(true, |found| found.half_width / at <= widened)
+            self.plan
+                .estimate(&evidence)
+                .map_or(true, |found| precision.achieved(found.half_width, at) <= widened)
         };
-        let (mut too_low, mut open) = (0.0, MOST);
+        let (mut out, mut open) = match precision {
+            Precision::Relative(_) => (0.0, MOST),
+            Precision::Absolute(_) => (MOST, 0.0),
+        };
         if !may_settle(open) {
             return open;
         }
         for _ in 0..40 {
-            let middle = f64::midpoint(too_low, open);
-            if may_settle(middle) { open = middle } else { too_low = middle }
+            let middle = f64::midpoint(out, open);
+            if may_settle(middle) { open = middle } else { out = middle }
         }
-        too_low
+        out
     }
 }
 
-/// No less than the estimate that the core would give; infinite where that is not known, and below all where there is
-/// none, since all readings are alike.
-fn estimate_at_most(index: Index, moments: &Moments, gauged: &Gauged) -> f64 {
+/// No more and no less than the estimate that the core would give; without bounds where that is not known. Where there is
+/// none, since all readings are alike, nothing settles: then it is below all and above all.
+fn estimate_between(index: Index, moments: &Moments, gauged: &Gauged) -> (f64, f64) {
     let (n, sum, sum_of_squares) = (*moments).into();
     let pieces = i64::from(n.get());
     // As in the core, n Σc² − (Σc)² is not negative and fits; here it is rounded where the core's ratio is exact.
     let square = u128::from(sum.unsigned_abs()).pow(2);
     let scatter = (u128::from(n.get()) * sum_of_squares - square) as f64;
     if scatter == 0.0 {
-        return f64::NEG_INFINITY;
+        return (f64::INFINITY, f64::NEG_INFINITY);
     }
     let sigma = (scatter / (pieces * (pieces - 1)) as f64).sqrt();
     let mean = (sum - pieces * gauged.centre.get()) as f64 / pieces as f64;
@@ -85,12 +96,17 @@ fn estimate_at_most(index: Index, moments: &Moments, gauged: &Gauged) -> f64 {
         Index::Cpk => above_lower.min(below_upper),
         Index::Cpl => above_lower,
         Index::Cpu => below_upper,
-        Index::Cpm => f64::INFINITY,
+        Index::Cpm => return (f64::NEG_INFINITY, f64::INFINITY),
     };
     // What cancels in a distance is at most of the size of the limits and the mean.
     let size = |limit: Option<f64>| limit.map_or(0.0, f64::abs);
     let lost = MARGIN / 10.0 * (mean.abs() + size(gauged.lower) + size(gauged.upper));
-    (distance + lost) / (3.0 * sigma) * (1.0 + MARGIN)
+    // A margin outwards, whichever sign the distance has.
+    let bound = |distance: f64, margin: f64| {
+        let estimate = distance / (3.0 * sigma);
+        estimate + margin * estimate.abs()
+    };
+    (bound(distance - lost, -MARGIN), bound(distance + lost, MARGIN))
 }
 
 #[cfg(test)]

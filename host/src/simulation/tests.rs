@@ -270,6 +270,12 @@ fn looks_that_are_left_out_change_the_end_of_no_study() {
         plan("cp", "two-sided", 2, "25%", 300),
         plan("cp", "upper", 2, "150%", 300),
         plan("cpk", "two-sided", 2, "200%", 300),
+        plan("cpk", "two-sided", 2, "0.2", 300),
+        plan("cpu", "upper", 5, "0.3", 300),
+        plan("cp", "lower", 2, "0.25", 300),
+        // By the methods that a plan takes if it names none.
+        changed(&[("kind = \"two-sided\"", "kind = \"lower\""), ("planned = 212", "planned = 5")]),
+        changed(&[("kind = \"two-sided\"", "kind = \"upper\""), ("planned = 212", "planned = 5")]),
         changed(&one_limit),
         changed(&far),
         changed(&coarse),

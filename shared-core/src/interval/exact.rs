@@ -26,10 +26,15 @@ pub fn limit(estimate: f64, n: Count, nu: DegreesOfFreedom, side: Side, risk: f6
 
 /// Newton's method on the normal scale. The start counts draws beyond both limits twice: 3 or 4 integrals.
 fn upper(estimate: f64, n: Count, nu: DegreesOfFreedom, risk: f64) -> f64 {
+    if noncentral_t::is_far(estimate, n, nu) {
+        // The mean is next to nothing there, and its position little more than the bias of a centred estimate, E|Z|/(3√n).
+        let of_one_limit = noncentral_t::limit(estimate, n, nu, Side::Upper, risk);
+        return of_one_limit
+            + libm::sqrt(core::f64::consts::FRAC_2_PI) / (3.0 * libm::sqrt(f64::from(n.get())));
+    }
     let start = noncentral_t::limit(estimate, n, nu, Side::Upper, 0.5 * risk);
-    // Then no draw is beyond both limits, and the start is exact; a limit below zero is a little too high. Far out the
-    // mean is next to nothing, and with it its position.
-    if estimate <= 0.0 || !start.is_finite() || noncentral_t::is_far(estimate, n, nu) {
+    // Then no draw is beyond both limits, and the start is exact; a limit below zero is a little too high.
+    if estimate <= 0.0 || !start.is_finite() {
         return start;
     }
     let goal = normal::upper_quantile(risk);
@@ -51,4 +56,22 @@ fn upper(estimate: f64, n: Count, nu: DegreesOfFreedom, risk: f64) -> f64 {
         cpk = if next > low && next < high { next } else { 0.5 * (low + high) };
     }
     cpk
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn the_upper_limit_far_out_goes_on_from_the_exact_one() {
+        for (n, risk) in [(5_u32, 0.025), (30, 0.05), (300, 0.001)] {
+            let n = Count::new(n).unwrap();
+            let nu = DegreesOfFreedom::overall(n).unwrap();
+            // The last estimate that is not far, and the first that is.
+            let border = 100.0 * nu.get().sqrt() / (3.0 * f64::from(n.get()).sqrt());
+            let reach = |estimate: f64| limit(estimate, n, nu, Side::Upper, risk) / estimate - 1.0;
+            let (near, far) = (reach(border * 0.999_999), reach(border * 1.000_001));
+            assert!((far / near - 1.0).abs() < 2e-3, "{n:?} {near} {far}");
+        }
+    }
 }
