@@ -6,6 +6,7 @@ pub mod command;
 pub mod emulator;
 pub mod nist;
 pub mod panics;
+pub mod random;
 pub mod sequences;
 pub mod study;
 pub mod twin;

@@ -2,7 +2,6 @@
 //! by that number alone: `DONELIGHT_SEQUENCE=<number>` runs a test on it and on no other.
 
 mod plans;
-mod random;
 mod reached;
 mod readings;
 
@@ -11,7 +10,7 @@ use donelight_core::record::Seq;
 use donelight_core::wire::{self, FRAME_MAX, Request};
 use donelight_twin::{SEQUENCE_MAX, Step, push};
 
-use random::Random;
+use crate::random::Random;
 pub use reached::{REACHED, Reached, Tally};
 use readings::Gauge;
 
@@ -187,7 +186,7 @@ impl Writer {
             88 => self.plain(Step::Garbled),
             89 => {
                 let length = self.random.below(80);
-                let bytes = (0..length).map(|_| self.random.next() as u8).collect();
+                let bytes = (0..length).map(|_| self.random.bits() as u8).collect();
                 self.happenings.push(Happening::Rubbish(bytes));
             }
             _ => self.ask(),

@@ -13,7 +13,7 @@ use donelight_core::stopping::early::{Boundary, EarlyDecision, Look, Spending};
 use donelight_core::stopping::{Goal, StoppingRule};
 use donelight_core::text::Text;
 
-use super::random::Random;
+use crate::random::Random;
 
 /// The indices of most plans; beside them Cpm, which takes twice as long.
 const INDICES: [Index; 4] = [Index::Cp, Index::Cpl, Index::Cpu, Index::Cpk];

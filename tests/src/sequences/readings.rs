@@ -4,7 +4,7 @@ use donelight_core::counts::Counts;
 use donelight_core::plan::Plan;
 
 use super::plans::Scale;
-use super::random::Random;
+use crate::random::Random;
 
 /// A gauge at a process.
 #[derive(Clone, Debug)]
@@ -78,6 +78,6 @@ pub(super) fn rubbish(random: &mut Random) -> Vec<u8> {
         4 => b"0.00000000001".to_vec(),
         5 => "12,5 µm".as_bytes().to_vec(),
         6 => vec![b'7'; random.between(60, 90) as usize],
-        _ => (0..random.below(20)).map(|_| random.next() as u8).collect(),
+        _ => (0..random.below(20)).map(|_| random.bits() as u8).collect(),
     }
 }
