@@ -6,7 +6,7 @@
 //!
 //! The answer carries the request's number. Its upper half is a token that the host draws for each session, so that two
 //! hosts that share a line tell their answers apart; the lower half counts. A frame that fails any check is dropped whole; whoever waits for it asks
-//! again, and asking again never changes anything twice. After an error the next zero byte begins afresh. Messages only
+//! again, for less at once if it can, and asking again never changes anything twice. After an error the next zero byte begins afresh. Messages only
 //! ever grow at their end: postcard numbers them by position, and an unknown one gets [`Reply::Refused`].
 
 use serde::{Deserialize, Serialize};
@@ -78,6 +78,14 @@ pub enum Request {
     },
     /// Show which station you are: both lamps in turn for some seconds.
     Blink,
+    /// The records from this number on, in so many bytes at most, yet one record at least: where longer frames do not
+    /// arrive whole, shorter ones may.
+    RecordsWithin {
+        /// The first one wanted.
+        from: Seq,
+        /// Bytes of records.
+        bytes: u16,
+    },
 }
 
 /// What the station answers.
@@ -91,7 +99,7 @@ pub enum Reply<'a> {
     Status(Status),
     /// To `Load`, `SetClock`: recorded under this number.
     Recorded(Seq),
-    /// To `Records`: records one behind the other, without a gap. If the first one's number is not the one asked for,
+    /// To `Records`, `RecordsWithin`: records one behind the other, without a gap. If the first one's number is not the one asked for,
     /// those between are not to be had; if there are none, none from that number on are.
     Records {
         /// The chain's digest before the first of them.

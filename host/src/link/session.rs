@@ -1,5 +1,6 @@
 //! Requests and replies over a [`Transport`]: numbered, repeated until answered, each with a last moment.
 
+use std::cell::Cell;
 use std::hash::{BuildHasher, Hasher, RandomState};
 use std::io::{self, ErrorKind};
 use std::time::{Duration, Instant};
@@ -7,7 +8,9 @@ use std::time::{Duration, Instant};
 use donelight_core::chain::Digest;
 use donelight_core::plan::Plan;
 use donelight_core::record::Seq;
-use donelight_core::wire::{self, FRAME_MAX, FrameError, FrameReader, Hello, Reply, Request, Status};
+use donelight_core::wire::{
+    self, FRAME_MAX, FrameError, FrameReader, Hello, RECORDS_MAX, Reply, Request, Status,
+};
 
 use super::{LinkError, Transport};
 
@@ -30,6 +33,12 @@ impl Patience {
         Self { again_after: Duration::from_millis(1_500), give_up_after: Duration::from_secs(10) };
 }
 
+/// As many bytes of records as fit a frame.
+const WINDOW_MAX: u16 = RECORDS_MAX as u16;
+
+/// A reading's record has about so many.
+const WINDOW_MIN: u16 = 16;
+
 /// A conversation with one station.
 #[derive(Debug)]
 pub struct Session<T> {
@@ -41,6 +50,8 @@ pub struct Session<T> {
     reader: FrameReader,
     /// The frame to send.
     frame: Box<[u8; FRAME_MAX]>,
+    /// So many bytes of records are asked for at once: fewer where longer answers did not arrive.
+    window: u16,
     /// The answer, once its check sum and its number fit.
     answer: Vec<u8>,
 }
@@ -62,13 +73,27 @@ impl<T: Transport> Session<T> {
         // The token of this session, and a first number: answers to other programs may be on their way, and no other
         // session hardly ever uses these.
         let [n0, n1, n2, n3, ..] = RandomState::new().build_hasher().finish().to_le_bytes();
+        Self::open_numbered(transport, first, later, u32::from_le_bytes([n0, n1, n2, n3]))
+    }
+
+    /// [`Session::open_with`] for a test that is to send the same bytes again: this is the number before the first.
+    ///
+    /// # Errors
+    /// See [`LinkError`].
+    pub fn open_numbered(
+        transport: T,
+        first: Patience,
+        later: Patience,
+        number: u32,
+    ) -> Result<(Self, Hello), LinkError> {
         let mut session = Self {
             transport,
             patience: first,
             met: false,
-            number: u32::from_le_bytes([n0, n1, n2, n3]),
+            number,
             reader: FrameReader::default(),
             frame: Box::new([0; FRAME_MAX]),
+            window: WINDOW_MAX,
             answer: Vec::new(),
         };
         let hello = session.hello()?;
@@ -111,14 +136,32 @@ impl<T: Transport> Session<T> {
     }
 
     /// The bytes of whole records from number `from` on, as many as fit a frame, with the chain's digest before the first
-    /// of them; empty if there is none.
+    /// of them; empty if there is none. On a line on which so long an answer does not arrive whole, a shorter one is asked for.
     ///
     /// # Errors
     /// See [`LinkError`].
     pub fn records(&mut self, from: Seq) -> Result<(Digest, &[u8]), LinkError> {
-        match self.ask(|| Request::Records { from })? {
-            Reply::Records { before, records } => Ok((before, records)),
-            other => Err(unexpected(&other)),
+        let next = Cell::new(self.window);
+        let asked = Cell::new(self.window);
+        let answered = self.ask(|| {
+            asked.set(next.get());
+            next.set((next.get() / 2).max(WINDOW_MIN));
+            match asked.get() {
+                WINDOW_MAX => Request::Records { from },
+                bytes => Request::RecordsWithin { from, bytes },
+            }
+        });
+        let answered = answered.map(|_| ());
+        self.window = match asked.get() {
+            // It arrived at once: the line may be better by now.
+            bytes if answered.is_ok() && bytes == self.window => bytes.saturating_mul(2).min(WINDOW_MAX),
+            bytes => bytes,
+        };
+        answered?;
+        match wire::decode(&self.answer) {
+            Ok((_, Reply::Records { before, records })) => Ok((before, records)),
+            Ok((_, other)) => Err(unexpected(&other)),
+            Err(_) => Err(LinkError::UnknownReply),
         }
     }
 

@@ -8,7 +8,7 @@ use crate::{
     gauge::LineAssembler,
     plan::Plan,
     quantity::Count,
-    record::{Event, Millis, Refusal, Seq},
+    record::{Event, Millis, RECORD_MAX, Refusal, Seq},
     stopping::Standing,
     wire::{Hello, RECORDS_MAX, Reason, Reply, Request, Status, StudyStatus},
 };
@@ -35,13 +35,8 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
             }),
             Request::Status => Reply::Status(self.status(now)),
             Request::Load { plan, replace } => recorded(self.load(now, plan, replace)),
-            Request::Records { from } if from > self.journal.next() => Reply::Refused(Reason::BeyondJournal),
-            Request::Records { from } => match self.journal.window(from, records) {
-                Ok((before, used)) => {
-                    Reply::Records { before, records: records.get(..used).unwrap_or_default() }
-                }
-                Err(_) => Reply::Refused(Reason::NotRecorded(Refusal::FlashFault)),
-            },
+            Request::Records { from } => self.records(from, RECORDS_MAX, records),
+            Request::RecordsWithin { from, bytes } => self.records(from, bytes.into(), records),
             Request::Received { through } if through >= self.journal.next() => {
                 Reply::Refused(Reason::BeyondJournal)
             }
@@ -58,6 +53,22 @@ impl<F: MultiwriteNorFlash> Recorder<F> {
                 self.blinking = Some(now);
                 Reply::Done
             }
+        }
+    }
+
+    fn records<'r>(&mut self, from: Seq, most: usize, records: &'r mut [u8; RECORDS_MAX]) -> Reply<'r> {
+        if from > self.journal.next() {
+            return Reply::Refused(Reason::BeyondJournal);
+        }
+        let space = records.get_mut(..most.min(RECORDS_MAX)).unwrap_or_default();
+        let mut window = self.journal.window(from, space);
+        if most < RECORD_MAX && matches!(window, Ok((_, 0))) {
+            // An empty answer means that there is nothing, so a record that alone is longer than was asked for is given too.
+            window = self.journal.window(from, records.get_mut(..RECORD_MAX).unwrap_or_default());
+        }
+        match window {
+            Ok((before, used)) => Reply::Records { before, records: records.get(..used).unwrap_or_default() },
+            Err(_) => Reply::Refused(Reason::NotRecorded(Refusal::FlashFault)),
         }
     }
 

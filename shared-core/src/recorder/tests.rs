@@ -279,7 +279,13 @@ fn loading_again_because_the_answer_was_lost_begins_no_second_study() {
 #[test]
 fn numbers_beyond_the_journal_are_refused_and_release_nothing() {
     let mut bench = loaded();
-    for request in [Request::Records { from: Seq(99) }, Request::Received { through: Seq(99) }] {
+    let from = Seq(99);
+    let beyond = [
+        Request::Records { from },
+        Request::RecordsWithin { from, bytes: 9 },
+        Request::Received { through: from },
+    ];
+    for request in beyond {
         bench.ask(&request, |reply| assert_eq!(reply, Reply::Refused(Reason::BeyondJournal)));
     }
     assert_eq!(bench.status().unconfirmed, 2);
@@ -397,13 +403,22 @@ fn the_chain_by_the_link_is_that_of_the_records() {
     for line in LINES.iter().cycle().take(150) {
         bench.line(line);
     }
+    for bytes in [u16::MAX, 300, 40, 0] {
+        assert_chain(&mut bench, |from| Request::RecordsWithin { from, bytes }, bytes.max(RECORD_MAX as u16));
+    }
+    assert_chain(&mut bench, |from| Request::Records { from }, u16::MAX);
+}
+
+/// The records by these requests, none with more bytes of them than `most`, make the station's chain.
+fn assert_chain(bench: &mut Bench, request: impl Fn(Seq) -> Request, most: u16) {
     let mut digest = Digest::origin(ID);
     let mut from = Seq::FIRST;
     loop {
-        let (before, records) = bench.ask(&Request::Records { from }, |reply| match reply {
+        let (before, records) = bench.ask(&request(from), |reply| match reply {
             Reply::Records { before, records } => (before, records.to_vec()),
             other => panic!("{other:?}"),
         });
+        assert!(records.len() <= most.into());
         assert_eq!(before, digest, "before {from}");
         let mut rest = &records[..];
         while let Ok((sealed, behind)) = Sealed::split(rest) {

@@ -25,6 +25,7 @@ fn any_request() -> impl Strategy<Value = Request> {
         any::<u32>().prop_map(|seq| Request::Received { through: Seq(seq) }),
         any::<u64>().prop_map(|unix_ms| Request::SetClock { unix_ms }),
         Just(Request::Blink),
+        any::<(u32, u16)>().prop_map(|(seq, bytes)| Request::RecordsWithin { from: Seq(seq), bytes }),
     ]
 }
 

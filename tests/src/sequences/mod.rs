@@ -249,7 +249,11 @@ impl Writer {
         let request = match self.random.below(8) {
             0 => Request::Hello,
             1 => Request::Status,
-            2 | 3 => Request::Records { from: seq },
+            2 => Request::Records { from: seq },
+            3 => Request::RecordsWithin {
+                from: seq,
+                bytes: self.random.bits() as u16 >> self.random.below(16),
+            },
             4 => Request::Received { through: seq },
             5 | 6 => Request::SetClock { unix_ms: 1_700_000_000_000 + self.random.below(1 << 40) },
             _ => Request::Blink,
