@@ -65,8 +65,21 @@ pub fn read_columns(
     unit: &str,
 ) -> Result<ReadingsFile, FileError> {
     let bytes = fs::read(path).map_err(|error| FileError::Unreadable { path: path.to_owned(), error })?;
-    let (readings, title, subgroup) = from_bytes(&bytes, columns, resolution, unit)?;
-    Ok(ReadingsFile { readings, title, fingerprint: fingerprint(&bytes), subgroup })
+    from_bytes(&bytes, columns, resolution, unit)
+}
+
+/// The same, of bytes that are read already.
+///
+/// # Errors
+/// See [`FileError`], `Unreadable` excepted.
+pub fn from_bytes(
+    bytes: &[u8],
+    columns: &Columns<'_>,
+    resolution: Resolution,
+    unit: &str,
+) -> Result<ReadingsFile, FileError> {
+    let (readings, title, subgroup) = found(bytes, columns, resolution, unit)?;
+    Ok(ReadingsFile { readings, title, fingerprint: fingerprint(bytes), subgroup })
 }
 
 /// SHA-256 in hexadecimal.
@@ -83,7 +96,7 @@ pub fn fingerprint(bytes: &[u8]) -> String {
 
 type Found = (Vec<Counts>, Option<String>, Option<SubgroupSize>);
 
-fn from_bytes(
+fn found(
     bytes: &[u8],
     columns: &Columns<'_>,
     resolution: Resolution,

@@ -2,7 +2,7 @@ use super::*;
 
 fn read(text: &str, column: Option<&str>) -> Result<(Vec<i64>, Option<String>), FileError> {
     let resolution: Resolution = "0.001".parse().unwrap();
-    from_bytes(text.as_bytes(), &Columns { readings: column, subgroups: None }, resolution, "mm")
+    found(text.as_bytes(), &Columns { readings: column, subgroups: None }, resolution, "mm")
         .map(|(readings, title, _)| (readings.into_iter().map(Counts::get).collect(), title))
 }
 
@@ -87,7 +87,7 @@ fn the_fingerprint_is_sha_256() {
 
 fn subgroups(text: &str) -> Result<u32, (usize, SubgroupFault)> {
     let columns = Columns { readings: None, subgroups: Some("1") };
-    match from_bytes(text.as_bytes(), &columns, "0.1".parse().unwrap(), "") {
+    match found(text.as_bytes(), &columns, "0.1".parse().unwrap(), "") {
         Ok((_, _, size)) => Ok(size.unwrap().get()),
         Err(FileError::Subgroups { line, fault }) => Err((line, fault)),
         Err(other) => panic!("{other:?}"),
