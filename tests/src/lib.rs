@@ -4,6 +4,7 @@
 pub mod budgets;
 pub mod command;
 pub mod emulator;
+pub mod fuzz;
 pub mod nist;
 pub mod panics;
 pub mod random;
