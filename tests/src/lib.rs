@@ -1,6 +1,7 @@
 //! What the end-to-end tests share.
 #![forbid(unsafe_code)]
 
+pub mod bad_line;
 pub mod budgets;
 pub mod command;
 pub mod emulator;
