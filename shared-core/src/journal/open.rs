@@ -156,6 +156,9 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             true => found.marks.erasing.plus(pages),
             false => found.marks.erasing,
         });
+        // No journal is further ahead of its newest page than once round; whatever a checkpoint claims, a boot looks no further.
+        let reach = begin.plus(self.places.get()).plus(2 * pages);
+        let claimed = claimed.min(self.sector_begin(reach));
         // A checkpoint that is not the last one: the sector behind may have been in use too.
         let stale = checkpoint.is_none() || claimed < self.ready_end;
         self.ready_end = self.ready_end.max(claimed);
