@@ -8,7 +8,7 @@ use crate::{
     counts::ReadingError,
     flash_model::Flash,
     plan::{Plan, tests as plans},
-    record::Sealed,
+    record::{RECORD_MAX, Sealed},
     wire::Status,
 };
 
