@@ -149,7 +149,7 @@ fn frame(bytes: &[u8]) -> bool {
     let next = samples::frame(77, &Request::Records { from: Seq(9) });
     let mut found = None;
     for byte in next {
-        found = reader.push(byte).map(|frame| wire::decode::<Request>(frame)).or(found);
+        found = reader.push(byte).map(wire::decode::<Request>).or(found);
     }
     assert_eq!(found, Some(Ok((77, Request::Records { from: Seq(9) }))));
     whole > 0
