@@ -42,15 +42,18 @@ pub(super) fn sums(side: Side, t: f64, nu: f64, delta: f64) -> Option<Sums> {
     let far = libm::exp(-at.exponent) * (1.0 - at.exponent_rest);
     let mut ladder = Ladder::start(&at, nu);
     let odd = ladder.k > 0.0;
-    let (base, norm) = if odd {
-        (at.one_degree(far), libm::sqrt(FRAC_2_PI))
-    } else {
-        // At the very δ, so that its part of the correction is taken out below.
-        (normal::upper_tail(delta), 1.0)
-    };
-    let scale = far * norm;
+    let scale = if odd { far * libm::sqrt(FRAC_2_PI) } else { far };
     let rise = scale * libm::sqrt(at.rest);
-    let sum = ladder.climb(nu);
+    let sum = rise * ladder.climb(nu);
+    // F(0) and F(1), the costlier part, are below e^(−h²/2): beside a large sum they do not show.
+    let (base, of_base) = if far < 1e-18 * sum {
+        (0.0, 0.0)
+    } else if odd {
+        (at.one_degree(far), 0.0)
+    } else {
+        // At the very δ: its part of the correction is taken out below.
+        (normal::upper_tail(delta), libm::exp(-0.5 * delta * delta) / libm::sqrt(2.0 * PI))
+    };
     // E φ(x) and E tS φ(x) to E t³S³ φ(x), x = tS − δ.
     let (root, root_b) = (libm::sqrt(nu), libm::sqrt(at.b));
     let density = nu * scale * root_b * root * ladder.before;
@@ -60,8 +63,7 @@ pub(super) fn sums(side: Side, t: f64, nu: f64, delta: f64) -> Option<Sums> {
     let third = along * t * t * (nu + 2.0) * ladder.next_own() / (nu * root);
     let (t_short, delta_short) = (at.t_short / t, at.delta_short);
 
-    let of_base = if odd { 0.0 } else { libm::exp(-0.5 * delta * delta) / libm::sqrt(2.0 * PI) };
-    let lower = base + (rise * sum + (density_ts * t_short - (density - of_base) * delta_short));
+    let lower = base + (sum + (density_ts * t_short - (density - of_base) * delta_short));
     let tail = match side {
         Side::Lower => lower,
         Side::Upper if 1.0 - lower > LARGE => 1.0 - lower,
@@ -220,7 +222,7 @@ impl Ladder {
             let last = self.own;
             self.step();
             sum += self.own;
-            if self.own * (self.own / (last - self.own)) <= 1e-17 * sum {
+            if self.own < 1e-8 * sum && self.own * (self.own / (last - self.own)) <= 1e-17 * sum {
                 break;
             }
         }
