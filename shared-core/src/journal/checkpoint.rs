@@ -53,7 +53,8 @@ pub(super) struct Found {
     pub(super) marks: Marks,
     /// The sector that was to be erased is.
     pub(super) done: bool,
-    length: usize,
+    /// Bytes of the state.
+    pub(super) length: usize,
 }
 
 /// One slot's bytes.
@@ -91,8 +92,14 @@ fn check(slot: &Slot, index: u32) -> Option<Found> {
 }
 
 impl Checkpoints {
-    /// Looks through both sectors, which begin at address 0.
-    pub(super) fn find<F: NorFlash>(flash: &mut F, buffer: &mut Slot) -> Result<Self, F::Error> {
+    /// Looks through both sectors, which begin at address 0, and puts the latest checkpoint's state into `state`. That
+    /// checkpoint is programmed once more with the bytes that were read: its write may have been cut off at the very end,
+    /// and bits that read differently each time must not undo it later.
+    pub(super) fn find<F: NorFlash>(
+        flash: &mut F,
+        buffer: &mut Slot,
+        state: &mut [u8; STATE_MAX],
+    ) -> Result<Self, F::Error> {
         #[allow(clippy::cast_possible_truncation, reason = "an erase unit of a NOR flash is far below 4 GiB")]
         let sector = F::ERASE_SIZE as u32;
         let slots_in_sector = sector / SLOT_U32;
@@ -103,6 +110,19 @@ impl Checkpoints {
                 && latest.is_none_or(|l| found.number > l.number)
             {
                 latest = Some(found);
+                for (place, byte) in state.iter_mut().zip(buffer.iter().skip(HEADER)) {
+                    *place = *byte;
+                }
+            }
+        }
+        if let Some(found) = latest {
+            let stored = |space: &mut [u8]| {
+                let state = state.get(..found.length)?;
+                space.get_mut(..found.length)?.copy_from_slice(state);
+                Some(found.length)
+            };
+            if let Some(used) = encode(buffer, found.number, found.marks, stored) {
+                program(flash, found.slot, buffer.get(..used).unwrap_or_default())?;
             }
         }
         // After a boot the other sector is begun: the slot behind the latest may hold half a checkpoint.
@@ -113,17 +133,9 @@ impl Checkpoints {
         Ok(Self { slots_in_sector, sector, latest, next_slot })
     }
 
-    /// Reads the latest checkpoint's state into `buffer`; none was ever written: `None`.
-    pub(super) fn latest<'b, F: NorFlash>(
-        &self,
-        flash: &mut F,
-        buffer: &'b mut Slot,
-    ) -> Result<Option<(Found, &'b [u8])>, F::Error> {
-        let Some(found) = self.latest else { return Ok(None) };
-        flash.read(found.slot * SLOT_U32, buffer)?;
-        // It was checked by `find`.
-        let state = buffer.get(HEADER..HEADER + found.length).unwrap_or_default();
-        Ok(Some((found, state)))
+    /// The latest checkpoint; none was ever written: `None`.
+    pub(super) fn latest(&self) -> Option<Found> {
+        self.latest
     }
 
     /// Writes a checkpoint; `state` puts the state into the space it is given and says how much it took. When this
@@ -144,9 +156,7 @@ impl Checkpoints {
         }
         // Whatever comes of the write, this slot is used up.
         self.next_slot = if slot + 1 < 2 * self.slots_in_sector { slot + 1 } else { 0 };
-        for (page, offset) in buffer.get(..used).unwrap_or_default().chunks(256).zip((0u32..).step_by(256)) {
-            flash.write(slot * SLOT_U32 + offset, page)?;
-        }
+        program(flash, slot, buffer.get(..used).unwrap_or_default())?;
         flash.read(slot * SLOT_U32, buffer)?;
         match check(buffer, slot) {
             Some(found) if found.number == number => {
@@ -169,6 +179,14 @@ impl Checkpoints {
         found.done = true;
         flash.write((found.slot + 1) * SLOT_U32 - 1, &[0])
     }
+}
+
+/// Programs a slot's bytes, page by page.
+fn program<F: NorFlash>(flash: &mut F, slot: u32, bytes: &[u8]) -> Result<(), F::Error> {
+    for (page, offset) in bytes.chunks(256).zip((0u32..).step_by(256)) {
+        flash.write(slot * SLOT_U32 + offset, page)?;
+    }
+    Ok(())
 }
 
 fn encode(

@@ -7,7 +7,8 @@
 //!
 //! What a power cut leaves: half a record, or half a header, at the very end. It is passed over, and nothing is ever
 //! written into that page or the one behind it again, since bits of an interrupted write may read differently each time.
-//! The last whole record is programmed once more with the same bytes, so that it stays whole.
+//! What is whole there, the page's header and the latest checkpoint included, is programmed once more with the same bytes,
+//! so that it stays whole.
 //!
 //! What has become unreadable otherwise costs what stood in that page from there on, and no more: see [`Patrol`] and
 //! [`Salvage`].

@@ -46,16 +46,8 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             sectors.checked_sub(2).filter(|sectors| *sectors >= 2).ok_or(OpenError::Geometry)?;
         let places = NonZeroU32::new(data_sectors * sector_pages.get()).ok_or(OpenError::Geometry)?;
         let mut slot: Slot = [0; SLOT];
-        let checkpoints = Checkpoints::find(&mut flash, &mut slot)?;
-        let mut length = None;
-        let mut checkpoint = None;
-        if let Some((found, bytes)) = checkpoints.latest(&mut flash, &mut slot)? {
-            checkpoint = Some(found);
-            if let Some(space) = state.get_mut(..bytes.len()) {
-                space.copy_from_slice(bytes);
-                length = Some(bytes.len());
-            }
-        }
+        let checkpoints = Checkpoints::find(&mut flash, &mut slot, state)?;
+        let checkpoint = checkpoints.latest();
         let mut journal = Self {
             flash,
             checkpoints,
@@ -74,7 +66,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             patrol: None,
         };
         let salvage = journal.scan(checkpoint)?;
-        Ok((journal, Opened { state: length, salvage }))
+        Ok((journal, Opened { state: checkpoint.map(|found| found.length), salvage }))
     }
 
     /// Finds the newest page, the oldest, and where to go on.
@@ -94,11 +86,7 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         }
         let mut salvage = Salvage::default();
         if let Some(newest) = newest {
-            self.newest = Some(newest.number);
-            self.ready_end = self.sector_begin(newest.number).plus(self.sector_pages());
-            // The page behind the newest may have been begun when the power went: it is left alone.
-            self.head = newest.number.plus(2);
-            self.settle(newest, &mut salvage)?;
+            self.take_up(newest, &mut salvage)?;
         }
         self.look_ahead(checkpoint, &mut salvage)?;
         self.head = self.head.min(self.ready_end);
@@ -130,6 +118,10 @@ impl<F: MultiwriteNorFlash> Journal<F> {
             }
             break (next, digest, whole);
         };
+        // The header as it was read the first time: its own bits may read differently each time too.
+        if let Some(head) = page.first_chunk_mut() {
+            *head = newest.encode();
+        }
         if let Some(bytes) = page.get(..whole) {
             self.flash.write(address, bytes)?;
         }
@@ -138,6 +130,15 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         }
         self.skip(damaged, salvage);
         Ok(())
+    }
+
+    /// Goes on from this page as the newest.
+    fn take_up(&mut self, newest: Header, salvage: &mut Salvage) -> Result<(), F::Error> {
+        self.newest = Some(newest.number);
+        self.ready_end = self.ready_end.max(self.sector_begin(newest.number).plus(self.sector_pages()));
+        // The page behind the newest may have been begun when the power went: it is left alone.
+        self.head = newest.number.plus(2);
+        self.settle(newest, salvage)
     }
 
     /// Looks at what stands ahead of the newest page that can be read, up to where pages can have been begun.
@@ -167,11 +168,15 @@ impl<F: MultiwriteNorFlash> Journal<F> {
         for number in begin.0..end.0 {
             let number = PageNumber(number);
             self.flash.read(self.address(number), &mut page)?;
+            let header = Header { number, first: self.next, digest: self.digest };
+            if salvage.skipped.is_none() && salvage::mendable_page(&page, header) {
+                self.take_up(header, salvage)?;
+                continue;
+            }
             let readable = page.first_chunk().is_some_and(|bytes| Header::decode(bytes).is_some());
             if readable || is_blank(&page) {
                 continue;
             }
-            let header = Header { number, first: self.next, digest: self.digest };
             if salvage.skipped.is_none() && salvage::torn_page(&page, header) {
                 salvage.torn = true;
             } else {

@@ -79,6 +79,14 @@ pub(super) fn torn_page(page: &[u8; PAGE], header: Header) -> bool {
         && (is_blank(body) || torn_record(body, header.first))
 }
 
+/// Whether a page is one with this header and a whole record, but for bits of the header that read 1 instead of 0. Either
+/// its first write was all but complete, or it has lost those bits since: programmed once more, it is right in both cases.
+pub(super) fn mendable_page(page: &[u8; PAGE], header: Header) -> bool {
+    let Some((head, body)) = page.split_first_chunk::<HEADER>() else { return false };
+    could_become(head, &header.encode())
+        && Sealed::split(body).is_ok_and(|(sealed, _)| sealed.seq() == Some(header.first))
+}
+
 /// Whether programming more bits of `seen` can make it begin with `meant`.
 fn could_become(seen: &[u8], meant: &[u8]) -> bool {
     seen.len() >= meant.len() && seen.iter().zip(meant).all(|(seen, meant)| seen & meant == *meant)

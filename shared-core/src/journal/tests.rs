@@ -439,6 +439,21 @@ fn a_sector_whose_erase_was_cut_off_is_no_gap_whatever_it_reads_like() {
 }
 
 #[test]
+fn header_bits_of_the_newest_page_that_read_1_instead_of_0_cost_nothing() {
+    let flash = fill(211);
+    let before = content(&mut open(flash.clone()));
+    let newest = open(flash.clone()).newest.unwrap().0 as usize;
+    for bit in 0..8 * HEADER {
+        let mut damaged = flash.clone();
+        damaged.bytes[page_at(newest) + bit / 8] |= 1 << (bit % 8);
+        let (mut journal, salvage) = opened(damaged);
+        assert_eq!(salvage.skipped, None, "bit {bit}");
+        assert_eq!(content(&mut journal), before, "bit {bit}");
+        assert_eq!(journal.flash().bytes, flash.bytes, "bit {bit} is programmed again");
+    }
+}
+
+#[test]
 fn a_journal_of_another_format_is_refused_and_left_as_it_is() {
     let mut flash = Flash::blank();
     flash.bytes[page_at(0)..page_at(0) + 4].copy_from_slice(b"DL\x01\xff");
